@@ -1,0 +1,5 @@
+"""``python -m extractor``."""
+
+from extractor.commands.main import main
+
+main()

@@ -1,0 +1,1 @@
+"""Checks of the printed numbers: support, granularity, contradiction, diagnosis."""

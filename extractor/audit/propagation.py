@@ -1,0 +1,110 @@
+"""Interval propagation: every relation narrows what it gives, for a whole block of rows, until nothing shrinks.
+
+Each printed number starts as its rounding interval, each unknown as its support. A relation contracts the interval
+of what it gives to the part its image allows (Davis 1987; Benhamou et al. 1999). No true value is ever cut away, so
+an empty interval proves that the row's numbers cannot all be true under the stated design.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from functools import lru_cache
+
+import numpy as np
+from numpy.typing import NDArray
+
+from extractor.catalogue.relation import FloatArray, Interval, Relation, catalogue
+from extractor.intervals import image
+from extractor.quantities import VOCABULARY
+from extractor.table import BoolArray
+
+_NEAR = 1e-9
+_SHRINKS = 1e-3
+_ROUNDS = 40
+
+
+@dataclass(slots=True)
+class Domain:
+    """Intervals of the quantities of a block; arrays of shape (rows,) or (rows, groups)."""
+
+    low: dict[str, FloatArray]
+    high: dict[str, FloatArray]
+
+    def copy(self) -> Domain:
+        """A domain that can be narrowed without touching this one; the arrays are shared until replaced."""
+        return Domain(dict(self.low), dict(self.high))
+
+    def take(self, rows: NDArray[np.intp] | BoolArray | slice) -> Domain:
+        """The rows named, in that order."""
+        return Domain({q: a[rows] for q, a in self.low.items()}, {q: a[rows] for q, a in self.high.items()})
+
+    def pair(self, quantity: str) -> Interval:
+        """(low, high)."""
+        return self.low[quantity], self.high[quantity]
+
+
+@lru_cache(maxsize=64)
+def judges_of(design: str) -> tuple[Relation, ...]:
+    """Relations that hold in a design and may contradict a printed number."""
+    return tuple(r for _, r in sorted(catalogue().items()) if design in r.designs and r.judges)
+
+
+def propagate(design: str, domain: Domain) -> BoolArray:
+    """Narrow ``domain`` in place to a fixpoint; True in the rows where an interval became empty, shape (rows,)."""
+    rows = len(next(iter(domain.low.values())))
+    empty = np.zeros(rows, dtype=bool)
+    for quantity in domain.low:
+        empty |= _any(domain.low[quantity] > domain.high[quantity])
+    version = dict.fromkeys(domain.low, 1)
+    done: dict[str, int] = {}
+    clock = 1
+    for _ in range(_ROUNDS):
+        moved = False
+        for relation in judges_of(design):
+            if any(need not in version for need in relation.needs):
+                continue
+            if max(version[need] for need in relation.needs) <= done.get(relation.name, 0):
+                continue
+            done[relation.name] = clock
+            changed = _contract(relation, domain)
+            if changed is None:
+                continue
+            empty |= _any(domain.low[relation.gives] > domain.high[relation.gives])
+            if (changed & ~empty).any():
+                clock += 1
+                version[relation.gives] = clock
+                moved = True
+        if not moved:
+            break
+    return empty
+
+
+def _contract(relation: Relation, domain: Domain) -> BoolArray | None:
+    """Cut what the relation gives to its image; True in the rows that shrank enough to matter, None if none did."""
+    gives = relation.gives
+    inputs = {need: domain.pair(need) for need in relation.needs}
+    known = gives in domain.low
+    low, high = image(relation, inputs, domain.pair(gives) if known else None)
+    quantity = VOCABULARY[gives]
+    if quantity.integer:
+        low, high = np.ceil(low - _NEAR), np.floor(high + _NEAR)
+    if not known:
+        if not (np.any(low > quantity.low) or np.any(high < quantity.high)):
+            return None
+        domain.low[gives], domain.high[gives] = low, high
+        return _any((low > quantity.low) | (high < quantity.high))
+    old_low, old_high = domain.pair(gives)
+    new_low, new_high = np.maximum(old_low, low), np.minimum(old_high, high)
+    with np.errstate(invalid="ignore", over="ignore"):
+        enough = _SHRINKS * (old_high - old_low)
+        shrunk = (new_low > old_low + enough) | (new_high < old_high - enough)
+        shrunk |= (np.isinf(old_low) & np.isfinite(new_low)) | (np.isinf(old_high) & np.isfinite(new_high))
+    shrunk |= new_low > new_high
+    if not shrunk.any():
+        return None
+    domain.low[gives], domain.high[gives] = new_low, new_high
+    return _any(shrunk)
+
+
+def _any(rows: BoolArray) -> BoolArray:
+    return np.asarray(rows.any(axis=-1)) if rows.ndim > 1 else rows

@@ -1,0 +1,77 @@
+"""The audit: every check over every row, its findings, and what could not be checked."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterator
+from dataclasses import dataclass
+
+import numpy as np
+import pandas as pd
+
+from extractor.audit.contradictions import checks_of, contradictions
+from extractor.audit.granular import unreachable
+from extractor.audit.homogeneity import unequal_variances
+from extractor.audit.plausibility import implausible, outlying
+from extractor.audit.support import unsupported
+from extractor.conversion import Conversion
+from extractor.evidence import Evidence
+from extractor.findings import Finding, Severity, frame
+
+Check = Callable[[Evidence], Iterator[Finding]]
+CHECKS: tuple[Check, ...] = (unsupported, unreachable, unequal_variances, implausible)
+
+
+@dataclass(frozen=True)
+class Audit:
+    """What an audit gives.
+
+    findings : in sheet order. checks : how many printed quantities were compared with what others imply, over all
+    rows. unchecked : row number and reason for each row in which nothing could be compared.
+    """
+
+    findings: list[Finding]
+    checks: int
+    unchecked: list[tuple[int, str]]
+    rows: int
+
+    @property
+    def frame(self) -> pd.DataFrame:
+        """The findings as a table."""
+        return frame(self.findings)
+
+    def worst(self) -> Severity | None:
+        """The strongest severity found, None where nothing was."""
+        return max((f.severity for f in self.findings), default=None)
+
+
+def audit_evidence(evidence: Evidence, conversion: Conversion | None) -> Audit:
+    """Run every check; where a conversion is given, its effect table gets a summary of each row's findings."""
+    table = evidence.table
+    findings: list[Finding] = []
+    for check in CHECKS:
+        findings.extend(check(evidence))
+    if conversion is not None:
+        findings.extend(outlying(evidence, conversion.effects))
+    counts = np.zeros(table.rows, dtype=int)
+    for block in evidence.blocks:
+        counts[block.positions] = checks_of(block, table)
+        if counts[block.positions[0]]:
+            findings.extend(contradictions(block, table))
+    why = np.where(evidence.blocked != "", evidence.blocked, "no printed number is implied by others")
+    unchecked = [(int(table.row_numbers[i]), str(why[i])) for i in np.flatnonzero(counts == 0)]
+    findings.sort(key=lambda f: (f.row, -f.severity, f.rule, f.cells))
+    found = Audit(findings, int(counts.sum()), unchecked, table.rows)
+    if conversion is not None:
+        _summarise(conversion, findings)
+    return found
+
+
+def _summarise(conversion: Conversion, findings: list[Finding]) -> None:
+    said: dict[int, list[str]] = {}
+    for finding in findings:
+        said.setdefault(finding.row, []).append(f"{finding.severity.word}: {finding.rule}")
+    rows = conversion.evidence.table.row_numbers
+    words = np.full(len(rows), "", dtype=object)
+    for row, texts in said.items():
+        words[np.searchsorted(rows, row)] = "; ".join(dict.fromkeys(texts))
+    conversion.effects["findings"] = words

@@ -1,0 +1,111 @@
+"""One group's number from the sums and the other groups'. These only narrow intervals: they serve the audit."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from extractor.catalogue.groups import least_between
+from extractor.catalogue.relation import BETWEEN, ONE_FACTOR, PAIRED, WITHIN, FloatArray, Interval, relation
+
+_PARTITION = "SS_effect = SS_others + n_j(N - n_j)/N · (M_j - M_others)² (textbook identity)"
+_POOLED = "SS_error = Σ (n_j - 1)·SD_j², solved for one group (textbook identity)"
+_TOTAL = "N = Σ n_j, solved for one group"
+_CONTRAST = "definition of a contrast of means, solved for one group"
+_WIDEN = 1e-9
+
+
+def _others(values: FloatArray, group: int) -> FloatArray:
+    return np.delete(values, group, axis=-1)
+
+
+def _mean_image(mean: Interval, n: Interval, ss_effect: Interval) -> Interval:
+    low, high = np.array(mean[0]), np.array(mean[1])
+    for j in range(low.shape[1]):
+        rest_low, rest_high = _others(mean[0], j), _others(mean[1], j)
+        size_low, size_high = _others(n[0], j), _others(n[1], j)
+        own_low, own_high = n[0][:, j], n[1][:, j]
+        known = (size_low == size_high).all(axis=-1)
+        weight = size_low / size_low.sum(axis=-1, keepdims=True)
+        centre_low = np.where(known, (weight * rest_low).sum(axis=-1), rest_low.min(axis=-1))
+        centre_high = np.where(known, (weight * rest_high).sum(axis=-1), rest_high.max(axis=-1))
+        least_rest = least_between(size_low, rest_low, rest_high)
+        middle = ((centre_low + centre_high) / 2)[:, None]
+        most_rest = (size_high * np.maximum((rest_low - middle) ** 2, (rest_high - middle) ** 2)).sum(axis=-1)
+        share_low = 1 / (1 / own_low + 1 / size_low.sum(axis=-1))
+        share_high = 1 / (1 / own_high + 1 / size_high.sum(axis=-1))
+        reach = np.sqrt(np.maximum(ss_effect[1] - least_rest * (1 - _WIDEN), 0) / share_low) * (1 + _WIDEN)
+        away = np.sqrt(np.maximum(ss_effect[0] - most_rest * (1 + _WIDEN), 0) / share_high) * (1 - _WIDEN)
+        away = np.where(np.isfinite(away), away, 0.0)
+        slack = _WIDEN * (np.abs(centre_low) + np.abs(centre_high))
+        hole_low, hole_high = centre_high - away + slack, centre_low + away - slack
+        # the mean is farther than `away` from the others' mean: a current end inside the hole moves to its edge
+        own_l, own_h = mean[0][:, j], mean[1][:, j]
+        holed = (away > 0) & (hole_low < hole_high)
+        new_low = np.where(holed & (own_l > hole_low) & (own_l < hole_high), hole_high, centre_low - reach)
+        new_high = np.where(holed & (own_h > hole_low) & (own_h < hole_high), hole_low, centre_high + reach)
+        low[:, j] = np.where(np.isnan(new_low), -np.inf, new_low - slack)
+        high[:, j] = np.where(np.isnan(new_high), np.inf, new_high + slack)
+    return low, high
+
+
+@relation(gives="mean", image=_mean_image, designs=BETWEEN | WITHIN, source=_PARTITION)
+def mean_from_effect_sum(mean: FloatArray, n: FloatArray, ss_effect: FloatArray) -> FloatArray:
+    """M_j = M_others ± sqrt((SS_effect - SS_others)·N / (n_j·(N - n_j)))."""
+    return mean
+
+
+def _sd_image(sd: Interval, n: Interval, ss_error: Interval) -> Interval:
+    least, most = (n[0] - 1) * sd[0] ** 2, (n[1] - 1) * sd[1] ** 2
+    low, high = np.empty_like(sd[0]), np.empty_like(sd[1])
+    for j in range(low.shape[1]):
+        upper = (ss_error[1] - _others(least, j).sum(axis=-1)) / (n[0][:, j] - 1)
+        lower = (ss_error[0] - _others(most, j).sum(axis=-1)) / (n[1][:, j] - 1)
+        scale = _WIDEN * ss_error[1] / (n[0][:, j] - 1)
+        # a negative upper end leaves no standard deviation at all
+        high[:, j] = np.where(upper + scale < 0, -1.0, np.sqrt(np.maximum(upper + scale, 0)))
+        low[:, j] = np.sqrt(np.maximum(np.where(np.isfinite(scale), lower - scale, 0), 0))
+    return low, high
+
+
+@relation(gives="sd", image=_sd_image, designs=BETWEEN, source=_POOLED)
+def sd_from_error_sum(sd: FloatArray, n: FloatArray, ss_error: FloatArray) -> FloatArray:
+    """SD_j = sqrt((SS_error - Σ_others (n - 1)·SD²) / (n_j - 1))."""
+    return sd
+
+
+def _size_image(n: Interval, n_total: Interval) -> Interval:
+    low, high = np.empty_like(n[0]), np.empty_like(n[1])
+    for j in range(low.shape[1]):
+        low[:, j] = n_total[0] - _others(n[1], j).sum(axis=-1)
+        high[:, j] = n_total[1] - _others(n[0], j).sum(axis=-1)
+    return low, high
+
+
+@relation(gives="n", image=_size_image, designs=BETWEEN, source=_TOTAL)
+def size_from_total(n: FloatArray, n_total: FloatArray) -> FloatArray:
+    """n_j = N - Σ_others n."""
+    return n
+
+
+def _contrasted_image(mean: Interval, contrast_weight: Interval, mean_difference: Interval) -> Interval:
+    weight = contrast_weight[0]
+    ends = np.where(weight == 0, 0.0, weight * mean[0]), np.where(weight == 0, 0.0, weight * mean[1])
+    least, most = np.minimum(*ends), np.maximum(*ends)
+    low, high = np.full_like(weight, -np.inf), np.full_like(weight, np.inf)
+    for j in range(weight.shape[1]):
+        below = mean_difference[0] - _others(most, j).sum(axis=-1)
+        above = mean_difference[1] - _others(least, j).sum(axis=-1)
+        w = weight[:, j]
+        scale = _WIDEN * (np.abs(_others(most, j)).sum(axis=-1) + np.abs(_others(least, j)).sum(axis=-1))
+        below, above = below - scale, above + scale
+        low[:, j] = np.where(w == 0, -np.inf, np.where(w > 0, below, above) / w)
+        high[:, j] = np.where(w == 0, np.inf, np.where(w > 0, above, below) / w)
+    return low, high
+
+
+@relation(gives="mean", image=_contrasted_image, designs=ONE_FACTOR | PAIRED | WITHIN, source=_CONTRAST)
+def mean_from_difference(
+    mean: FloatArray, contrast_weight: FloatArray, mean_difference: FloatArray
+) -> FloatArray:
+    """M_j = (Σ w·M - Σ_others w·M) / w_j."""
+    return mean

@@ -1,0 +1,52 @@
+"""``extractor audit``."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import click
+
+from extractor.commands import options
+
+
+@click.command(
+    context_settings=options.SETTINGS, short_help="Ask whether the printed numbers of a sheet can be true."
+)
+@options.sheet
+@options.codebook
+@options.output
+@options.fail_on
+def command(
+    sheet: str, codebook: str | None, out: Path | None, force: bool, csv_raw: bool, fail_on: str | None
+) -> int:
+    """Ask of every row of SHEET whether its printed numbers can all be true.
+
+    Rounding is taken into account: a correctly rounded and correctly coded row is never called impossible
+    or inconsistent. A finding is a question for the article and its authors, not a verdict on them. With
+    --out the folder gets findings.csv and datapackage.json as well.
+
+    \b
+    Examples:
+      extractor audit coded.xlsx
+      extractor audit coded.csv --codebook one-way --out audit
+      extractor audit coded.xlsx --fail-on inconsistent
+    """
+    from extractor import cautions
+    from extractor.audit.run import audit_evidence
+    from extractor.commands import running
+    from extractor.output import files, package, terminal
+
+    if out is not None:
+        files.refuse_existing(out, force=force)
+    evidence = running.read(sheet, codebook)
+    rows = evidence.table.rows
+    with running.stage(f"auditing {rows} rows", rows):
+        found = audit_evidence(evidence, None)
+    if out is not None:
+        request = package.Request(sheet=sheet, codebook=codebook, raw=csv_raw)
+        package.write_audit(out, found, evidence.table, request, force=force)
+        click.echo(f"written to {out}", err=True)
+    page = terminal.console()
+    terminal.show_findings(page, found)
+    terminal.show_cautions(page, cautions.FINDINGS)
+    return running.status(found, fail_on)

@@ -1,0 +1,114 @@
+"""``extractor convert``."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import click
+
+from extractor.commands import options
+from extractor.errors import UsageError
+
+_TO_STDOUT = ("csv", "json")
+
+
+@click.command(
+    context_settings=options.SETTINGS,
+    short_help="Turn a sheet into effects of one metric, with variances and routes.",
+)
+@options.sheet
+@options.wanted
+@options.codebook
+@options.output
+@click.option(
+    "--format",
+    "formats",
+    multiple=True,
+    type=click.Choice(options.FORMATS),
+    help="Write the effect table in this format too; may be given several times. Without --out, csv or json "
+    "goes to standard output.",
+)
+@click.option(
+    "--rename",
+    multiple=True,
+    metavar="COLUMN=NAME",
+    help="Heading of a column in the written effect tables; may be given several times.",
+)
+@options.fail_on
+def command(
+    sheet: str,
+    wanted: options.Wanted,
+    codebook: str | None,
+    out: Path | None,
+    force: bool,
+    csv_raw: bool,
+    formats: tuple[str, ...],
+    rename: tuple[str, ...],
+    fail_on: str | None,
+) -> int:
+    """Turn the rows of SHEET into effects of one metric, each with its sampling variance and route.
+
+    SHEET is a workbook, a csv or tsv file, or - for delimited text on standard input. With --out the folder
+    gets effects.csv, findings.csv, derivations.json and datapackage.json; without it the effect table is
+    printed.
+
+    \b
+    Examples:
+      extractor convert coded.xlsx --to omega_squared
+      extractor convert coded.xlsx --to hedges_g --codebook two-group --out results --format xlsx
+      extractor convert coded.csv --to hedges_g --out results --rename estimate=effect_size
+      extractor convert coded.csv --to eta_squared --format csv > effects.csv
+    """
+    renamed = options.pairs(rename, "--rename", "estimate=NAME")
+    if out is None:
+        _check_without_folder(formats, bool(renamed))
+    from extractor import cautions
+    from extractor.commands import running
+    from extractor.output import files, package, tables, terminal
+
+    for kind in formats:
+        tables.require(kind)
+    if out is not None:
+        files.refuse_existing(out, force=force)
+    result = running.convert(sheet, codebook, wanted)
+    said = (*cautions.EFFECTS, *(cautions.FINDINGS if result.audit.findings else ()))
+    if out is not None:
+        request = package.Request(
+            sheet=sheet,
+            codebook=codebook,
+            metric=wanted.metric,
+            variance=wanted.variance,
+            level=wanted.level,
+            standardizer=wanted.standardizer,
+            formats=formats,
+            rename=renamed,
+            raw=csv_raw,
+        )
+        rows = len(result.effects)
+        with running.stage(f"writing {rows} rows", rows, counts=True) as tick:
+            running.mention(package.write_conversion(out, result, request, force=force, tick=tick))
+        click.echo(f"written to {out}", err=True)
+        page = terminal.console()
+        terminal.show_summary(page, result)
+        terminal.show_cautions(page, said)
+    elif formats:
+        effects = package.effects_as_written(result, renamed)
+        change = str if csv_raw else tables.neutralised
+        lines = tables.csv_lines(effects, change) if formats[0] == "csv" else tables.json_lines(effects)
+        for line in lines:
+            click.echo(line, nl=False)
+        terminal.show_cautions(terminal.console(stderr=True), said)
+    else:
+        page = terminal.console()
+        terminal.show_effects(page, result, wanted.level)
+        terminal.show_cautions(page, said)
+    return running.status(result.audit, fail_on)
+
+
+def _check_without_folder(formats: tuple[str, ...], renamed: bool) -> None:
+    if len(formats) > 1:
+        raise UsageError("several formats need a folder: name it with --out DIR")
+    if formats and formats[0] not in _TO_STDOUT:
+        raise UsageError(f"--format {formats[0]} needs a folder: name it with --out DIR")
+    if renamed and not formats:
+        raise UsageError("--rename concerns written tables: add --out DIR, or --format csv")

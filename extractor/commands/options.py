@@ -1,0 +1,157 @@
+"""Arguments and options that several commands share. Nothing heavy is imported here."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Collection, Iterable
+from dataclasses import dataclass
+from functools import wraps
+from pathlib import Path
+from typing import Any, TypeVar
+
+import click
+
+from extractor.errors import UsageError
+from extractor.quantities import METRICS, STANDARDIZERS, close_matches
+from extractor.reading import quoted
+
+SETTINGS = {"help_option_names": ["-h", "--help"], "max_content_width": 100}
+FORMATS = ("csv", "xlsx", "json", "parquet", "dta")
+
+Command = TypeVar("Command", bound=Callable[..., Any])
+Completer = Callable[[click.Context, click.Parameter, str], list[str]]
+
+
+def completing(words: Iterable[str]) -> Completer:
+    """What a shell offers for an option: the known words that begin as typed. The user may type others."""
+    known = tuple(words)
+
+    def complete(ctx: click.Context, param: click.Parameter, incomplete: str) -> list[str]:
+        return [word for word in known if word.startswith(incomplete)]
+
+    return complete
+
+
+def _proportion(ctx: click.Context, param: click.Parameter, value: float) -> float:
+    if not 0 < value < 1:
+        hint = f"; did you mean {value / 100:g}?" if 1 < value < 100 else ""
+        raise click.BadParameter(f"{value:g} is not between 0 and 1{hint}")
+    return value
+
+
+def sheet(command: Command) -> Command:
+    """The argument SHEET."""
+    return click.argument("sheet")(command)
+
+
+def codebook(command: Command) -> Command:
+    """--codebook."""
+    return click.option(
+        "--codebook",
+        metavar="NAME|FILE",
+        help="What the headings mean: a ready codebook (one-way, two-group, p-with-n) or a .toml file. "
+        "Without it headings are quantity names.",
+    )(command)
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Wanted:
+    """The effect a user asks for; see ``extractor.convert`` for the words."""
+
+    metric: str
+    variance: str | None
+    level: float
+    standardizer: str
+
+
+def wanted(command: Callable[..., Any]) -> Callable[..., Any]:
+    """--to, --variance, --level and --standardizer, handed to the command as ``wanted``."""
+
+    @wraps(command)
+    def gathered(
+        metric: str, variance: str | None, level: float, standardizer: str, **others: object
+    ) -> object:
+        asked = Wanted(metric=metric, variance=variance, level=level, standardizer=standardizer)
+        return command(wanted=asked, **others)
+
+    for option in (
+        click.option(
+            "--standardizer",
+            default="",
+            metavar="NAME",
+            shell_complete=completing(STANDARDIZERS),
+            help=f"For d and g, accept only this one of {', '.join(STANDARDIZERS)}; by default the design's "
+            "usual one.",
+        ),
+        click.option(
+            "--level",
+            type=float,
+            default=0.95,
+            show_default=True,
+            callback=_proportion,
+            help="Confidence level of the limits, as a proportion.",
+        ),
+        click.option(
+            "--variance",
+            type=click.Choice(["exact", "large-sample"]),
+            help="How sampling variances are computed; by default the metric's preferred way, which the "
+            "column variance_method names.",
+        ),
+        click.option(
+            "--to",
+            "metric",
+            required=True,
+            shell_complete=completing(METRICS),
+            metavar="METRIC",
+            help=f"One of {', '.join(METRICS)}.",
+        ),
+    ):
+        gathered = option(gathered)
+    return gathered
+
+
+def fail_on(command: Command) -> Command:
+    """--fail-on."""
+    return click.option(
+        "--fail-on",
+        type=click.Choice(["impossible", "inconsistent", "doubtful"]),
+        help="Exit with status 3 where a finding is at least this strong.",
+    )(command)
+
+
+def output(command: Command) -> Command:
+    """--out, --force and --csv-raw."""
+    for option in (
+        click.option(
+            "--csv-raw", is_flag=True, help="Leave texts in csv files as they are, even those like formulas."
+        ),
+        click.option("--force", is_flag=True, help="Replace the files of an existing output folder."),
+        click.option("--out", type=click.Path(path_type=Path), metavar="DIR", help="Folder to write into."),
+    ):
+        command = option(command)
+    return command
+
+
+def pairs(words: Iterable[str], option: str, example: str) -> dict[str, str]:
+    """NAME=VALUE words as a mapping.
+
+    Raises
+    ------
+    UsageError : a word has no name, no value, or a name another word has.
+    """
+    found: dict[str, str] = {}
+    for word in words:
+        name, sign, value = (part.strip() for part in word.partition("="))
+        if not (name and sign and value):
+            raise UsageError(f"{option} {quoted(word)} is not of the form {example}")
+        if name in found:
+            raise UsageError(f"{option} names {name} twice")
+        found[name] = value
+    return found
+
+
+def check_known(word: str | None, known: Collection[str], kind: str) -> None:
+    """Raise ``UsageError`` with the nearest known words, unless the word is known or not given."""
+    if word is not None and word not in known:
+        near = close_matches(word, known)
+        hint = f"did you mean {' or '.join(near)}?" if near else f"known are {', '.join(known)}"
+        raise UsageError(f"no {kind} is called {quoted(word)}: {hint}")

@@ -1,0 +1,95 @@
+"""What commands do around the work: reading, progress, notes, and the exit status of findings."""
+
+from __future__ import annotations
+
+import sys
+from collections.abc import Callable, Iterator
+from contextlib import contextmanager
+
+import click
+
+from extractor.api import Result, read_evidence
+from extractor.audit.run import Audit, audit_evidence
+from extractor.commands.options import Wanted
+from extractor.conversion import (
+    Conversion,
+    check_method,
+    check_metric,
+    check_standardizer,
+    convert_evidence,
+)
+from extractor.evidence import Evidence
+from extractor.findings import Severity
+from extractor.output.terminal import console
+
+LONG = 20_000
+"""Rows above which progress is shown."""
+_MOST_NOTES = 20
+
+
+def read(sheet: str, codebook: str | None) -> Evidence:
+    """Read a sheet and say on standard error how it was read, where that was not plain."""
+    evidence = read_evidence(sheet, codebook)
+    mention(evidence.table.notes)
+    return evidence
+
+
+def mention(notes: list[str]) -> None:
+    """Notes on standard error, the first few of many."""
+    for note in notes[:_MOST_NOTES]:
+        click.echo(f"note: {note}", err=True)
+    if len(notes) > _MOST_NOTES:
+        click.echo(f"note: and {len(notes) - _MOST_NOTES} more like these", err=True)
+
+
+def convert(sheet: str, codebook: str | None, wanted: Wanted) -> Result:
+    """Convert and audit a sheet; raises as ``extractor.convert`` does."""
+    check(wanted)
+    evidence = read(sheet, codebook)
+    rows = evidence.table.rows
+    with stage(f"converting {rows} rows", rows):
+        conversion = converted(evidence, wanted.metric, wanted)
+    with stage(f"auditing {rows} rows", rows):
+        return Result(conversion, audit_evidence(evidence, conversion))
+
+
+def check(wanted: Wanted) -> None:
+    """Raise ``UsageError`` for words nobody knows, before anything is read."""
+    check_metric(wanted.metric)
+    check_method(wanted.metric, wanted.variance)
+    check_standardizer(wanted.standardizer)
+
+
+def converted(evidence: Evidence, metric: str, wanted: Wanted) -> Conversion:
+    """The effects of read rows in ``metric``, which need not be the one that was asked for."""
+    method = wanted.variance if metric == wanted.metric else None
+    return convert_evidence(
+        evidence, metric, method=method, level=wanted.level, standardizer=wanted.standardizer
+    )
+
+
+@contextmanager
+def stage(text: str, rows: int, *, counts: bool = False) -> Iterator[Callable[[int], None]]:
+    """Show progress on standard error while a stage runs: on a terminal only, and only when it takes long.
+
+    Parameters
+    ----------
+    counts : the stage reports its rows to what the context gives; otherwise the bar only moves.
+    """
+    if rows <= LONG or not sys.stderr.isatty():
+        yield lambda _: None
+        return
+    from rich.progress import BarColumn, Progress, TextColumn, TimeElapsedColumn
+
+    columns = (TextColumn("{task.description}", markup=False), BarColumn(), TimeElapsedColumn())
+    with Progress(*columns, console=console(stderr=True), transient=True) as progress:
+        task = progress.add_task(text, total=rows if counts else None)
+        yield lambda done: progress.advance(task, done)
+
+
+def status(audit: Audit, fail_on: str | None) -> int:
+    """The exit status that the findings ask for."""
+    worst = audit.worst()
+    if fail_on is None or worst is None:
+        return 0
+    return 3 if worst >= Severity[fail_on.upper()] else 0

@@ -1,0 +1,298 @@
+"""Decisions: what a coder recorded about findings, honoured on every further run.
+
+A correction replaces one cell's number as if the sheet had said so; what was printed stays visible beside it.
+A finding that was kept or waived becomes a note that says by whom and why. Nothing is deleted.
+"""
+
+from __future__ import annotations
+
+import datetime
+import re
+import zipfile
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, fields, replace
+from pathlib import Path
+
+import openpyxl
+from openpyxl.utils import get_column_letter
+
+from extractor.codebook import Codebook, normalised
+from extractor.errors import UnreadableInput
+from extractor.findings import Finding, Severity
+from extractor.quantities import VOCABULARY
+from extractor.reading import Reading, quoted
+from extractor.reported import read_number
+from extractor.source.grid import Grid, Rows, heading_text, is_blank
+from extractor.source.reader import read_grid
+from extractor.source.workbook import MOST_BYTES
+from extractor.table import Numbers, ReportedTable, Variable
+from extractor.words import listed, printed_text
+
+SHEET = "decisions"
+COLUMNS = ("row", "cell", "decision", "value", "source", "by", "on", "why")
+KEEP, CORRECT, WAIVE = WORDS = ("keep", "correct", "waive")
+_NEEDED = {KEEP: ("by",), CORRECT: ("cell", "value", "source", "by"), WAIVE: ("by", "why")}
+_ADDRESS = re.compile(r"\$?(?P<column>[A-Za-z]{1,3})\$?(?P<row>[1-9][0-9]*)|row (?P<only>[1-9][0-9]*)")
+_NAMED = re.compile(r"(?P<heading>.*?)\s*\[(?P<address>[^\[\]]*)\]")
+_NO_FINDING = "decision without a finding"
+_DONE = {KEEP: "kept", CORRECT: "corrected", WAIVE: "waived"}
+_PARTS = tuple(field.name for field in fields(Numbers) if field.name != "place")
+
+
+@dataclass(frozen=True, slots=True)
+class Decision:
+    """One line of the decisions.
+
+    row : the coded sheet's own row number.
+    cell : a heading, an address such as H12, or a cell as findings write it; "" for a finding without a cell.
+    value, number_format : the raw cell with the corrected number, read like any cell of the sheet.
+    where, addresses : file and sheet, and the decision's cells by column, for messages.
+    """
+
+    row: int
+    cell: str
+    decision: str
+    value: object
+    number_format: str | None
+    source: str
+    by: str
+    on: str
+    why: str
+    where: str
+    addresses: Mapping[str, str]
+
+    def fault(self, column: str, problem: str) -> UnreadableInput:
+        """The error about one of the decision's cells."""
+        return UnreadableInput(f"{self.where}, cell {self.addresses[column]}: {problem}")
+
+    @property
+    def signed(self) -> str:
+        """Who decided, when and why, in one clause."""
+        when = f" on {self.on}" if self.on else ""
+        reasons = "; ".join(filter(None, (self.source, self.why)))
+        return f"by {self.by}{when}{f' ({reasons})' if reasons else ''}"
+
+
+def read_decisions(path: str | Path) -> list[Decision]:
+    """The decisions in a workbook's sheet ``decisions``, or in a csv or tsv file of their own.
+
+    A workbook without such a sheet holds none.
+
+    Raises
+    ------
+    UnreadableInput : the file cannot be read, or a column or line is not valid; the message names the cell.
+    """
+    workbook = zipfile.is_zipfile(path)
+    grid = _from_workbook(path) if workbook else read_grid(path, lambda h: normalised(h) in COLUMNS)
+    if grid is None:
+        return []
+    at: dict[str, int] = {}
+    for index, heading in enumerate(grid.headings):
+        name = normalised(heading)
+        if name in at or (name and name not in COLUMNS):
+            address = f"{get_column_letter(index + 1)}{grid.header_row}"
+            problem = "stands twice" if name in at else f"is none of the columns {', '.join(COLUMNS)}"
+            raise UnreadableInput(f"{grid.where}, cell {address}: {quoted(heading)} {problem}")
+        if name:
+            at[name] = index
+    missing = [name for name in ("row", "cell", "decision", "by") if name not in at]
+    if missing:
+        raise UnreadableInput(f"{grid.where}, row {grid.header_row}: there is no column {listed(missing)}")
+    return [_decision(grid, at, line) for line in range(len(grid.row_numbers))]
+
+
+def _from_workbook(path: str | Path) -> Grid | None:
+    name = quoted(path, 200)
+    try:
+        with zipfile.ZipFile(path) as archive:
+            size = sum(member.file_size for member in archive.infolist())
+        if size > MOST_BYTES or not openpyxl.DEFUSEDXML:
+            raise UnreadableInput(f"{name} is too large to be read safely, or defusedxml is missing")
+        book = openpyxl.load_workbook(path, read_only=True, data_only=True, keep_links=False)
+        sheet = next((s for s in book.worksheets if s.title.strip().casefold() == SHEET), None)
+        if sheet is None:
+            return None
+        sheet.reset_dimensions()
+        rows = Rows(name, sheet.title, stored=True)
+        for number, row in enumerate(sheet.iter_rows(), 1):
+            rows.add(number, [cell.value for cell in row], [cell.number_format for cell in row])
+    except (OSError, ValueError, LookupError, SyntaxError, TypeError, zipfile.BadZipFile) as fault:
+        raise UnreadableInput(f"{name} is not a readable workbook; save it again as .xlsx") from fault
+    # an empty sheet, or one with headings only, decides nothing
+    return rows.grid() if rows.records else None
+
+
+def _decision(grid: Grid, at: Mapping[str, int], line: int) -> Decision:
+    raw = {name: grid.columns[index][line] for name, index in at.items()}
+    texts = {name: _text(raw.get(name)) for name in COLUMNS}
+    formats = grid.formats[at["value"]] if "value" in at else None
+    row = re.fullmatch(r"[1-9][0-9]*", texts["row"])
+    found = Decision(
+        row=int(row[0]) if row else 0,
+        cell=texts["cell"],
+        decision=texts["decision"].casefold(),
+        value=raw.get("value"),
+        number_format=formats[line] if formats is not None else None,
+        source=texts["source"],
+        by=texts["by"],
+        on=texts["on"],
+        why=texts["why"],
+        where=grid.where,
+        addresses={n: f"{get_column_letter(at.get(n, 0) + 1)}{grid.row_numbers[line]}" for n in COLUMNS},
+    )
+    if row is None:
+        raise found.fault("row", f"{quoted(texts['row'])} is no row number of the coded sheet")
+    if found.decision not in WORDS:
+        raise found.fault("decision", f"{quoted(texts['decision'])} is none of {', '.join(WORDS)}")
+    for name in _NEEDED[found.decision]:
+        if not texts[name]:
+            raise found.fault(name, f"the decision to {found.decision} needs its {name}")
+    return found
+
+
+def _text(raw: object) -> str:
+    if isinstance(raw, datetime.datetime) and raw.time() == datetime.time():
+        raw = raw.date()
+    return "" if raw is None or is_blank(raw) else heading_text(raw).strip()
+
+
+def apply_decisions(
+    table: ReportedTable, decisions: Sequence[Decision], codebook: Codebook
+) -> tuple[ReportedTable, list[str]]:
+    """The table with every correction made, and a note on each that keeps what was printed.
+
+    Raises UnreadableInput where a decision names no row or cell of the table, or a correction is no number.
+    """
+    numbers, notes = dict(table.numbers), list[str]()
+    settled: set[tuple[int, str]] = set()
+    for decision, position, variables in _resolved(table, decisions, codebook):
+        if decision.decision != CORRECT:
+            continue
+        variable = variables[0]
+        note = _correction(table, decision, position, variable)
+        reading = replace(_reading(decision, variable, codebook), understood=note)
+        if numbers[variable] is table.numbers[variable]:
+            copies = {name: getattr(numbers[variable], name).copy() for name in _PARTS}
+            numbers[variable] = replace(numbers[variable], **copies)
+        for name in _PARTS:
+            getattr(numbers[variable], name)[position] = getattr(reading, name)
+        cell = numbers[variable].place.at(decision.row)
+        settled.add((decision.row, cell))
+        notes.append(f"{cell} {note}")
+    conflicts = [
+        (row, cells, message)
+        for row, cells, message in table.settings.get("conflicts", ())
+        if not any((row, cell) in settled for cell in cells.split("; "))
+    ]
+    settings = {**table.settings, "conflicts": conflicts}
+    return replace(table, numbers=numbers, settings=settings, notes=[*table.notes, *notes]), notes
+
+
+def mark(
+    findings: Sequence[Finding], decisions: Sequence[Decision], table: ReportedTable, codebook: Codebook
+) -> list[Finding]:
+    """Findings of a run on the corrected table, with what was decided about them.
+
+    A decision belongs to the findings of its row that name its cell first. Those kept or waived become notes.
+    Every correction is added as a note, and so is a decision that no longer has a finding.
+    ``table`` is the one that was read, before ``apply_decisions``.
+    """
+    marked = list(findings)
+    by_row: dict[int, list[int]] = {}
+    for i, finding in enumerate(findings):
+        by_row.setdefault(finding.row, []).append(i)
+    for decision, position, variables in _resolved(table, decisions, codebook):
+        cells = {table.numbers[variable].place.at(decision.row) for variable in variables}
+        firsts = {i: findings[i].cells[:1] for i in by_row.get(decision.row, ())}
+        mine = [i for i, first in firsts.items() if cells.issuperset(first) and bool(first) == bool(cells)]
+        said = f"{_DONE[decision.decision]} {decision.signed}"
+        for i in mine:
+            severity = marked[i].severity if decision.decision == CORRECT else Severity.NOTE
+            explanation = "; ".join(filter(None, (said, marked[i].explanation)))
+            marked[i] = replace(marked[i], severity=severity, explanation=explanation)
+        rule, message = _NO_FINDING, ""
+        if decision.decision == CORRECT:
+            old, new = table.numbers[variables[0]], _reading(decision, variables[0], codebook)
+            rule, message = "corrected", _correction(table, decision, position, variables[0])
+            if (old.low[position], old.high[position]) == (new.low, new.high):
+                rule, message = _NO_FINDING, f"the sheet itself now says {new}: the decision can be deleted"
+        elif not mine:
+            named = listed(sorted({cell for first in firsts.values() for cell in first})) or "no cell"
+            message = f"{decision.decision} was decided, but the findings of this row name {named} first"
+        if message:
+            study = str(table.fact("study")[position])
+            printed = printed_text(table, variables[0], position) if variables else ""
+            place = tuple(sorted(cells))
+            marked.append(Finding(decision.row, study, Severity.NOTE, rule, place, printed, message, said))
+    return sorted(marked, key=lambda f: (f.row, -f.severity, f.rule, f.cells))
+
+
+def _correction(table: ReportedTable, decision: Decision, position: int, variable: Variable) -> str:
+    numbers = table.numbers[variable]
+    before = printed_text(table, variable, position) or str(numbers.problem[position]) or "blank"
+    return f"corrected from {before} to {_text(decision.value)} {decision.signed}"
+
+
+def _reading(decision: Decision, variable: Variable, codebook: Codebook) -> Reading:
+    reading = read_number(
+        decision.value,
+        VOCABULARY[variable[0]],
+        decimal_mark=codebook.decimal_mark,
+        rounding=codebook.rounding,
+        missing=codebook.missing,
+        decimals=codebook.decimals_of(variable),
+        number_format=decision.number_format,
+        alpha=codebook.alpha,
+    )
+    if not reading.given:
+        raise decision.fault("value", reading.problem or "the corrected value is a code for a missing one")
+    return reading
+
+
+def _resolved(
+    table: ReportedTable, decisions: Sequence[Decision], codebook: Codebook
+) -> list[tuple[Decision, int, list[Variable]]]:
+    """Each decision with its position in the table and the variables of its cell."""
+    position_of = {int(row): i for i, row in enumerate(table.row_numbers)}
+    seen: set[tuple[int, frozenset[Variable]]] = set()
+    found = []
+    for decision in decisions:
+        if decision.row not in position_of:
+            raise decision.fault("row", f"the coded sheet has no row {decision.row}")
+        variables = _variables(table, decision, codebook)
+        if decision.decision == CORRECT and len(variables) > 1:
+            names = listed(sorted(name for name, _ in variables))
+            raise decision.fault("cell", f"{quoted(decision.cell)} holds {names}; name the one to correct")
+        key = decision.row, frozenset(variables)
+        if key in seen:
+            raise decision.fault("cell", f"{quoted(decision.cell)} of row {decision.row} is decided twice")
+        seen.add(key)
+        found.append((decision, position_of[decision.row], variables))
+    return found
+
+
+def _variables(table: ReportedTable, decision: Decision, codebook: Codebook) -> list[Variable]:
+    """What stands in the decision's cell; several numbers where it is running text."""
+    text = decision.cell
+    if not text:
+        return []
+    named = _NAMED.fullmatch(text)
+    heading, spot = (named["heading"], named["address"]) if named else (text, text)
+    meaning, address = codebook.meaning(heading), _ADDRESS.fullmatch(spot)
+    known = isinstance(meaning, tuple) and meaning in table.numbers
+    same = [v for v, n in table.numbers.items() if normalised(n.place.heading) == normalised(heading)]
+    if address and (named or not (known or same)):
+        row = int(address["row"] or address["only"])
+        if row != decision.row:
+            raise decision.fault(
+                "cell", f"{quoted(text)} is in row {row}, the decision in row {decision.row}"
+            )
+    if isinstance(meaning, tuple) and known:
+        return [meaning]
+    if not same and address and address["column"]:
+        column = address["column"].upper()
+        same = [v for v, n in table.numbers.items() if n.place.column == column]
+    if not same:
+        advice = "words are corrected in the sheet itself"
+        raise decision.fault("cell", f"{quoted(text)} is no heading or address of a number; {advice}")
+    return same

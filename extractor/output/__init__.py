@@ -1,0 +1,1 @@
+"""Files and terminal: what was found, written down. Nothing here computes."""

@@ -1,0 +1,126 @@
+"""What each column of the written tables holds, as fields of a Table Schema."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+
+import pandas as pd
+
+from extractor.catalogue.relation import Grade
+from extractor.findings import Severity
+from extractor.quantities import METRICS
+
+
+@dataclass(frozen=True, slots=True)
+class Column:
+    """One column: its type in the words of Table Schema, its meaning, and what its values keep to."""
+
+    kind: str
+    meaning: str
+    constraints: dict[str, object] = field(default_factory=dict)
+
+
+def _words(meaning: str, *allowed: str) -> Column:
+    return Column("string", meaning, {"enum": list(allowed)} if allowed else {})
+
+
+EFFECTS: dict[str, Column] = {
+    "row": Column(
+        "integer",
+        "row of the sheet, as the spreadsheet numbers it",
+        {"required": True, "unique": True, "minimum": 1},
+    ),
+    "study": _words("label of the study"),
+    "outcome": _words("label of the outcome"),
+    "effect": _words("label of the effect"),
+    "metric": _words("what the estimate is an estimate in", *METRICS),
+    "estimate": Column("number", "the effect; blank where none or only a bound could be had"),
+    "variance": Column("number", "sampling variance of the estimate", {"minimum": 0}),
+    "standard_error": Column("number", "square root of the variance", {"minimum": 0}),
+    "ci_low": Column("number", "lower confidence limit; the level stands in the settings of this package"),
+    "ci_high": Column("number", "upper confidence limit"),
+    "n_total": Column("integer", "participants analysed, all groups together", {"minimum": 2}),
+    "grade": _words("what the route loses at worst", *(grade.word for grade in Grade)),
+    "route": _words("reported quantities the estimate starts from"),
+    "assumptions": _words("what the route takes for granted and who supplied it, and how the row was read"),
+    "standardizer": _words("standard deviation by which a mean difference was divided"),
+    "estimate_low": Column("number", "smallest estimate that the rounding of the printed numbers allows"),
+    "estimate_high": Column("number", "largest estimate that the rounding of the printed numbers allows"),
+    "variance_method": _words("how the variance was computed"),
+    "status": _words("what became of the row", "converted", "bounded", "blocked"),
+    "reason": _words("why the row is not converted, or what its estimate lacks"),
+    "findings": _words("severities and rules of the findings about the row"),
+}
+
+FINDINGS: dict[str, Column] = {
+    "row": Column(
+        "integer", "row of the sheet, as the spreadsheet numbers it", {"required": True, "minimum": 1}
+    ),
+    "study": _words("label of the study"),
+    "severity": _words("strength of the finding, never a verdict", *(s.word for s in reversed(Severity))),
+    "rule": _words("check that raised the finding"),
+    "cells": _words("headings with addresses, the most suspect first"),
+    "printed": _words("what the most suspect cell says"),
+    "expected_low": Column("number", "smallest value the other printed numbers allow; blank where unknown"),
+    "expected_high": Column("number", "largest value the other printed numbers allow; blank where unknown"),
+    "slack": Column(
+        "number",
+        "units in the last place by which every printed value must be widened before they agree",
+        {"minimum": 0},
+    ),
+    "message": _words("the finding in one sentence"),
+    "explanation": _words(
+        "slips that would make the numbers agree, those least likely to fit by chance first"
+    ),
+}
+
+
+def is_text(column: pd.Series) -> bool:
+    """Whether a column holds words."""
+    return bool(pd.api.types.is_object_dtype(column) or pd.api.types.is_string_dtype(column))
+
+
+def texts(column: pd.Series) -> list[str]:
+    """A column's words; "" where blank."""
+    blank = column.isna().tolist()
+    return ["" if empty else str(value) for value, empty in zip(column.tolist(), blank, strict=True)]
+
+
+def whole_counts(frame: pd.DataFrame) -> pd.DataFrame:
+    """The frame with columns of counts as integers, where every value is one; blanks stay blanks."""
+    counts = [
+        name
+        for name, column in EFFECTS.items()
+        if column.kind == "integer" and name in frame and pd.api.types.is_float_dtype(frame[name])
+    ]
+    whole = [name for name in counts if (frame[name].isna() | (frame[name] % 1 == 0)).all()]
+    return frame.astype(dict.fromkeys(whole, "Int64"))
+
+
+def fields(
+    frame: pd.DataFrame, known: dict[str, Column], headings: dict[str, str]
+) -> list[dict[str, object]]:
+    """Table Schema fields of a frame's columns, in order.
+
+    Parameters
+    ----------
+    known : meaning by column; other columns came from the sheet.
+    headings : heading as written, by column.
+    """
+    found: list[dict[str, object]] = []
+    for name in frame.columns:
+        column = known.get(name) or Column("string", "carried through from the sheet as it stood")
+        kind = column.kind
+        if kind == "integer" and not pd.api.types.is_integer_dtype(frame[name]):
+            kind = "number"
+        described: dict[str, object] = {
+            "name": headings[name],
+            "type": kind,
+            "description": column.meaning,
+        }
+        if column.constraints:
+            described["constraints"] = column.constraints
+        if name in known and headings[name] != name:
+            described["extractor:column"] = name
+        found.append(described)
+    return found

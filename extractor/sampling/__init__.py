@@ -1,0 +1,1 @@
+"""Sampling distributions of effect sizes: noncentral limits and exact moments."""

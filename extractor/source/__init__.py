@@ -1,0 +1,1 @@
+"""Files and data frames as raw cells with their addresses."""

@@ -1,0 +1,95 @@
+"""Delimited text (RFC 4180 and its relatives) -> raw cells: encodings, delimiters, record numbers."""
+
+from __future__ import annotations
+
+import codecs
+import csv
+import io
+import re
+from collections.abc import Callable, Iterator
+
+from extractor.errors import UnreadableInput
+from extractor.source.grid import Grid, Rows, is_blank
+
+Known = Callable[[str], bool]
+"""Whether a heading is understood."""
+
+_HEAD = 1 << 20
+"""Letters looked at to find the delimiter."""
+
+_BOMS = (
+    (codecs.BOM_UTF8, "utf-8-sig"),
+    (codecs.BOM_UTF32_LE, "utf-32"),
+    (codecs.BOM_UTF32_BE, "utf-32"),
+    (codecs.BOM_UTF16_LE, "utf-16"),
+    (codecs.BOM_UTF16_BE, "utf-16"),
+)
+
+
+def _decode(content: bytes, name: str) -> tuple[str, list[str]]:
+    """Text and notes: UTF-8, UTF-16 and UTF-32 by their marks, else UTF-8, else one byte a letter."""
+    for mark, encoding in _BOMS:
+        if content.startswith(mark):
+            try:
+                return content.decode(encoding), []
+            except UnicodeDecodeError as fault:
+                raise UnreadableInput(
+                    f"{name} is damaged {encoding.upper()} text; save it as UTF-8"
+                ) from fault
+    try:
+        return content.decode("utf-8"), []
+    except UnicodeDecodeError:
+        pass
+    note = "the text is not UTF-8; it was read as {}, check letters beyond a to z"
+    try:
+        return content.decode("cp1252"), [note.format("Windows-1252")]
+    except UnicodeDecodeError:
+        return content.decode("latin-1"), [note.format("Latin-1")]
+
+
+def _records(text: str, delimiter: str) -> Iterator[list[str]]:
+    """Records of delimited text (RFC 4180); a blank line is a record without cells."""
+    return csv.reader(io.StringIO(text, newline=""), delimiter=delimiter, strict=True)
+
+
+def _delimiter(text: str, known: Known) -> str:
+    """The delimiter under which the heading row has the most known headings, then the most headings."""
+
+    def fit(delimiter: str) -> tuple[int, int]:
+        try:
+            first = next(
+                (row for row in _records(text[:_HEAD], delimiter) if not all(map(is_blank, row))), []
+            )
+        except csv.Error:
+            return (0, 0)
+        return sum(known(heading) for heading in first if heading.strip()), len(first)
+
+    return max(",;\t", key=fit)
+
+
+def from_text(content: bytes, name: str, suffix: str, known: Known) -> Grid:
+    """The cells of delimited text. Row numbers count records, as a spreadsheet shows them."""
+    if content.startswith(b"PK\x03\x04"):
+        raise UnreadableInput(
+            f"{name} is a workbook; only delimited text can be piped, so name the file instead"
+        )
+    text, notes = _decode(content, name)
+    if not text.strip(" ,;\t\r\n"):
+        raise UnreadableInput(f"{name} is empty; the first row must hold the headings")
+    declared = re.match(r"sep=(.)\r?\n", text)
+    if declared is not None:
+        # a line by which spreadsheet programs tell each other the delimiter; they do not show it as a row
+        text, delimiter = text[declared.end() :], declared[1]
+    else:
+        delimiter = "\t" if suffix in (".tsv", ".tab") else _delimiter(text, known)
+    rows = Rows(name, "", stored=False)
+    number = 0
+    try:
+        for number, record in enumerate(_records(text, delimiter), 1):
+            rows.add(number, list(record))
+    except csv.Error as fault:
+        advice = "look for a quotation mark left open"
+        raise UnreadableInput(f"{name}, after row {number}: {fault}; {advice}") from fault
+    grid = rows.grid()
+    grid.notes += notes
+    return grid

@@ -1,0 +1,127 @@
+"""Raw cells with their addresses, whatever they were read from. Knows nothing of what they mean."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, field
+
+import numpy as np
+from numpy.typing import NDArray
+
+from extractor.errors import UnreadableInput
+from extractor.reading import quoted, shortest
+from extractor.reported import CellError, UncachedFormula
+
+ObjectArray = NDArray[np.object_]
+
+
+@dataclass(slots=True)
+class Grid:
+    """Cells below a heading row; fully blank rows left out.
+
+    source, sheet : for messages; ``sheet`` is "" where there is only one.
+    headings : text of the heading row, "" where blank.
+    header_row, row_numbers : the file's own numbers, the first row of a file being 1.
+    columns : raw cells of each column, shape (rows,): str, int, float, bool, dates, None, UncachedFormula,
+        CellError.
+    formats : number formats of each column's cells, or None where the source has none.
+    stored : whether numbers are stored as such, so that text shows every digit that was typed.
+    ragged : row numbers with more cells than headings.
+    """
+
+    source: str
+    sheet: str
+    headings: list[str]
+    header_row: int
+    row_numbers: NDArray[np.int64]
+    columns: list[ObjectArray]
+    formats: list[ObjectArray | None]
+    stored: bool
+    ragged: dict[int, int] = field(default_factory=dict)
+    notes: list[str] = field(default_factory=list)
+
+    @property
+    def where(self) -> str:
+        """File and sheet, for messages."""
+        return f"{self.source}, sheet {quoted(self.sheet)}" if self.sheet else self.source
+
+
+def is_blank(value: object) -> bool:
+    """Whether a cell holds nothing but space."""
+    return value is None or (isinstance(value, str) and not value.strip())
+
+
+def object_array(values: list[object], count: int) -> ObjectArray:
+    """An object array of exactly these values, even where they are sequences."""
+    return np.fromiter(values, dtype=object, count=count)
+
+
+class Rows:
+    """Gathers rows; the first that is not blank is the heading row, blank ones below are left out."""
+
+    def __init__(self, source: str, sheet: str, *, stored: bool) -> None:
+        self.source, self.sheet, self.stored = source, sheet, stored
+        self.header: list[str] | None = None
+        self.header_row = 0
+        self.numbers: list[int] = []
+        self.records: list[list[object]] = []
+        self.codes: list[list[str | None]] = []
+        self.ragged: dict[int, int] = {}
+
+    def add(self, number: int, values: list[object], codes: list[str | None] | None = None) -> None:
+        """One row of the file, from its first column on."""
+        if all(map(is_blank, values)):
+            return
+        if self.header is None:
+            texts = ["" if is_blank(value) else heading_text(value) for value in values]
+            while not texts[-1]:
+                texts.pop()
+            self.header, self.header_row = texts, number
+            return
+        width = len(self.header)
+        if len(values) > width and not all(map(is_blank, values[width:])):
+            self.ragged[number] = sum(not is_blank(value) for value in values[width:])
+        values = values[:width] + [None] * (width - len(values))
+        self.numbers.append(number)
+        self.records.append(values)
+        if codes is not None:
+            self.codes.append(codes[:width] + [None] * (width - len(codes)))
+
+    def grid(self) -> Grid:
+        """The finished grid."""
+        where = f"{self.source}, sheet {quoted(self.sheet)}" if self.sheet else self.source
+        if self.header is None:
+            raise UnreadableInput(f"{where} is empty; the first row must hold the headings")
+        if not self.records:
+            raise UnreadableInput(f"{where} has headings in row {self.header_row} and no rows below them")
+        count, width = len(self.records), len(self.header)
+        columns = [object_array(list(column), count) for column in zip(*self.records, strict=True)]
+        formats: list[ObjectArray | None] = [None] * width
+        if self.codes:
+            formats = [object_array(list(column), count) for column in zip(*self.codes, strict=True)]
+        notes = []
+        if self.ragged and self.stored:
+            first = min(self.ragged)
+            notes.append(f"cells to the right of the last heading are left out, first in row {first}")
+        return Grid(
+            source=self.source,
+            sheet=self.sheet,
+            headings=self.header,
+            header_row=self.header_row,
+            row_numbers=np.asarray(self.numbers, dtype=np.int64),
+            columns=columns,
+            formats=formats,
+            stored=self.stored,
+            ragged={} if self.stored else self.ragged,
+            notes=notes,
+        )
+
+
+def heading_text(value: object) -> str:
+    """A heading or a label as text; a whole number without its ``.0``."""
+    if isinstance(value, CellError):
+        return value.code
+    if isinstance(value, UncachedFormula):
+        return value.formula
+    if isinstance(value, float) and value.is_integer():
+        return shortest(value)
+    return str(value)

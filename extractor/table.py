@@ -1,0 +1,100 @@
+"""The reported table: what the reader hands to everything after it. Columnar; it knows no statistics and no files."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+from typing import Any
+
+import numpy as np
+import pandas as pd
+from numpy.typing import NDArray
+
+FloatArray = NDArray[np.float64]
+BoolArray = NDArray[np.bool_]
+ObjectArray = NDArray[np.object_]
+
+Variable = tuple[str, int | None]
+"""A quantity of a row: its name, and the group it belongs to (counted from 1) or None for a scalar."""
+
+
+@dataclass(frozen=True, slots=True)
+class Place:
+    """Where a variable stands in the sheet: the coder's own heading and the column's letter."""
+
+    heading: str
+    column: str
+
+    def at(self, row: int) -> str:
+        """The heading with its address, such as ``F [H12]``; rows are the spreadsheet's own numbers."""
+        return f"{self.heading} [{self.column}{row}]" if self.column else f"{self.heading} [row {row}]"
+
+
+@dataclass(slots=True)
+class Numbers:
+    """One column of printed numbers. All arrays have shape (rows,).
+
+    value : the printed number; NaN where blank, refused, or only a bound.
+    low, high : closed interval of numbers that print so; NaN where blank or refused.
+    unit : one unit in the last printed place; 0 for exact counts; NaN where blank.
+    decimals : printed decimals; -1 where unknown.
+    given : a number or a bound was read.
+    comparator : "=", "<", ">" or "" (blank).
+    understood : how the cell was read, where that was not plain; "" otherwise.
+    problem : why the cell was refused; "" otherwise.
+    """
+
+    value: FloatArray
+    low: FloatArray
+    high: FloatArray
+    unit: FloatArray
+    decimals: NDArray[np.int64]
+    given: BoolArray
+    comparator: ObjectArray
+    understood: ObjectArray
+    problem: ObjectArray
+    place: Place
+
+
+@dataclass(frozen=True, slots=True)
+class Assumption:
+    """A value nobody reported, with its range and who supplied it."""
+
+    value: float
+    by: str
+    low: float = float("nan")
+    high: float = float("nan")
+
+
+@dataclass(slots=True)
+class ReportedTable:
+    """A coded sheet, read. ``row_numbers`` are the spreadsheet's own.
+
+    numbers : printed numbers by variable.
+    facts : coded words by name (see ``quantities.FACTS``), each an object array of str, "" where blank.
+    extras : the columns nobody knows, carried through to the effect table as they stood.
+    assumptions : values supplied by the codebook.
+    problems : (row number, cells, message) of cells that could not be understood and stop the row's use.
+    """
+
+    source: str
+    sheet: str
+    row_numbers: NDArray[np.int64]
+    numbers: dict[Variable, Numbers]
+    facts: dict[str, ObjectArray]
+    extras: pd.DataFrame
+    rounding: str = "nearest"
+    assumptions: Mapping[str, Assumption] = field(default_factory=dict)
+    rename: Mapping[str, str] = field(default_factory=dict)
+    notes: list[str] = field(default_factory=list)
+    settings: Mapping[str, Any] = field(default_factory=dict)
+
+    @property
+    def rows(self) -> int:
+        """Number of data rows."""
+        return len(self.row_numbers)
+
+    def fact(self, name: str) -> ObjectArray:
+        """A column of words; all blank where the sheet has no such column."""
+        found = self.facts.get(name)
+        return found if found is not None else np.full(self.rows, "", dtype=object)
