@@ -13,6 +13,7 @@ from extractor.codebook import Codebook, default_codebook, load_codebook
 from extractor.conversion import Conversion, check_method, check_metric, check_standardizer, convert_evidence
 from extractor.derivations import alternatives_frame, steps_frame
 from extractor.evidence import Evidence, gather
+from extractor.groups_sheet import with_groups
 from extractor.sheet import read_table
 
 
@@ -57,6 +58,7 @@ def convert(
     variance: str | None = None,
     level: float = 0.95,
     standardizer: str = "",
+    groups: str | Path | pd.DataFrame | None = None,
 ) -> Result:
     """Turn a coded sheet into effects of one metric.
 
@@ -67,6 +69,7 @@ def convert(
     codebook : the name of a ready codebook, a TOML file, or nothing where headings are quantity names.
     variance : "exact" or "large-sample"; by default each metric's preferred one.
     level : confidence level of the limits, as a proportion.
+    groups : the lines of the sheet ``groups``, where they stand in a file or frame of their own.
     standardizer : for d and g, the only one to accept; by default each design's usual one.
 
     Raises
@@ -77,24 +80,31 @@ def convert(
     check_metric(to)
     check_method(to, variance)
     check_standardizer(standardizer)
-    evidence = read_evidence(source, codebook)
+    evidence = read_evidence(source, codebook, groups)
     conversion = convert_evidence(evidence, to, method=variance, level=level, standardizer=standardizer)
     return Result(conversion, audit_evidence(evidence, conversion))
 
 
-def audit_sheet(source: str | Path | pd.DataFrame, codebook: str | Path | Codebook | None = None) -> Audit:
+def audit_sheet(
+    source: str | Path | pd.DataFrame,
+    codebook: str | Path | Codebook | None = None,
+    *,
+    groups: str | Path | pd.DataFrame | None = None,
+) -> Audit:
     """Ask of every row whether its printed numbers can all be true; raises as ``convert`` does."""
-    return audit_evidence(read_evidence(source, codebook), None)
+    return audit_evidence(read_evidence(source, codebook, groups), None)
 
 
 def read_evidence(
-    source: str | Path | pd.DataFrame, codebook: str | Path | Codebook | None = None
+    source: str | Path | pd.DataFrame,
+    codebook: str | Path | Codebook | None = None,
+    groups: str | Path | pd.DataFrame | None = None,
 ) -> Evidence:
-    """Read a sheet and arrange it for computing."""
+    """Read a sheet, with the lines of its groups sheet, and arrange it for computing."""
     if codebook is None:
         book = default_codebook()
     elif isinstance(codebook, Codebook):
         book = codebook
     else:
         book = load_codebook(codebook)
-    return gather(read_table(source, book))
+    return gather(with_groups(read_table(source, book), source, book, groups))

@@ -103,7 +103,9 @@ def support(chosen: Chosen, method: str | None, level: float) -> None:
     reachable = search(chosen.block.start, design)
     for index in np.unique(chosen.which[chosen.pointed]):
         route, rows = chosen.routes[index], (chosen.which == index) & chosen.pointed
-        standardizer = standardizer_of(route.standardizer, design) if chosen.metric in STANDARDIZED else "pooled"
+        standardizer = (
+            standardizer_of(route.standardizer, design) if chosen.metric in STANDARDIZED else "pooled"
+        )
         variance = variance_of(chosen.metric, method, design, standardizer)
         limits = limits_of(chosen.metric, design, standardizer)
         steps = chosen.engine.all_steps(route)

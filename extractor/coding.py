@@ -1,4 +1,4 @@
-"""The coded words of a row as arrays: its design, contrast, direction and standardizer. Rows they rule out are blocked."""
+"""The coded words of a row as arrays: design, contrast, direction, standardizer. Rows they rule out are blocked."""
 
 from __future__ import annotations
 
@@ -9,6 +9,9 @@ from extractor.catalogue.standardizers import DEFAULT
 from extractor.contrast import contrast_weights
 from extractor.quantities import DESIGNS, STANDARDIZERS, close_matches
 from extractor.table import BoolArray, FloatArray, ObjectArray, ReportedTable
+
+NO_CONTRAST = "none"
+"""The contrast of a term that compares more than two levels."""
 
 _DIRECTIONS = {"+": 1.0, "-": -1.0}
 _POOLED_UNLESS_SAID = frozenset({"two-group"})
@@ -44,7 +47,11 @@ class Coding:
             near = close_matches(word, DESIGNS)
             hint = f" (did you mean {near[0]}?)" if near else ""
             known = ", ".join(DESIGNS)
-            why = f"design '{word}' is not one of {known}{hint}" if word else f"no design is coded; one of {known}"
+            why = (
+                f"design '{word}' is not one of {known}{hint}"
+                if word
+                else f"no design is coded; one of {known}"
+            )
             self.block(coded == word, why)
         return coded
 
@@ -68,7 +75,9 @@ class Coding:
                 f"design is {design} but more than two groups are coded: another design, and name the contrast",
             )
         self.remark(partial, "some groups of the model are not coded")
-        return np.asarray(np.where(partial, "one-way-partial", np.where(two, "two-group", coded)), dtype=object)
+        return np.asarray(
+            np.where(partial, "one-way-partial", np.where(two, "two-group", coded)), dtype=object
+        )
 
     def weights(self, design: ObjectArray, groups: FloatArray) -> dict[tuple[str, int], FloatArray]:
         """Weights by (contrast text, number of groups); blocks rows whose contrast is not understood."""
@@ -77,6 +86,9 @@ class Coding:
         for text in sorted({str(t) for t in texts}):
             for count in sorted({int(g) for g in groups[texts == text]}):
                 where = (texts == text) & (groups == count)
+                if text == NO_CONTRAST:
+                    weights[text, count] = np.zeros(max(count, 2))
+                    continue
                 try:
                     weights[text, count], read = contrast_weights(text, max(count, 2))
                 except ValueError as problem:

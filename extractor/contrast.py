@@ -43,4 +43,5 @@ def contrast_weights(text: str, groups: int) -> tuple[FloatArray, str]:
         raise ValueError(f"contrast '{text}' has {len(given)} weights for {groups} coded groups")
     if abs(given.sum()) > 1e-6 * np.abs(given).sum() or not (given > 0).any():
         raise ValueError(f"contrast '{text}' has weights that do not sum to zero")
-    return given / given[given > 0].sum(), f"contrast with weights {text}"
+    shown = ", ".join(f"{w:.3g}" for w in given)
+    return given / given[given > 0].sum(), f"contrast with weights {shown}"

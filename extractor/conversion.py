@@ -6,6 +6,7 @@ from dataclasses import dataclass
 
 import numpy as np
 import pandas as pd
+from numpy.typing import NDArray
 
 from extractor.catalogue.refusals import why_no_route
 from extractor.choice import NOTHING, STANDARDIZED, Chosen, assumptions_of, choose, grade_of, support
@@ -172,7 +173,9 @@ class _Effects:
                 known = np.isfinite(supported.variance)
                 self.words["variance_method"][exact[known]] = supported.method
                 if not supported.method:
-                    self.words["reason"][exact] = "no sampling variance is known for this design and standardizer"
+                    self.words["reason"][exact] = (
+                        "no sampling variance is known for this design and standardizer"
+                    )
                 elif supported.missing:
                     lacking = ", ".join(supported.missing)
                     self.words["reason"][exact] = f"no sampling variance or limits without {lacking}"
@@ -181,7 +184,7 @@ class _Effects:
         self._enter_totals(chosen)
         self._refuse(chosen)
 
-    def _remarked(self, rows: FloatArray, said: list[str]) -> ObjectArray:
+    def _remarked(self, rows: NDArray[np.intp], said: list[str]) -> ObjectArray:
         texts = np.full(len(rows), "; ".join(said), dtype=object)
         extra = [self.evidence.remarks[rows]]
         if is_signed(self.metric):
@@ -211,11 +214,11 @@ class _Effects:
         else:
             self.words["reason"][left] = refusal(chosen.block, self.metric)
 
-    def _set(self, name: str, rows: FloatArray, values: FloatArray) -> None:
+    def _set(self, name: str, rows: NDArray[np.intp], values: FloatArray) -> None:
         self.numbers[name][rows] = np.where(np.isfinite(values), values, np.nan)
 
     def _set_interval(
-        self, low_name: str, high_name: str, rows: FloatArray, low: FloatArray, high: FloatArray
+        self, low_name: str, high_name: str, rows: NDArray[np.intp], low: FloatArray, high: FloatArray
     ) -> None:
         flipped = self.flipped[rows]
         self._set(low_name, rows, np.where(flipped, -high, low))

@@ -8,9 +8,11 @@ from __future__ import annotations
 
 import datetime
 import re
+import warnings
 import zipfile
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, fields, replace
+from itertools import islice
 from pathlib import Path
 
 import openpyxl
@@ -22,9 +24,9 @@ from extractor.findings import Finding, Severity
 from extractor.quantities import VOCABULARY
 from extractor.reading import Reading, quoted
 from extractor.reported import read_number
-from extractor.source.grid import Grid, Rows, heading_text, is_blank
+from extractor.source.grid import Grid, heading_text, is_blank
 from extractor.source.reader import read_grid
-from extractor.source.workbook import MOST_BYTES
+from extractor.source.workbook import has_sheet
 from extractor.table import Numbers, ReportedTable, Variable
 from extractor.words import listed, printed_text
 
@@ -63,7 +65,8 @@ class Decision:
 
     def fault(self, column: str, problem: str) -> UnreadableInput:
         """The error about one of the decision's cells."""
-        return UnreadableInput(f"{self.where}, cell {self.addresses[column]}: {problem}")
+        spot = f"cell {self.addresses[column]}" if column in self.addresses else f"no column {column}"
+        return UnreadableInput(f"{self.where}, {spot}: {problem}")
 
     @property
     def signed(self) -> str:
@@ -82,10 +85,9 @@ def read_decisions(path: str | Path) -> list[Decision]:
     ------
     UnreadableInput : the file cannot be read, or a column or line is not valid; the message names the cell.
     """
-    workbook = zipfile.is_zipfile(path)
-    grid = _from_workbook(path) if workbook else read_grid(path, lambda h: normalised(h) in COLUMNS)
-    if grid is None:
+    if zipfile.is_zipfile(path) and not _has_lines(Path(path)):
         return []
+    grid = read_grid(path, lambda heading: normalised(heading) in COLUMNS, (SHEET,))
     at: dict[str, int] = {}
     for index, heading in enumerate(grid.headings):
         name = normalised(heading)
@@ -98,28 +100,26 @@ def read_decisions(path: str | Path) -> list[Decision]:
     missing = [name for name in ("row", "cell", "decision", "by") if name not in at]
     if missing:
         raise UnreadableInput(f"{grid.where}, row {grid.header_row}: there is no column {listed(missing)}")
+    if grid.ragged:
+        raise UnreadableInput(
+            f"{grid.where}, row {min(grid.ragged)}: more cells than headings; quote the commas"
+        )
     return [_decision(grid, at, line) for line in range(len(grid.row_numbers))]
 
 
-def _from_workbook(path: str | Path) -> Grid | None:
-    name = quoted(path, 200)
-    try:
-        with zipfile.ZipFile(path) as archive:
-            size = sum(member.file_size for member in archive.infolist())
-        if size > MOST_BYTES or not openpyxl.DEFUSEDXML:
-            raise UnreadableInput(f"{name} is too large to be read safely, or defusedxml is missing")
-        book = openpyxl.load_workbook(path, read_only=True, data_only=True, keep_links=False)
-        sheet = next((s for s in book.worksheets if s.title.strip().casefold() == SHEET), None)
-        if sheet is None:
-            return None
-        sheet.reset_dimensions()
-        rows = Rows(name, sheet.title, stored=True)
-        for number, row in enumerate(sheet.iter_rows(), 1):
-            rows.add(number, [cell.value for cell in row], [cell.number_format for cell in row])
-    except (OSError, ValueError, LookupError, SyntaxError, TypeError, zipfile.BadZipFile) as fault:
-        raise UnreadableInput(f"{name} is not a readable workbook; save it again as .xlsx") from fault
-    # an empty sheet, or one with headings only, decides nothing
-    return rows.grid() if rows.records else None
+def _has_lines(path: Path) -> bool:
+    """Whether a workbook has a sheet of decisions with more than its headings."""
+    if not has_sheet(path, SHEET):
+        return False
+    with warnings.catch_warnings():
+        # openpyxl warns about extensions it drops
+        warnings.simplefilter("ignore")
+        book = openpyxl.load_workbook(path, read_only=True, keep_links=False)
+        sheet = next(sheet for sheet in book.worksheets if sheet.title.strip().casefold() == SHEET)
+        filled = (row for row in sheet.iter_rows(values_only=True) if not all(map(is_blank, row)))
+        more = len(list(islice(filled, 2))) > 1
+        book.close()
+    return more
 
 
 def _decision(grid: Grid, at: Mapping[str, int], line: int) -> Decision:
@@ -138,7 +138,7 @@ def _decision(grid: Grid, at: Mapping[str, int], line: int) -> Decision:
         on=texts["on"],
         why=texts["why"],
         where=grid.where,
-        addresses={n: f"{get_column_letter(at.get(n, 0) + 1)}{grid.row_numbers[line]}" for n in COLUMNS},
+        addresses={n: f"{get_column_letter(i + 1)}{grid.row_numbers[line]}" for n, i in at.items()},
     )
     if row is None:
         raise found.fault("row", f"{quoted(texts['row'])} is no row number of the coded sheet")

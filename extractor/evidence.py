@@ -13,10 +13,11 @@ from dataclasses import dataclass, field
 import numpy as np
 from numpy.typing import NDArray
 
-from extractor.coding import Coding, leaf_of_d
+from extractor.coding import NO_CONTRAST, Coding, leaf_of_d
 from extractor.engine import Estimate
 from extractor.planner import Start
 from extractor.quantities import DEFAULTS, VOCABULARY, Quantity, Role, Shape
+from extractor.study.cells import leaves_from_cells
 from extractor.study.terms import factors_of, sums_over_terms, terms_per_row
 from extractor.table import Assumption, BoolArray, FloatArray, Numbers, ObjectArray, ReportedTable, Variable
 
@@ -118,7 +119,7 @@ class _Gathering:
         # an F test has one tail of F, which is both tails of t
         by_t = np.isin(self.design, ("two-group", "paired"))
         self.f_test = self.given("f_value") | self.given("df_effect") | ~by_t
-        self.sums = sums_over_terms(table, self.use, self.design)
+        self.sums = sums_over_terms(table, self.use, self.design) | leaves_from_cells(table, self.design)
 
     def given(self, name: str, group: int | None = None) -> BoolArray:
         found = self.use.get((name, group))
@@ -152,7 +153,9 @@ class _Gathering:
         several = (self.table.fact("design") == "within") & (
             (terms_per_row(self.table, self.table.fact("design")) > 1) | self._joint_term()
         )
-        self.coding.remark(several & (highest > 0), "conditions of a model with several terms are not used here")
+        self.coding.remark(
+            several & (highest > 0), "conditions of a model with several terms are not used here"
+        )
         return np.where(several, 0.0, highest)
 
     def _joint_term(self) -> BoolArray:
@@ -180,14 +183,24 @@ class _Gathering:
             if (name, None) in self.use:
                 self.use[name, None] = self.use[name, None] & keep
         self.corrected = fractional & correctable
-        self.coding.remark(fractional & ~correctable, "the df are not whole: its test is not the classical one")
+        self.coding.remark(
+            fractional & ~correctable, "the df are not whole: its test is not the classical one"
+        )
         self.coding.remark(self.corrected, "the df carry a sphericity correction")
 
     def _signatures(self) -> tuple[NDArray[np.int16], list[Variable]]:
         """One row of small integers per row; equal rows share a plan."""
         columns = sorted(self.use, key=lambda v: (v[0], v[1] or 0))
         words = (np.unique(w.astype(str), return_inverse=True)[1] for w in (self.design, self.standardizer))
-        facts = (self.groups, ~np.isnan(self.direction), self.contrast_p, self.f_test, self.corrected)
+        compared = self.table.fact("contrast") != NO_CONTRAST
+        facts = (
+            self.groups,
+            ~np.isnan(self.direction),
+            compared,
+            self.contrast_p,
+            self.f_test,
+            self.corrected,
+        )
         parts = [*words, *facts, *(np.isfinite(e.low) for e in self.sums.values())]
         for variable in columns:
             known = np.where(np.isnan(self.numbers[variable].value), _BOUND, _POINT)
@@ -243,7 +256,9 @@ class _Gathering:
             self._estimate(m, block.positions) if s != _ABSENT else unknown
             for m, s in zip(members, states, strict=True)
         ]
-        stacked = Estimate(*(np.column_stack([getattr(p, end) for p in parts]) for end in ("value", "low", "high")))
+        stacked = Estimate(
+            *(np.column_stack([getattr(p, end) for p in parts]) for end in ("value", "low", "high"))
+        )
         block.origins[quantity.name] = tuple(members)
         if _ABSENT in states:
             block.partial[quantity.name] = stacked
@@ -265,7 +280,9 @@ class _Gathering:
         elif "p_value" in block.leaves and bool(self.contrast_p[first]):
             self._rename(block, "p_value", "p_contrast", bounds)
         elif "p_value" in block.leaves and "t_value" in block.leaves and block.design.startswith("one-way"):
-            self._drop(block, "p_value", bounds, "p stands beside an F and a t: left out, it could be either's")
+            self._drop(
+                block, "p_value", bounds, "p stands beside an F and a t: left out, it could be either's"
+            )
 
     def _rename(self, block: Block, old: str, new: str, bounds: set[str]) -> None:
         if old == new:
@@ -299,7 +316,8 @@ class _Gathering:
         if block.groups >= 2:
             texts, which = np.unique(self.table.fact("contrast")[rows].astype(str), return_inverse=True)
             stacked = np.stack([self.weights[str(t), block.groups] for t in texts])[which]
-            block.leaves["contrast_weight"] = Estimate(stacked, stacked, stacked)
+            if stacked.any(axis=-1).all():
+                block.leaves["contrast_weight"] = Estimate(stacked, stacked, stacked)
         if not np.isnan(self.direction[first]):
             block.leaves["direction"] = _certain(self.direction[rows])
         count = coded_k(block)

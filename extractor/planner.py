@@ -6,8 +6,8 @@ the best of the inputs first (after Knuth 1977 for the best, Huang & Chiang 2005
 signature, that is, per set of quantities that rows have in common.
 
 Order of preference: fewest missing quantities asked for, then the design's usual standardizer, then fewest
-assumptions, then best grade, then fewest steps, then names, so that the same input always gives the same plan. Between routes of equal grade the engine prefers, row
-by row, the one with the narrowest rounding envelope.
+assumptions, then best grade, then fewest steps, then names, so that the same input always gives the same plan.
+Between routes of equal grade the engine prefers, row by row, the one with the narrowest rounding envelope.
 """
 
 from __future__ import annotations

@@ -83,8 +83,19 @@ def _inner(
     *,
     shape: Shape = Shape.SCALAR,
     exact: bool = False,
+    integer: bool = False,
 ) -> Quantity:
-    return Quantity(name, symbol, meaning, low, high, exact=exact, shape=shape, role=Role.INNER)
+    return Quantity(
+        name,
+        symbol,
+        meaning,
+        low,
+        high,
+        integer=integer,
+        exact=exact or integer,
+        shape=shape,
+        role=Role.INNER,
+    )
 
 
 _TEST = [
@@ -178,7 +189,7 @@ _OTHER = [
     _scalar("rank_sum", "W", "sum of the ranks of group 1 (Wilcoxon)", 0.0),
     _scalar("signed_rank_sum", "T", "smaller sum of the signed ranks of pairs (Wilcoxon)", 0.0),
     _scalar("rank_eta_squared", "η²_ranks", "eta squared of the ranks, H / (N - 1)", 0.0, 1.0),
-    _scalar("rank_epsilon_squared", "ε²_ranks", "epsilon squared of the ranks, (H - k + 1) / (N - k)", -INF, 1.0),
+    _scalar("rank_epsilon_squared", "ε²_ranks", "Kelley's epsilon squared of the ranks", -INF, 1.0),
     _signed("rank_biserial", "r_rb", "rank-biserial correlation in the direction of the contrast", 1.0),
     _signed("rank_r", "r_z", "z of a rank test over the root of the number of participants", 1.0),
     _signed("phi", "φ", "phi coefficient of a 2 x 2 table in the direction of the contrast", 1.0),
@@ -187,7 +198,7 @@ _OTHER = [
     _scalar("lsd_value", "LSD", "least significant difference of two means of equal group size", 0.0),
     _scalar("hsd_value", "HSD", "honestly significant difference of two means of equal group size", 0.0),
     Quantity("significance_level", "α", "significance level of a printed LSD or HSD", 0.0, 0.5),
-    _scalar("adjusted_p", "p_adj", "two-sided p value times the number of comparisons (Bonferroni)", 0.0, 1.0),
+    _scalar("adjusted_p", "p_adj", "p value times the number of comparisons (Bonferroni)", 0.0, 1.0),
     _count("comparisons", "m", "number of comparisons of a Bonferroni adjustment", 1.0),
 ]
 
@@ -220,8 +231,9 @@ _INNER = [
         "N_obs",
         "observations behind a term: participants times the levels they were measured at",
         2.0,
+        integer=True,
     ),
-    _inner("df_others", "Σdf_others", "degrees of freedom of the model's other terms", 0.0, exact=True),
+    _inner("df_others", "Σdf_others", "degrees of freedom of the model's other terms", 0.0, integer=True),
     _inner("explained_by_others", "Σdf·F_others", "sum over the model's other terms of df times F", 0.0),
     _inner("ss_others", "ΣSS_others", "sum of squares of the model's other terms", 0.0),
     _inner(
@@ -240,6 +252,29 @@ _INNER = [
     _inner("corrected_df_effect", "ε·df1", "numerator df multiplied by a sphericity correction", 0.0),
     _inner("corrected_df_error", "ε·df2", "denominator df multiplied by a sphericity correction", 0.0),
     _inner("p_corrected", "p", "p value at the corrected degrees of freedom", 0.0, 1.0),
+    _inner("cells_ss_effect", "SS_effect", "sum of squares of the term from cells of equal size", 0.0),
+    _inner(
+        "cells_ss_effect_unbalanced", "SS_III", "type III sum of squares of the term from unequal cells", 0.0
+    ),
+    _inner(
+        "cells_ss_alone",
+        "SS_alone",
+        "sum of squares of a main effect from cells, the other factors ignored",
+        0.0,
+    ),
+    _inner("error_share", "MS_error/s²", "error mean square over the variance a d is standardised by", 0.0),
+    _inner(
+        "df_standardizer",
+        "df_s",
+        "degrees of freedom of the standard deviation a d is divided by",
+        1.0,
+        integer=True,
+    ),
+    _inner("cells_ss_error", "SS_error", "sum of squares within cells", 0.0),
+    _inner("cells_ss_total", "SS_total", "total sum of squares from cells", 0.0),
+    _inner("cells_df_effect", "df1", "degrees of freedom of the term from its levels", 0.0, integer=True),
+    _inner("cells_df_error", "df2", "degrees of freedom within cells", 0.0, integer=True),
+    _inner("cells_n_total", "N", "participants in all cells", 0.0, integer=True),
     _inner("sd_difference", "SD_diff", "standard deviation of the difference scores", 0.0),
     _inner("average_sd", "s_av", "root of the mean of the two variances", 0.0),
     _inner("pre_sd", "s_pre", "standard deviation before treatment, pooled over the groups", 0.0),

@@ -1,4 +1,4 @@
-"""The reported table: what the reader hands to everything after it. Columnar; it knows no statistics and no files."""
+"""The reported table: what the reader hands to everything after it. Columnar; no statistics, no files."""
 
 from __future__ import annotations
 
@@ -66,6 +66,20 @@ class Assumption:
     high: float = float("nan")
 
 
+@dataclass(frozen=True, slots=True)
+class Cells:
+    """The cells of one factorial model, from the sheet ``groups``; arrays of shape (cells,).
+
+    levels : the level of each cell by factor, factor names in lower case. rows : row numbers of that sheet.
+    """
+
+    n: FloatArray
+    mean: tuple[FloatArray, FloatArray, FloatArray]
+    sd: tuple[FloatArray, FloatArray, FloatArray]
+    levels: Mapping[str, list[str]]
+    rows: NDArray[np.int64]
+
+
 @dataclass(slots=True)
 class ReportedTable:
     """A coded sheet, read. ``row_numbers`` are the spreadsheet's own.
@@ -74,7 +88,10 @@ class ReportedTable:
     facts : coded words by name (see ``quantities.FACTS``), each an object array of str, "" where blank.
     extras : the columns nobody knows, carried through to the effect table as they stood.
     assumptions : values supplied by the codebook.
-    problems : (row number, cells, message) of cells that could not be understood and stop the row's use.
+    cells : cells of factorial models, by the label of the analysis.
+    notes : what was noticed on reading, for the user.
+    settings : the codebook's values and the reader's remarks
+        (``problems``, ``conflicts``, ``understood``: lists of (row number, cells with addresses, message)).
     """
 
     source: str
@@ -84,6 +101,7 @@ class ReportedTable:
     facts: dict[str, ObjectArray]
     extras: pd.DataFrame
     rounding: str = "nearest"
+    cells: Mapping[str, Cells] = field(default_factory=dict)
     assumptions: Mapping[str, Assumption] = field(default_factory=dict)
     rename: Mapping[str, str] = field(default_factory=dict)
     notes: list[str] = field(default_factory=list)

@@ -184,7 +184,9 @@ def test_a_reported_metric_is_its_own_best_route() -> None:
 # ---- what must not be converted ------------------------------------------------------------------
 
 
-@pytest.mark.parametrize("metric", ["cohens_d", "hedges_g", "r", "fisher_z", "log_odds_ratio", "mean_difference"])
+@pytest.mark.parametrize(
+    "metric", ["cohens_d", "hedges_g", "r", "fisher_z", "log_odds_ratio", "mean_difference"]
+)
 @pytest.mark.parametrize(
     "known",
     [
@@ -196,7 +198,9 @@ def test_a_reported_metric_is_its_own_best_route() -> None:
         ("eta_squared", "omega_squared", "epsilon_squared", "cohens_f", "n_total", "k_groups", "direction"),
     ],
 )
-def test_omnibus_statistics_of_several_groups_lead_to_no_contrast(metric: str, known: tuple[str, ...]) -> None:
+def test_omnibus_statistics_of_several_groups_lead_to_no_contrast(
+    metric: str, known: tuple[str, ...]
+) -> None:
     assert routes(metric, "one-way", *known) == ()
 
 
@@ -246,7 +250,9 @@ def test_a_bound_on_p_gives_a_bound(metric: str) -> None:
 
 
 def test_a_bound_on_p_does_not_touch_routes_without_it() -> None:
-    found = routes("omega_squared", "one-way", "f_value", "df_effect", "df_error", "tails", bounds=("p_value",))
+    found = routes(
+        "omega_squared", "one-way", "f_value", "df_effect", "df_error", "tails", bounds=("p_value",)
+    )
     assert found[0].grade is Grade.IDENTITY
     assert "p_value" not in found[0].leaves
 
@@ -292,7 +298,11 @@ def test_unlocking_sets_open_a_route_and_no_smaller_set_does(design: str) -> Non
                 assert _opens(known | asked, design, metric), (sorted(known), metric, sorted(asked))
                 for smaller in combinations(sorted(asked), len(asked) - 1):
                     # routes only grow with what is known, so leaving out one quantity tests every proper subset
-                    assert not _opens(known | set(smaller), design, metric), (sorted(known), metric, sorted(asked))
+                    assert not _opens(known | set(smaller), design, metric), (
+                        sorted(known),
+                        metric,
+                        sorted(asked),
+                    )
     assert blocked > 50
 
 
@@ -312,5 +322,7 @@ def test_unlocking_the_classic_case() -> None:
 
 
 def test_direction_alone_unlocks_a_two_group_f() -> None:
-    sets = unlocking_sets(start("f_value", "df_error", "n", "contrast_weight", "k_groups"), "two-group", "hedges_g")
+    sets = unlocking_sets(
+        start("f_value", "df_error", "n", "contrast_weight", "k_groups"), "two-group", "hedges_g"
+    )
     assert frozenset({"direction"}) in sets

@@ -89,7 +89,10 @@ def test_f_back_from_every_index(f_rows: Rows) -> None:
     omega = explained.omega_squared_from_f(f, df1, n)
     epsilon = explained.epsilon_squared_from_f(f, df1, df2)
     # near F = 0 the root of 1 + ω²/(1 - ω²)·N/df1 cancels: relative to 1 + N/df1 instead
-    for back in (explained.f_from_omega_squared(omega, df1, n), explained.f_from_epsilon_squared(epsilon, df1, df2)):
+    for back in (
+        explained.f_from_omega_squared(omega, df1, n),
+        explained.f_from_epsilon_squared(epsilon, df1, df2),
+    ):
         assert (np.abs(back - f) <= 1e-12 * (f + n / df1)).all()
 
 
@@ -117,7 +120,9 @@ def test_pooled_test_from_summaries() -> None:
     expected = stats.ttest_ind_from_stats(mean[:, 0], sd[:, 0], n[:, 0], mean[:, 1], sd[:, 1], n[:, 1])
     weight = np.tile([1.0, -1.0], (ROWS, 1))
     df = n.sum(axis=1) - 2
-    pooled = contrasts.pooled_sd_from_mean_square(source_table.error_mean_square(groups.error_sum_from_sds(n, sd), df))
+    pooled = contrasts.pooled_sd_from_mean_square(
+        source_table.error_mean_square(groups.error_sum_from_sds(n, sd), df)
+    )
     error = contrasts.standard_error_of_difference(pooled, contrasts.inverse_effective_size(n, weight))
     t = contrasts.t_from_difference(contrasts.difference_of_means(mean, weight), error)
     close(t, expected.statistic)
@@ -139,7 +144,10 @@ def test_classical_and_welch_f_from_summaries(k: int) -> None:
     mean, sd = rng.normal(5, 1, size=(300, k)), np.exp(rng.normal(0, 0.5, size=(300, k)))
     between = source_table.effect_mean_square(groups.effect_sum_from_means(n, mean), np.full(300, k - 1.0))
     f = source_table.f_from_mean_squares(between, error_mean_square(n, sd))
-    welch, welch_df = homogeneity.welch_f_from_summaries(n, mean, sd), homogeneity.welch_df_from_summaries(n, sd)
+    welch, welch_df = (
+        homogeneity.welch_f_from_summaries(n, mean, sd),
+        homogeneity.welch_df_from_summaries(n, sd),
+    )
     for i in range(300):
         equal = oneway.anova_generic(mean[i], sd[i] ** 2, n[i], use_var="equal")
         unequal = oneway.anova_generic(mean[i], sd[i] ** 2, n[i], use_var="unequal")
@@ -221,7 +229,9 @@ def test_large_sample_variances_are_their_formulas(t_rows: Rows) -> None:
     total, df = n1 + n2, n1 + n2 - 2
     d = t * np.sqrt(1 / n1 + 1 / n2)
     r = t / np.sqrt(t**2 + df)
-    found = variance("cohens_d", "two-group", cohens_d=d, inverse_effective_n=1 / n1 + 1 / n2, n_total=total, df_error=df)
+    found = variance(
+        "cohens_d", "two-group", cohens_d=d, inverse_effective_n=1 / n1 + 1 / n2, n_total=total, df_error=df
+    )
     close(found, (n1 + n2) / (n1 * n2) + d**2 / (2 * (n1 + n2)))
     close(variance("r", "two-group", r=r, n_total=total), (1 - r**2) ** 2 / (total - 1))
     usable = total > 3
@@ -278,7 +288,16 @@ def test_limits_of_eta_omega_and_epsilon_squared_and_f_in_mpmath() -> None:
         "cohens_f": np.sqrt(eta / (1 - eta)),
     }
     found = {
-        metric: limits(metric, "one-way", level, **{metric: value}, df_effect=df1, df_error=df2, n_total=n, n_observations=n)
+        metric: limits(
+            metric,
+            "one-way",
+            level,
+            **{metric: value},
+            df_effect=df1,
+            df_error=df2,
+            n_total=n,
+            n_observations=n,
+        )
         for metric, value in estimates.items()
     }
     reference = found["eta_squared"]
@@ -319,7 +338,9 @@ def _solve_f(f: float, df1: float, df2: float, p: float) -> float:
 
 
 def _limits_of_d(t: FloatArray, inverse_n: FloatArray, df: FloatArray) -> Interval:
-    return limits("cohens_d", "two-group", cohens_d=t * np.sqrt(inverse_n), inverse_effective_n=inverse_n, df_error=df)
+    return limits(
+        "cohens_d", "two-group", cohens_d=t * np.sqrt(inverse_n), inverse_effective_n=inverse_n, df_error=df
+    )
 
 
 def test_limits_of_d_against_scipy_distributions() -> None:
@@ -336,7 +357,9 @@ def test_limits_of_d_against_scipy_distributions() -> None:
             # solved for a positive t, where scipy's noncentral t is accurate
             target = p if sign > 0 else 1 - p
             expected = sign * optimize.brentq(
-                lambda delta, i=i, sign=sign, target=target: stats.nct.cdf(sign * t[i], df[i], delta) - target,
+                lambda delta, i=i, sign=sign, target=target: (
+                    stats.nct.cdf(sign * t[i], df[i], delta) - target
+                ),
                 -30.0,
                 30.0,
                 xtol=1e-12,
@@ -393,7 +416,9 @@ def test_noncentrality_against_statsmodels(f_rows: Rows) -> None:
             if found == 0:
                 assert stats.f.cdf(f[i], df1[i], df2[i]) <= p
                 continue
-            mine, theirs = (abs(stats.ncf.cdf(f[i], df1[i], df2[i], max(x, 1e-12)) - p) for x in (found, other))
+            mine, theirs = (
+                abs(stats.ncf.cdf(f[i], df1[i], df2[i], max(x, 1e-12)) - p) for x in (found, other)
+            )
             assert theirs <= 2e-3
             assert mine <= 1e-9
 

@@ -145,9 +145,10 @@ def _granular(table: ReportedTable, mean: Variable, sd: Variable) -> Iterator[Fi
         yield _mean_finding(table, i, mean, scores)
     if sd not in table.numbers:
         return
-    # so is an SD beyond the scale
-    limit = granularity.sd_upper_limit(scores.n, *ends(table, mean), scores.low, scores.high)
-    judged = scores.whole & ~missed & ~beyond(ends(table, sd)[0], limit)
+    # so is an SD beyond the scale, where one is stated
+    stated = [value_of(table, (name, None)) for name in ("scale_min", "scale_max")]
+    limit = granularity.sd_upper_limit(scores.n, *ends(table, mean), *stated)
+    judged = scores.whole & ~missed & ~(beyond(ends(table, sd)[0], limit) & (mean[0] != _CHANGE))
     spread = _printed(table, sd)
     reached = granularity.sd_is_reachable(scores.n, scores.items, centre, spread, scores.low, scores.high)
     for i in positions(judged & ~scores.zero_one & ~reached):

@@ -11,6 +11,7 @@ import pandas as pd
 from extractor.audit.contradictions import checks_of, contradictions
 from extractor.audit.granular import unreachable
 from extractor.audit.homogeneity import unequal_variances
+from extractor.audit.models import shares_of_the_total, sums_of_squares_types
 from extractor.audit.plausibility import implausible, outlying
 from extractor.audit.support import unsupported
 from extractor.conversion import Conversion
@@ -18,7 +19,14 @@ from extractor.evidence import Evidence
 from extractor.findings import Finding, Severity, frame
 
 Check = Callable[[Evidence], Iterator[Finding]]
-CHECKS: tuple[Check, ...] = (unsupported, unreachable, unequal_variances, implausible)
+CHECKS: tuple[Check, ...] = (
+    unsupported,
+    unreachable,
+    unequal_variances,
+    implausible,
+    sums_of_squares_types,
+    shares_of_the_total,
+)
 
 
 @dataclass(frozen=True)

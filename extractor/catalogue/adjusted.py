@@ -114,32 +114,53 @@ def residual_d_from_t(t_value: FloatArray, inverse_effective_n: FloatArray) -> F
 
 
 @relation(
-    gives="cohens_d",
-    rising=["d_residual"],
-    either=["explained_by_others"],
+    gives="error_share",
+    falling=["explained_by_others"],
     exact=["df_error", "df_others"],
     designs=FACTORIAL,
     grade=Grade.ASSUMPTION,
     assumes="cells of equal size, so that the other terms' sums of squares add up",
     source=_RESTORED,
 )
-def restored_d(
-    d_residual: FloatArray, df_error: FloatArray, df_others: FloatArray, explained_by_others: FloatArray
+def error_share_from_all_fs(
+    df_error: FloatArray, df_others: FloatArray, explained_by_others: FloatArray
 ) -> FloatArray:
-    """d = d_residual · sqrt((df2 + Σ df_others) / (df2 + Σ df·F_others))."""
-    return d_residual * np.sqrt((df_error + df_others) / (df_error + explained_by_others))
+    """MS_error/s² = (df2 + Σ df_others) / (df2 + Σ df·F_others)."""
+    return (df_error + df_others) / (df_error + explained_by_others)
+
+
+@relation(
+    gives="error_share", rising=["ms_error"], falling=["pooled_sd"], designs=FACTORIAL, source=_RESTORED
+)
+def error_share_from_sd(ms_error: FloatArray, pooled_sd: FloatArray) -> FloatArray:
+    """MS_error/s² from both."""
+    return ms_error / pooled_sd**2
+
+
+@relation(
+    gives="cohens_d", rising=["d_residual"], either=["error_share"], designs=FACTORIAL, source=_RESTORED
+)
+def restored_d(d_residual: FloatArray, error_share: FloatArray) -> FloatArray:
+    """d = d_residual · sqrt(MS_error/s²)."""
+    return d_residual * np.sqrt(error_share)
+
+
+@relation(gives="df_standardizer", rising=["df_error", "df_others"], designs=FACTORIAL, source=_RESTORED)
+def restored_df(df_error: FloatArray, df_others: FloatArray) -> FloatArray:
+    """df_s = df2 + Σ df_others."""
+    return df_error + df_others
 
 
 @relation(
     gives="hedges_g",
     rising=["cohens_d"],
-    exact=["df_error", "df_others"],
+    exact=["df_standardizer"],
     designs=FACTORIAL,
     source="Hedges (1981)",
 )
-def restored_g(cohens_d: FloatArray, df_error: FloatArray, df_others: FloatArray) -> FloatArray:
-    """g = J(df2 + Σ df_others) · d."""
-    return cohens_d * small_sample_factor(df_error + df_others)
+def restored_g(cohens_d: FloatArray, df_standardizer: FloatArray) -> FloatArray:
+    """g = J(df_s) · d."""
+    return cohens_d * small_sample_factor(df_standardizer)
 
 
 @relation(

@@ -64,23 +64,29 @@ def t_from_d(cohens_d: FloatArray, inverse_effective_n: FloatArray) -> FloatArra
 
 
 @relation(
-    gives="hedges_g", rising=["cohens_d"], exact=["df_error"], designs=ONE_FACTOR | PAIRED | ANCOVA | MIXED, source=_G
+    gives="hedges_g",
+    rising=["cohens_d"],
+    exact=["df_error"],
+    designs=ONE_FACTOR | PAIRED | ANCOVA | MIXED,
+    source=_G,
 )
 def g_from_d(cohens_d: FloatArray, df_error: FloatArray) -> FloatArray:
     """g = J(df2) · d, J(v) = Γ(v/2) / (sqrt(v/2) · Γ((v - 1)/2))."""
     return cohens_d * small_sample_factor(df_error)
 
 
-@relation(
-    gives="cohens_d", rising=["hedges_g"], exact=["df_error"], designs=ONE_FACTOR | ANCOVA, source=_G
-)
+@relation(gives="cohens_d", rising=["hedges_g"], exact=["df_error"], designs=ONE_FACTOR | ANCOVA, source=_G)
 def d_from_g(hedges_g: FloatArray, df_error: FloatArray) -> FloatArray:
     """d = g / J(df2)."""
     return hedges_g / small_sample_factor(df_error)
 
 
 @relation(
-    gives="cohens_d", rising=["mean_difference"], either=["pooled_sd"], designs=ONE_FACTOR | ANCOVA | FACTORIAL, source=_D
+    gives="cohens_d",
+    rising=["mean_difference"],
+    either=["pooled_sd"],
+    designs=ONE_FACTOR | ANCOVA | FACTORIAL,
+    source=_D,
 )
 def d_from_means(mean_difference: FloatArray, pooled_sd: FloatArray) -> FloatArray:
     """d = (Σ w·M) / s_pooled."""

@@ -76,7 +76,10 @@ def t_df_from_error(df_error: FloatArray) -> FloatArray:
 
 
 @relation(
-    gives="n_total", rising=["n"], designs=BETWEEN | ANCOVA | PRE_POST | MIXED, source="definition of the total"
+    gives="n_total",
+    rising=["n"],
+    designs=BETWEEN | ANCOVA | PRE_POST | MIXED,
+    source="definition of the total",
 )
 def total_from_groups(n: FloatArray) -> FloatArray:
     """N = Σ n_j."""

@@ -21,6 +21,7 @@ FAMILIES = (
     "paired",
     "pre_post",
     "adjusted",
+    "cells",
 )
 
 

@@ -122,7 +122,13 @@ def d_average_from_means(mean_difference: FloatArray, average_sd: FloatArray) ->
     return mean_difference / average_sd
 
 
-@relation(gives="hedges_g", rising=["cohens_d"], exact=["n_total"], designs=WITHIN, source="Hedges (1981), df = N - 1")
+@relation(
+    gives="hedges_g",
+    rising=["cohens_d"],
+    exact=["n_total"],
+    designs=WITHIN,
+    source="Hedges (1981), df = N - 1",
+)
 def g_of_condition_pair(cohens_d: FloatArray, n_total: FloatArray) -> FloatArray:
     """g = J(N - 1) · d."""
     return cohens_d * small_sample_factor(n_total - 1)

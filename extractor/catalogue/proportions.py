@@ -1,8 +1,8 @@
 """A binary outcome in two groups: the 2 x 2 table, its odds ratio, chi-square and phi.
 
-Groups are the rows of the table: a and b are the participants of group 1 with and without the event, c and d those
-of group 2. Counts are exact, so their relations conclude nothing from counts that are not known. A chi-square with
-Yates's continuity correction is checked against the counts but leads to no effect size.
+Groups are the rows of the table: a and b are the participants of group 1 with and without the event, c and d
+those of group 2. Counts are exact, so most relations conclude nothing from counts that are not known. A
+chi-square with Yates's continuity correction is checked against the counts but leads to no effect size.
 """
 
 from __future__ import annotations
@@ -19,7 +19,7 @@ _WOOLF = "Woolf (1955), variance of the log odds ratio: 1/a + 1/b + 1/c + 1/d"
 _WALD = "confidence limits from the normal distribution on the log scale (Cochrane Handbook, ch. 6)"
 _CHI = "Pearson (1900), chi-square of a 2 x 2 table on one df, without continuity correction"
 _YATES = "Yates (1934), continuity correction"
-_PHI = "phi = sqrt(chi-square / N) with one df, the product-moment correlation of two binary variables (identity)"
+_PHI = "phi = sqrt(chi-square / N) with one df, the correlation of two binary variables (identity)"
 _D = "Rosenthal (1994); Lipsey & Wilson (2001): d = 2·φ / sqrt(1 - φ²)"
 _R = "phi is the product-moment correlation of two binary variables (identity)"
 _COUNTS = ("count_a", "count_b", "count_c", "count_d")
@@ -42,19 +42,7 @@ def sizes_from_counts(
     return np.stack([count_a + count_b, count_c + count_d], axis=-1)
 
 
-def _between_counts(*counts: Interval) -> Interval:
-    """Points are evaluated; whatever is not exact is discarded after."""
-    value = odds_ratio_from_counts(*(low for low, _ in counts))
-    return value, value
-
-
-@relation(
-    gives="odds_ratio",
-    image=_between_counts,
-    exact=[*_COUNTS, "contrast_weight"],
-    designs=TWO_GROUP,
-    source=_ODDS,
-)
+@relation(gives="odds_ratio", exact=[*_COUNTS, "contrast_weight"], designs=TWO_GROUP, source=_ODDS)
 def odds_ratio_from_counts(
     count_a: FloatArray,
     count_b: FloatArray,
@@ -106,13 +94,13 @@ def log_odds_ratio_error_from_limits(
 ) -> FloatArray:
     """SE(ln OR) = (ln U - ln L) / (2·z_crit).
 
-    The odds ratio must lie near the middle of its limits on the log scale, within a quarter of the half-width. Other
-    limits are of another effect size, or not of this kind.
+    The odds ratio must lie near the middle of its limits on the log scale, to a quarter of half the width.
+    Other limits belong to another effect size, or are not of this kind.
     """
     with np.errstate(all="ignore"):
         centre = (np.log(effect_ci_high) + np.log(effect_ci_low)) / 2
         half = (np.log(effect_ci_high) - np.log(effect_ci_low)) / 2
-        fits = np.abs(np.log(odds_ratio) - centre) <= _ASYMMETRY * half
+        fits = (effect_ci_low > 0) & (np.abs(np.log(odds_ratio) - centre) <= _ASYMMETRY * half)
         return np.where(fits, _log_width(effect_ci_low, effect_ci_high, confidence_level), np.nan)
 
 

@@ -1,9 +1,9 @@
 """Rank tests: Kruskal-Wallis H, Mann-Whitney U, Wilcoxon's sums of ranks.
 
-The names of two indices are crossed in the literature: H/(N - 1), exactly the eta squared of the ranks, is usually
-labelled epsilon squared, and (H - k + 1)/(N - k), exactly Kelley's epsilon squared of the ranks, is usually
-labelled eta squared. Here each is called what it is. None of them leads to an index of the raw scores; the one step
-from ranks to d names its assumption.
+The names of two indices are crossed in the literature: H/(N - 1), exactly the eta squared of the ranks, is
+usually labelled epsilon squared, and (H - k + 1)/(N - k), exactly Kelley's epsilon squared of the ranks, is
+usually labelled eta squared. Here each is called what it is. Neither leads to an index of the raw scores; the
+one step from ranks to d names its assumption.
 """
 
 from __future__ import annotations
@@ -29,7 +29,7 @@ _RANK_SUM = "Mann & Whitney (1947): U1 = W1 - n1(n1 + 1)/2"
 _NORMAL = "Mann & Whitney (1947), mean n1·n2/2 and variance n1·n2(N + 1)/12 of U"
 _ROOT = "Rosenthal (1991), r = z / sqrt(N)"
 _SHIFT = "McGraw & Wong (1992): P(X > Y) = Φ(d / sqrt(2)) for normal groups of equal variance"
-_PAIRS = "Kerby (2014): matched-pairs rank-biserial correlation, (Σ favourable - Σ unfavourable ranks) / Σ ranks"
+_PAIRS = "Kerby (2014), matched-pairs rank-biserial: (favourable - unfavourable rank sum) / sum of all ranks"
 
 
 @relation(gives="rank_eta_squared", rising=["h_value"], falling=["n_total"], designs=ONE_FACTOR, source=_ETA)
@@ -51,9 +51,7 @@ def h_from_rank_eta_squared(rank_eta_squared: FloatArray, n_total: FloatArray) -
     designs=ONE_FACTOR,
     source=_EPSILON,
 )
-def rank_epsilon_squared_from_h(
-    h_value: FloatArray, n_total: FloatArray, k_groups: FloatArray
-) -> FloatArray:
+def rank_epsilon_squared_from_h(h_value: FloatArray, n_total: FloatArray, k_groups: FloatArray) -> FloatArray:
     """ε² of the ranks = (H - k + 1) / (N - k)."""
     return (h_value - k_groups + 1) / (n_total - k_groups)
 
@@ -79,7 +77,9 @@ def _magnitude(value: Interval) -> Interval:
     return least, np.where(np.isnan(squared[1]), np.inf, np.sqrt(squared[1]))
 
 
-def _biserial_image(u_value: Interval, n: Interval, direction: Interval, current: Interval | None) -> Interval:
+def _biserial_image(
+    u_value: Interval, n: Interval, direction: Interval, current: Interval | None
+) -> Interval:
     low = 1 - 2 * u_value[1] / n[0].prod(axis=-1)
     high = 1 - 2 * u_value[0] / n[1].prod(axis=-1)
     return signed_image(_magnitude((low, high)), direction, current)
@@ -96,17 +96,16 @@ def _biserial_image(u_value: Interval, n: Interval, direction: Interval, current
 def rank_biserial_from_u(u_value: FloatArray, n: FloatArray, direction: FloatArray) -> FloatArray:
     """r_rb = sign · |1 - 2U / (n1·n2)|.
 
-    Either group's U may be printed, or the smaller of the two: they give the same size and opposite signs, so U
-    alone has no direction.
+    Either group's U may be printed, or the smaller of the two: they give the same size and opposite signs, so
+    U alone has no direction.
     """
     return np.asarray(direction * np.abs(1 - 2 * u_value / n.prod(axis=-1)))
 
 
 @relation(
     gives="rank_biserial",
-    rising=["rank_sum"],
+    either=["rank_sum"],
     exact=["n", "contrast_weight"],
-    image=lambda rank_sum, n, contrast_weight: _from_rank_sum(rank_sum, n[0], contrast_weight[0]),
     designs=TWO_GROUP,
     source=_RANK_SUM,
     accuracy=1e-12,
@@ -115,18 +114,9 @@ def rank_biserial_from_rank_sum(
     rank_sum: FloatArray, n: FloatArray, contrast_weight: FloatArray
 ) -> FloatArray:
     """r_rb = ±(2·(W1 - n1(n1 + 1)/2) / (n1·n2) - 1), + for the contrast 1 - 2."""
-    return np.sign(contrast_weight[:, 0]) * _superiority(rank_sum, n)
-
-
-def _superiority(rank_sum: FloatArray, n: FloatArray) -> FloatArray:
-    """2·U1/(n1·n2) - 1, positive when group 1 ranks higher."""
     first, second = n[:, 0], n[:, 1]
-    return np.asarray(2 * (rank_sum - first * (first + 1) / 2) / (first * second) - 1)
-
-
-def _from_rank_sum(rank_sum: Interval, n: FloatArray, weight: FloatArray) -> Interval:
-    ends = [np.sign(weight[:, 0]) * _superiority(end, n) for end in rank_sum]
-    return np.minimum(*ends), np.maximum(*ends)
+    superiority = 2 * (rank_sum - first * (first + 1) / 2) / (first * second) - 1
+    return np.asarray(np.sign(contrast_weight[:, 0]) * superiority)
 
 
 def _u_image(z_value: Interval, n: Interval) -> Interval:
@@ -179,7 +169,7 @@ def rank_r_from_z(z_value: FloatArray, n_total: FloatArray, direction: FloatArra
 def d_from_rank_biserial(rank_biserial: FloatArray) -> FloatArray:
     """d = sqrt(2) · Φ⁻¹((1 + r_rb) / 2); none where the groups do not overlap at all."""
     overlapping = np.abs(rank_biserial) < 1
-    return np.sqrt(2) * special.ndtri(np.where(overlapping, (1 + rank_biserial) / 2, np.nan))
+    return np.asarray(np.sqrt(2) * special.ndtri(np.where(overlapping, (1 + rank_biserial) / 2, np.nan)))
 
 
 def _pairs_image(

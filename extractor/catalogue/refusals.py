@@ -12,12 +12,16 @@ _OMNIBUS = (
 _TWO_ONLY = "it is defined for two independent groups"
 _UNSIGNED = "F, p, η² and their kin have no sign"
 _PARTIAL_ONLY = (
-    "F and its df speak of the effect and its own error term only; what the other sources took from the total is not said"
+    "F and its df speak of the effect and its own error term only; "
+    "what the other sources took from the total is not said"
 )
 _STRATA = "it needs the sums of squares of participants and of every measured factor"
 _RAW_SD = "the error term of repeated measurements is not the SD of scores"
 _COVARIATES = "the error term lacks what the covariates took out; without their correlation R the SD of scores is unknown"
-_FACTORS = "the error term lacks what the other factors took out, and their F or sums of squares are not all there"
+_FACTORS = (
+    "the error term lacks what the other factors took out, "
+    "and their F or sums of squares are not all there"
+)
 _TWO_GROUP_METRICS = ("r", "fisher_z", "log_odds_ratio")
 _WHOLE = ("eta_squared", "omega_squared", "epsilon_squared")
 _STANDARDIZED = ("cohens_d", "hedges_g")
@@ -31,7 +35,9 @@ def why_no_route(metric: str, design: str, reported: frozenset[str], opened_by: 
     opened_by : sets of quantities each of which would open a route, the cheapest first.
     """
     symbol = VOCABULARY[metric].symbol
-    known = [name for name in sorted(reported) if name in VOCABULARY and VOCABULARY[name].role.value == "reported"]
+    known = [
+        name for name in sorted(reported) if name in VOCABULARY and VOCABULARY[name].role.value == "reported"
+    ]
     if not known:
         return f"nothing usable is reported for {symbol}"
     why = _reason(metric, design, reported, opened_by)

@@ -262,3 +262,38 @@ def strata_from_sds(n: FloatArray, sd: FloatArray) -> FloatArray:
 def participants_sum_from_strata(ss_strata: FloatArray, ss_error: FloatArray) -> FloatArray:
     """SS_subjects = Σ strata SS - SS_error."""
     return ss_strata - ss_error
+
+
+_PARTS = (
+    "an effect and its error term are parts of the total: SS_total ≥ SS_effect + SS_error, hence η² ≤ η²p"
+)
+
+
+def _at_most_partial(eta_squared: Interval, partial_eta_squared: Interval) -> Interval:
+    return np.zeros_like(eta_squared[0]), partial_eta_squared[1]
+
+
+@relation(gives="eta_squared", image=_at_most_partial, designs=PARTIAL, source=_PARTS)
+def classical_at_most_partial(eta_squared: FloatArray, partial_eta_squared: FloatArray) -> FloatArray:
+    """η² ≤ η²p."""
+    return np.minimum(eta_squared, partial_eta_squared)
+
+
+def _at_least_classical(partial_eta_squared: Interval, eta_squared: Interval) -> Interval:
+    return eta_squared[0], np.ones_like(eta_squared[0])
+
+
+@relation(gives="partial_eta_squared", image=_at_least_classical, designs=PARTIAL, source=_PARTS)
+def partial_at_least_classical(partial_eta_squared: FloatArray, eta_squared: FloatArray) -> FloatArray:
+    """η²p ≥ η²."""
+    return np.maximum(partial_eta_squared, eta_squared)
+
+
+def _at_least_parts(ss_total: Interval, ss_effect: Interval, ss_error: Interval) -> Interval:
+    return ss_effect[0] + ss_error[0], np.full_like(ss_total[1], np.inf)
+
+
+@relation(gives="ss_total", image=_at_least_parts, designs=PARTIAL, source=_PARTS)
+def total_at_least_parts(ss_total: FloatArray, ss_effect: FloatArray, ss_error: FloatArray) -> FloatArray:
+    """SS_total ≥ SS_effect + SS_error."""
+    return np.maximum(ss_total, ss_effect + ss_error)

@@ -8,7 +8,9 @@ from extractor.catalogue.p_values import p_from_f
 from extractor.catalogue.relation import MIXED, PAIRED, WITHIN, FloatArray, Interval, relation
 
 _ERROR = "one-factor within design: MS_error = mean variance - mean covariance (textbook identity)"
-_PARTIAL = "a sphericity correction multiplies both df alike: F and the ratio of the df stay (textbook identity)"
+_PARTIAL = (
+    "a sphericity correction multiplies both df alike: F and the ratio of the df stay (textbook identity)"
+)
 _BOX = "Greenhouse & Geisser (1959): df multiplied by epsilon, 1/df1 ≤ epsilon ≤ 1 for one factor"
 _LIMITS = "the mean correlation of k measurements is at least -1/(k - 1) (textbook identity)"
 

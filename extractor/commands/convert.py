@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import sys
 from pathlib import Path
 
 import click
@@ -95,8 +96,7 @@ def command(
         effects = package.effects_as_written(result, renamed)
         change = str if csv_raw else tables.neutralised
         lines = tables.csv_lines(effects, change) if formats[0] == "csv" else tables.json_lines(effects)
-        for line in lines:
-            click.echo(line, nl=False)
+        sys.stdout.writelines(lines)
         terminal.show_cautions(terminal.console(stderr=True), said)
     else:
         page = terminal.console()

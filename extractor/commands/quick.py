@@ -8,7 +8,7 @@ import click
 
 from extractor.commands import options
 from extractor.errors import UsageError
-from extractor.quantities import DESIGNS, VOCABULARY, close_matches
+from extractor.quantities import DESIGNS, VOCABULARY, Shape, close_matches
 from extractor.reading import quoted
 
 if TYPE_CHECKING:
@@ -79,7 +79,8 @@ def _evidence(text: str, design: str | None, columns: dict[str, str]) -> tuple[E
 
     for name in columns:
         if canonical(name) is None or name in ("reported", "design"):
-            near = close_matches(name, canonical_names())
+            grouped = {q for q in VOCABULARY if VOCABULARY[q].shape is Shape.GROUP}
+            near = [f"{q}_1" if q in grouped else q for q in close_matches(name, canonical_names())]
             hint = f"; did you mean {' or '.join(near)}?" if near else ""
             raise UsageError(f"--also: {quoted(name)} is no column of a sheet{hint}")
     named = {statistic.name for statistic in read_statistics(text)}
@@ -113,13 +114,15 @@ def _evidence(text: str, design: str | None, columns: dict[str, str]) -> tuple[E
 
 def _notes(evidence: Evidence) -> list[str]:
     """How the text was read, where that was not plain."""
+    from extractor.output.cells import reading_notes
+
     table = evidence.table
     readings = [str(numbers.understood[0]) for numbers in table.numbers.values()]
     # a reading from the text names its words first; more follows only where they were not plain
     odd = [
         reading for reading in readings if reading and (not reading.startswith("from '") or "'; " in reading)
     ]
-    return [*table.notes, *odd, *(message for _, _, message in table.settings["conflicts"])]
+    return [*reading_notes(table), *odd, *(message for _, _, message in table.settings["conflicts"])]
 
 
 def _effect_lines(effect: pd.Series, level: float) -> list[str]:

@@ -20,7 +20,8 @@ from extractor.conversion import (
 )
 from extractor.evidence import Evidence
 from extractor.findings import Severity
-from extractor.output.terminal import console
+from extractor.output.cells import reading_notes
+from extractor.output.terminal import console, printable
 
 LONG = 20_000
 """Rows above which progress is shown."""
@@ -30,14 +31,14 @@ _MOST_NOTES = 20
 def read(sheet: str, codebook: str | None) -> Evidence:
     """Read a sheet and say on standard error how it was read, where that was not plain."""
     evidence = read_evidence(sheet, codebook)
-    mention(evidence.table.notes)
+    mention(reading_notes(evidence.table))
     return evidence
 
 
 def mention(notes: list[str]) -> None:
     """Notes on standard error, the first few of many."""
     for note in notes[:_MOST_NOTES]:
-        click.echo(f"note: {note}", err=True)
+        click.echo(printable(f"note: {note}"), err=True)
     if len(notes) > _MOST_NOTES:
         click.echo(f"note: and {len(notes) - _MOST_NOTES} more like these", err=True)
 

@@ -27,7 +27,8 @@ def show_relations(to: Console, relations: Iterable[Relation]) -> None:
             quantity = VOCABULARY[heading]
             say(to, Text.assemble((heading, "bold"), f"  {quantity.symbol}: {quantity.meaning}"))
         _show(to, relation)
-    to.print()
+    if shown:
+        to.print()
     say(to, counted(len(shown), "relation"))
 
 

@@ -15,6 +15,7 @@ from extractor import __version__, cautions
 from extractor.api import Result
 from extractor.audit.run import Audit
 from extractor.errors import UsageError
+from extractor.output.cells import reading_notes
 from extractor.output.columns import EFFECTS, FINDINGS, fields, whole_counts
 from extractor.output.files import output_folder
 from extractor.output.tables import WRITERS, neutralised, write_csv
@@ -205,7 +206,7 @@ def _describe(
         "extractor:software": {"name": "anova-extractor", "version": __version__},
         "extractor:settings": _settings(request, table),
         "extractor:cautions": list(said),
-        "extractor:notes": [*table.notes, *notes],
+        "extractor:notes": [*reading_notes(table), *notes],
     }
     text = json.dumps(content, ensure_ascii=False, allow_nan=False, sort_keys=True, indent=2)
     path = made / "datapackage.json"

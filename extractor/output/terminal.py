@@ -16,6 +16,7 @@ from rich.tree import Tree
 from extractor.api import Result
 from extractor.audit.run import Audit
 from extractor.findings import Finding, Severity
+from extractor.quantities import VOCABULARY
 from extractor.words import listed, plain
 
 MOST_ROWS = 1_000
@@ -55,9 +56,15 @@ def _fixed_width() -> int:
     return max(int(said), 40) if said.isascii() and said.isdigit() and len(said) < 6 else _WIDTH
 
 
+def printable(text: str) -> str:
+    """Text in which nothing can move a terminal's cursor or change its colours."""
+    return text if text.isprintable() else "".join(c if c.isprintable() else " " for c in text)
+
+
 def say(to: Console, text: Text | str, indent: int = 0, hang: int = 0) -> None:
     """Print a sentence, wrapped, the first line ``indent`` from the left and further ones ``hang`` more."""
     words = Text(text) if isinstance(text, str) else text
+    words.plain = printable(words.plain)
     lines = words.wrap(to, max(to.width - indent - hang, 20))
     for at, line in enumerate(lines):
         line.rstrip()
@@ -102,18 +109,21 @@ def number(value: Any) -> str:
 def show_effects(to: Console, result: Result, level: float) -> None:
     """The effect table, what became of the rows, and why some have no effect."""
     rows = len(result.effects)
-    _show_table(
-        to, _effect_lines(result), [*_HEADINGS[:2], result.conversion.metric, f"{level * 100:g} % CI"]
-    )
+    metric = result.conversion.metric
+    say(to, Text(f"{metric} ({VOCABULARY[metric].symbol})", "bold"))
+    headings = ["row", "study", "estimate", f"{level * 100:g} % CI"]
+    headings += ["variance", "grade", "findings", "status"]
+    _show_table(to, headings, _effect_lines(result))
     if rows > MOST_ROWS:
         say(to, f"... and {counted(rows - MOST_ROWS, 'row')} more; --out DIR writes all of them")
     to.print()
     show_summary(to, result)
 
 
-_HEADINGS = ["row", "study", "estimate", "CI", "variance", "grade", "findings", "status"]
 _RIGHT = frozenset({0, 2, 4})
-_LABEL, _GAP = 24, 2
+_LABEL, _GAP, _LEAST = 24, 2, 9
+_SHRINKING = ((1, 8), (6, 4), (5, 6))
+"""Columns that give way on a narrow terminal, in this order, each down to so many characters."""
 
 
 def _effect_lines(result: Result) -> list[list[Text]]:
@@ -123,12 +133,12 @@ def _effect_lines(result: Result) -> list[list[Text]]:
     for row in result.effects.head(MOST_ROWS).to_dict("records"):
         status = Text(str(row["status"]), _STYLES[str(row["status"])])
         if row["reason"]:
-            status.append(f": {row['reason']}", "default")
+            status.append(printable(f": {row['reason']}"), "default")
         estimate = number(row["estimate"])
         if row["status"] == "bounded":
             estimate = between(row["estimate_low"], row["estimate_high"])
         limits = "" if pd.isna(row["ci_low"]) else between(row["ci_low"], row["ci_high"])
-        study = Text(" ".join(str(row["study"]).split()))
+        study = Text(" ".join(printable(str(row["study"])).split()))
         study.truncate(_LABEL, overflow="ellipsis")
         words = (estimate, limits, number(row["variance"]), str(row["grade"]))
         lines.append(
@@ -143,12 +153,15 @@ def _effect_lines(result: Result) -> list[list[Text]]:
     return lines
 
 
-def _show_table(to: Console, lines: list[list[Text]], first: list[str]) -> None:
+def _show_table(to: Console, headings: list[str], lines: list[list[Text]]) -> None:
     """A table whose last column takes the room that the others leave, and is cut there."""
-    headings = [*first, *_HEADINGS[len(first) :]]
     widths = [max(map(len, (*(line[at].plain for line in lines), word))) for at, word in enumerate(headings)]
-    room = max(to.width - sum(widths[:-1]) - _GAP * (len(widths) - 1), 12)
-    widths[-1] = min(widths[-1], room)
+    gaps = _GAP * (len(widths) - 1)
+    widths[-1] = min(widths[-1], max(to.width - sum(widths[:-1]) - gaps, _LEAST))
+    for at, least in _SHRINKING:
+        over = sum(widths) + gaps - to.width
+        if over > 0:
+            widths[at] = max(min(widths[at], least), widths[at] - over)
     heading = [Text(word, "bold") for word in headings]
     rule = [Text("─" * width, "dim") for width in widths]
     for cells in (heading, rule, *lines):

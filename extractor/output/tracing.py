@@ -10,8 +10,9 @@ from rich.tree import Tree
 from extractor.api import Result
 from extractor.catalogue.relation import catalogue
 from extractor.choice import NOTHING, Supported
-from extractor.output.terminal import between, number, say, show_finding, show_tree
-from extractor.table import FloatArray
+from extractor.output.cells import address
+from extractor.output.terminal import between, number, printable, say, show_finding, show_tree
+from extractor.table import FloatArray, ReportedTable
 
 
 def show_trace(to: Console, result: Result, position: int, level: float) -> None:
@@ -29,7 +30,7 @@ def show_trace(to: Console, result: Result, position: int, level: float) -> None
     _show_estimate(to, effect, metric, level)
     steps = result.derivations[result.derivations["row"] == row]
     if len(steps):
-        branches = _Branches(steps)
+        branches = _Branches(steps, result.conversion.evidence.table, position)
         show_tree(to, branches.tree(metric))
         supported = _supported(result, position)
         if supported is not None:
@@ -74,7 +75,8 @@ def _supported(result: Result, position: int) -> Supported | None:
 class _Branches:
     """The steps of one row by quantity, and which of them a tree has shown."""
 
-    def __init__(self, steps: pd.DataFrame) -> None:
+    def __init__(self, steps: pd.DataFrame, table: ReportedTable, position: int) -> None:
+        self.table, self.position = table, position
         self.steps = {str(name): part for name, part in steps.groupby("quantity", sort=False)}
         self.shown: set[str] = set()
 
@@ -107,11 +109,19 @@ class _Branches:
             text.append(f"\n{first['equation']}", "cyan")
             text.append(f"\n{first['grade']}; {first['source']}", "dim")
             return text
-        cells = ", ".join(dict.fromkeys(str(cell) for cell in lines["cell"] if cell))
-        said = f"  {first['role']}" + (f" in {cells}" if cells else "")
-        said += f" ({first['source']})" if first["source"] else ""
+        said = f"  {first['role']}" + (f" ({first['source']})" if first["source"] else "")
+        if first["role"] == "reported":
+            said += f" in {', '.join(self._cells(lines))}"
         said += ", only a bound" if first["grade"] == "bound" else ""
-        return text.append(said, "dim")
+        return text.append(printable(said), "dim")
+
+    def _cells(self, lines: pd.DataFrame) -> list[str]:
+        """The cells of a reported quantity, each once."""
+        found = [
+            address(self.table, str(line["quantity"]), int(line["group"]), self.position) or str(line["cell"])
+            for line in lines.to_dict("records")
+        ]
+        return list(dict.fromkeys(found))
 
 
 def _values(lines: pd.DataFrame) -> str:

@@ -9,7 +9,9 @@ import pandas as pd
 
 from extractor.api import Result
 from extractor.catalogue.relation import catalogue
+from extractor.output.cells import address, understood
 from extractor.output.tables import as_json, records
+from extractor.table import ReportedTable
 
 _CHUNK = 2_000
 """Rows of the effect table turned into plain values at a time."""
@@ -48,38 +50,37 @@ def _relation(name: str) -> dict[str, object]:
 
 
 def _rows(result: Result) -> Iterator[dict[str, object]]:
-    effects = result.effects
+    effects, table = result.effects, result.conversion.evidence.table
     for start in range(0, len(effects), _CHUNK):
         part = effects.iloc[start : start + _CHUNK]
-        steps = _by_row(result.derivations, part, _step)
-        alternatives = _by_row(result.alternatives, part, _alternative)
+        steps = _by_row(result.derivations, part)
+        alternatives = _by_row(result.alternatives, part)
         about = records(part[["row", "metric", "status", "estimate"]])
-        for record, own, others in zip(about, steps, alternatives, strict=True):
-            yield {**record, "steps": own, "alternatives": others}
+        for at, (record, own, others) in enumerate(zip(about, steps, alternatives, strict=True)):
+            taken = [_step(step, table, start + at) for step in own]
+            yield {**record, "steps": taken, "alternatives": [_without_row(other) for other in others]}
 
 
-def _by_row(
-    lines: pd.DataFrame, part: pd.DataFrame, change: Callable[[dict[str, object]], dict[str, object]]
-) -> Iterator[list[dict[str, object]]]:
+def _by_row(lines: pd.DataFrame, part: pd.DataFrame) -> Iterator[list[dict[str, object]]]:
     """The lines of each row of ``part``; both are in sheet order."""
     rows = part["row"].to_numpy()
     keys = lines["row"].to_numpy(dtype=rows.dtype)
     first, last = keys.searchsorted(rows, side="left"), keys.searchsorted(rows, side="right")
-    if not len(rows):
-        return
-    found = [change(record) for record in records(lines.iloc[first[0] : last[-1]])]
-    for start, stop in zip(first - first[0], last - first[0], strict=True):
-        yield found[start:stop]
+    found = list(records(lines.iloc[first[0] : last[-1]])) if len(rows) else []
+    for begin, end in zip(first, last, strict=True):
+        yield found[begin - first[0] : end - first[0]]
 
 
-def _step(record: dict[str, object]) -> dict[str, object]:
+def _step(record: dict[str, object], table: ReportedTable, position: int) -> dict[str, object]:
     """A step without what is blank, or said once under ``relations``."""
     said_once = ("row", "equation", *(("source", "grade") if record["relation"] else ()))
     kept = {name: value for name, value in record.items() if name not in said_once and value != ""}
-    if not kept["group"]:
-        del kept["group"]
-    return kept
+    if record["role"] == "reported":
+        where = str(record["quantity"]), int(str(record["group"])), position
+        kept["cell"] = address(table, *where) or record["cell"]
+        kept["understood"] = understood(table, *where)
+    return {name: value for name, value in kept.items() if value != "" and (name, value) != ("group", 0)}
 
 
-def _alternative(record: dict[str, object]) -> dict[str, object]:
+def _without_row(record: dict[str, object]) -> dict[str, object]:
     return {name: value for name, value in record.items() if name != "row"}

@@ -237,44 +237,33 @@ def adjusted_limits(
 
 
 def restored_large(
-    estimate: FloatArray,
-    inverse_effective_n: FloatArray,
-    n_total: FloatArray,
-    df_error: FloatArray,
-    df_others: FloatArray,
-    explained_by_others: FloatArray,
+    estimate: FloatArray, inverse_effective_n: FloatArray, n_total: FloatArray, error_share: FloatArray
 ) -> FloatArray:
     """Variance of d of a factorial main effect over the restored SD."""
-    shrink = (df_error + df_others) / (df_error + explained_by_others)
-    return shrink * inverse_effective_n + estimate**2 / (2 * n_total)
+    return error_share * inverse_effective_n + estimate**2 / (2 * n_total)
 
 
 def restored_g_large(
     estimate: FloatArray,
     inverse_effective_n: FloatArray,
     n_total: FloatArray,
-    df_error: FloatArray,
-    df_others: FloatArray,
-    explained_by_others: FloatArray,
+    error_share: FloatArray,
+    df_standardizer: FloatArray,
 ) -> FloatArray:
     """Variance of the corresponding g."""
-    factor = J(df_error + df_others)
-    others = (df_error, df_others, explained_by_others)
-    return factor**2 * restored_large(estimate / factor, inverse_effective_n, n_total, *others)
+    factor = J(df_standardizer)
+    return factor**2 * restored_large(estimate / factor, inverse_effective_n, n_total, error_share)
 
 
 def restored_limits(
     estimate: FloatArray,
     inverse_effective_n: FloatArray,
     n_total: FloatArray,
-    df_error: FloatArray,
-    df_others: FloatArray,
-    explained_by_others: FloatArray,
+    error_share: FloatArray,
     level: float,
 ) -> Interval:
     """Limits of d."""
-    others = (df_error, df_others, explained_by_others)
-    return _normal(estimate, restored_large(estimate, inverse_effective_n, n_total, *others), level)
+    return _normal(estimate, restored_large(estimate, inverse_effective_n, n_total, error_share), level)
 
 
 for _metric, _adjusted, _restored in (
@@ -323,7 +312,13 @@ def _morris_limits(variance: Scale) -> Callable[..., Interval]:
 
 for _metric, _morris in (("cohens_d", morris_d), ("hedges_g", morris_g)):
     enter_variance(_metric, EXACT, _MORRIS, PRE_POST, _morris, ["pre"])
-    enter_limits(_metric, "normal limits from the variance of Morris (2008)", PRE_POST, _morris_limits(_morris), ["pre"])
+    enter_limits(
+        _metric,
+        "normal limits from the variance of Morris (2008)",
+        PRE_POST,
+        _morris_limits(_morris),
+        ["pre"],
+    )
 
 
 # Correlations, odds ratios, raw differences
@@ -371,7 +366,9 @@ def raw_variance(estimate: FloatArray, se_difference: FloatArray) -> FloatArray:
     return np.where(np.isnan(estimate), np.nan, se_difference**2)
 
 
-def raw_limits(estimate: FloatArray, se_difference: FloatArray, df_error: FloatArray, level: float) -> Interval:
+def raw_limits(
+    estimate: FloatArray, se_difference: FloatArray, df_error: FloatArray, level: float
+) -> Interval:
     """Limits of a mean difference."""
     half = special.stdtrit(df_error, (1 + level) / 2) * se_difference
     return estimate - half, estimate + half
@@ -386,5 +383,12 @@ enter_variance("log_odds_ratio", LARGE, _LOGISTIC_NAME, TWO_GROUP, log_odds_larg
 enter_limits("log_odds_ratio", "limits of d (noncentral t) times π/sqrt(3)", TWO_GROUP, log_odds_limits)
 _PLAIN = ONE_FACTOR | PAIRED | ANCOVA
 for _standardizer in ("pooled", "average"):
-    enter_variance("mean_difference", EXACT, "squared standard error of the difference", _PLAIN, raw_variance, [_standardizer])
+    enter_variance(
+        "mean_difference",
+        EXACT,
+        "squared standard error of the difference",
+        _PLAIN,
+        raw_variance,
+        [_standardizer],
+    )
     enter_limits("mean_difference", "Student's t with the error df", _PLAIN, raw_limits, [_standardizer])

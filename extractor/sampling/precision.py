@@ -21,9 +21,8 @@ Limits = Callable[..., Interval]
 
 LARGE, EXACT = "large-sample", "exact"
 METHODS = (EXACT, LARGE)
-PREFERRED = {metric: EXACT for metric in METRICS} | {
-    metric: LARGE for metric in ("cohens_d", "hedges_g", "r", "fisher_z", "log_odds_ratio")
-}
+_LARGE_FIRST = ("cohens_d", "hedges_g", "r", "fisher_z", "log_odds_ratio")
+PREFERRED = dict.fromkeys(METRICS, EXACT) | dict.fromkeys(_LARGE_FIRST, LARGE)
 """Method used when the user does not choose; the reasons stand in the README."""
 
 
@@ -65,7 +64,11 @@ def enter_variance(
 
 
 def enter_limits(
-    metric: str, name: str, designs: Iterable[str], function: Limits, standardizers: Iterable[str] = ("pooled",)
+    metric: str,
+    name: str,
+    designs: Iterable[str],
+    function: Limits,
+    standardizers: Iterable[str] = ("pooled",),
 ) -> None:
     """Enter confidence limits; as ``enter_variance``, with a last parameter ``level``."""
     LIMITS.append(_entry(metric, "", name, designs, standardizers, function))

@@ -54,7 +54,11 @@ def eta_large(estimate: FloatArray, df_effect: FloatArray, n_observations: Float
 
 
 def eta_limits(
-    estimate: FloatArray, df_effect: FloatArray, df_error: FloatArray, n_observations: FloatArray, level: float
+    estimate: FloatArray,
+    df_effect: FloatArray,
+    df_error: FloatArray,
+    n_observations: FloatArray,
+    level: float,
 ) -> Interval:
     """Limits of the population value."""
     return _population(_f_from_eta(estimate, df_effect, df_error), df_effect, df_error, n_observations, level)
@@ -82,7 +86,11 @@ def omega_large(
 
 
 def omega_limits(
-    estimate: FloatArray, df_effect: FloatArray, df_error: FloatArray, n_observations: FloatArray, level: float
+    estimate: FloatArray,
+    df_effect: FloatArray,
+    df_error: FloatArray,
+    n_observations: FloatArray,
+    level: float,
 ) -> Interval:
     """Limits of the population value."""
     f = _f_from_omega(estimate, df_effect, n_observations)
@@ -107,7 +115,11 @@ def epsilon_large(
 
 
 def epsilon_limits(
-    estimate: FloatArray, df_effect: FloatArray, df_error: FloatArray, n_observations: FloatArray, level: float
+    estimate: FloatArray,
+    df_effect: FloatArray,
+    df_error: FloatArray,
+    n_observations: FloatArray,
+    level: float,
 ) -> Interval:
     """Limits of the population value."""
     f = _f_from_epsilon(estimate, df_effect, df_error)
@@ -128,7 +140,11 @@ def f_large(estimate: FloatArray, df_effect: FloatArray, n_observations: FloatAr
 
 
 def f_limits(
-    estimate: FloatArray, df_effect: FloatArray, df_error: FloatArray, n_observations: FloatArray, level: float
+    estimate: FloatArray,
+    df_effect: FloatArray,
+    df_error: FloatArray,
+    n_observations: FloatArray,
+    level: float,
 ) -> Interval:
     """Limits of sqrt(λ/N)."""
     f = estimate**2 * df_error / df_effect

@@ -83,6 +83,21 @@ def from_workbook(path: Path, name: str, sheets: tuple[str, ...]) -> Grid:
     return grid
 
 
+def has_sheet(path: Path, title: str) -> bool:
+    """Whether a file is a workbook with a visible sheet of this name; False for anything else or unreadable."""
+    if not zipfile.is_zipfile(path):
+        return False
+    try:
+        with warnings.catch_warnings():
+            warnings.simplefilter("ignore")
+            book = openpyxl.load_workbook(path, read_only=True)
+            names = [sheet.title.strip().casefold() for sheet in book.worksheets if sheet.sheet_state == "visible"]
+            book.close()
+    except (OSError, *_DAMAGE):
+        return False
+    return title in names
+
+
 def _inspect(stream: IO[bytes], name: str) -> tuple[bool, str]:
     """Refuse bombs; then whether any sheet has formulas, and one merged range."""
     with zipfile.ZipFile(stream) as archive:
@@ -107,12 +122,15 @@ def _inspect(stream: IO[bytes], name: str) -> tuple[bool, str]:
 
 
 def _pick(book: openpyxl.Workbook, name: str, sheets: tuple[str, ...]) -> str:
-    """The sheet to read: one of the preferred names, else the first visible one that is not reserved."""
+    """The sheet to read: one of the preferred names, else the first visible one that is not reserved.
+
+    A reserved sheet is read only when it is asked for by name.
+    """
     visible = [sheet.title for sheet in book.worksheets if sheet.sheet_state == "visible"]
     wanted = {sheet.strip().casefold() for sheet in sheets} - {""}
     coded = [title for title in visible if title.strip().casefold() not in RESERVED]
-    preferred = [title for title in coded if title.strip().casefold() in wanted]
-    if not coded:
+    preferred = [title for title in visible if title.strip().casefold() in wanted]
+    if not coded and not preferred:
         reason = "only sheets that hold no coded rows" if visible else "no visible sheet"
         raise UnreadableInput(f"{name} has {reason}; add or unhide the coded sheet")
     return (preferred or coded)[0]

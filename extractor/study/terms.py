@@ -53,9 +53,7 @@ def sums_over_terms(
 
 
 class _Models:
-    def __init__(
-        self, table: ReportedTable, use: Mapping[Variable, BoolArray], design: ObjectArray
-    ) -> None:
+    def __init__(self, table: ReportedTable, use: Mapping[Variable, BoolArray], design: ObjectArray) -> None:
         self.table, self.use, self.design = table, use, design
         self.ids = analysis_ids(table, design)
         self.inside = self.ids >= 0
@@ -140,7 +138,12 @@ class _Models:
         frame = pd.DataFrame({"id": self.ids, "ss": ss_error.value})
         first = ~frame.duplicated().to_numpy() & several
         subjects = self._cell("ss_subjects")
-        named = pd.DataFrame({"id": self.ids, "ss": subjects.value}).groupby("id")["ss"].transform("max").to_numpy()
+        named = (
+            pd.DataFrame({"id": self.ids, "ss": subjects.value})
+            .groupby("id")["ss"]
+            .transform("max")
+            .to_numpy()
+        )
         within = self.design == "within"
         ends = []
         for values, participants in zip(

@@ -61,7 +61,9 @@ def test_sorted_thresholds_miss_the_maximum_with_unequal_sizes_and_this_does_not
     low, high = middle - 0.5, middle + 0.5
     equal = np.full((rows, groups), 12.0)
     unequal = rng.integers(2, 100, size=(rows, groups)).astype(float)
-    np.testing.assert_allclose(sorted_threshold(equal, low, high), greatest_between(equal, low, high), rtol=1e-12)
+    np.testing.assert_allclose(
+        sorted_threshold(equal, low, high), greatest_between(equal, low, high), rtol=1e-12
+    )
     best = greatest_between(unequal, low, high)
     shortcut = sorted_threshold(unequal, low, high)
     missed = shortcut < best * (1 - 1e-9)
@@ -162,12 +164,16 @@ def test_all_means_unknown_give_zero_at_least() -> None:
 
 
 _NUMBERS = st.floats(-50, 50, allow_nan=False).map(lambda x: round(x, 3))
-_GROUPS = st.lists(st.tuples(st.integers(1, 200), _NUMBERS, st.floats(0, 5), st.floats(0, 1)), min_size=2, max_size=8)
+_GROUPS = st.lists(
+    st.tuples(st.integers(1, 200), _NUMBERS, st.floats(0, 5), st.floats(0, 1)), min_size=2, max_size=8
+)
 
 
 @settings(max_examples=200, deadline=None)
 @given(_GROUPS)
-def test_extremes_enclose_any_point_and_widen_with_the_box(groups: list[tuple[int, float, float, float]]) -> None:
+def test_extremes_enclose_any_point_and_widen_with_the_box(
+    groups: list[tuple[int, float, float, float]],
+) -> None:
     n = np.array([[float(g[0]) for g in groups]])
     low = np.array([[g[1] for g in groups]])
     high = low + np.array([[g[2] for g in groups]])

@@ -40,7 +40,10 @@ def world(rng: np.random.Generator, rows: int, groups: int, *, equal: bool = Fal
         n = np.repeat(n[:, :1], groups, axis=1)
     unit = 10.0 ** rng.integers(-2, 3, size=(rows, 1))
     spread = unit * np.exp(rng.normal(0, 0.4, size=(rows, groups)))
-    mean = unit * (rng.normal(0, 3, size=(rows, 1)) + rng.normal(0, 1, size=(rows, groups)) * rng.choice([0.1, 1], size=(rows, 1)))
+    mean = unit * (
+        rng.normal(0, 3, size=(rows, 1))
+        + rng.normal(0, 1, size=(rows, groups)) * rng.choice([0.1, 1], size=(rows, 1))
+    )
     found: World = {"n": n, "mean": mean, "sd": spread, "se": spread / np.sqrt(n)}
     total = n.sum(axis=1)
     v1, v2 = np.full(rows, groups - 1.0), total - groups
@@ -126,7 +129,10 @@ def _welch(n: FloatArray, mean: FloatArray, sd: FloatArray) -> World:
     centre = (share * mean).sum(axis=1)
     sum_a = ((1 - share) ** 2 / (n - 1)).sum(axis=1)
     top = (w * (mean - centre[:, None]) ** 2).sum(axis=1) / (k - 1)
-    return {"welch_f": top / (1 + 2 * (k - 2) * sum_a / (k**2 - 1)), "welch_df_error": (k**2 - 1) / (3 * sum_a)}
+    return {
+        "welch_f": top / (1 + 2 * (k - 2) * sum_a / (k**2 - 1)),
+        "welch_df_error": (k**2 - 1) / (3 * sum_a),
+    }
 
 
 def worlds_of(relation: Relation, rows: int, seed: int) -> list[World]:
@@ -211,7 +217,9 @@ def box(rng: np.random.Generator, name: str, value: FloatArray, *, exact: bool) 
     return np.maximum(low, quantity.low), np.minimum(high, quantity.high)
 
 
-def boxes(rng: np.random.Generator, relation: Relation, true: Mapping[str, FloatArray]) -> dict[str, Interval]:
+def boxes(
+    rng: np.random.Generator, relation: Relation, true: Mapping[str, FloatArray]
+) -> dict[str, Interval]:
     """Boxes around the true inputs of a relation."""
     return {name: box(rng, name, true[name], exact=name in relation.exact) for name in relation.needs}
 

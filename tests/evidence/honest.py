@@ -139,7 +139,9 @@ def honest_sheet(rng: np.random.Generator, rows: int) -> Sheet:
     return sheet
 
 
-def _say_limits(rng: np.random.Generator, sheet: Sheet, found: dict[str, np.ndarray], sizes: np.ndarray) -> None:
+def _say_limits(
+    rng: np.random.Generator, sheet: Sheet, found: dict[str, np.ndarray], sizes: np.ndarray
+) -> None:
     """95 % limits of the group means (from t or z, own or pooled SD: papers differ) and of the difference."""
     places = int(rng.integers(1, 4))
     pooled = rng.random() < 0.3

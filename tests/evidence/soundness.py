@@ -2,7 +2,8 @@
 
     python -m tests.evidence.soundness [--rows N] [--seed S] [--workers W]
 
-Raw scores are drawn, statistics computed from the raw scores, then printed; the audit must call none of them
+Raw scores are drawn, statistics computed from the raw scores, then printed: six rows in ten are one-way or two-group,
+the others factorial, within, paired, mixed, covariance-adjusted or pre-post-control. The audit must call none of them
 impossible or inconsistent. Exits with 1 when it does.
 """
 
@@ -20,6 +21,7 @@ from extractor.audit.run import audit_evidence
 from extractor.evidence import gather
 from extractor.findings import Severity
 from tests.evidence.honest import honest_sheet
+from tests.evidence.honest_designs import honest_design_sheet
 from tests.evidence.printing import Sheet, table
 
 ROWS_PER_SHEET = 500
@@ -28,7 +30,8 @@ ROWS_PER_SHEET = 500
 def examine(seed: int) -> tuple[int, int, Counter[str], list[str]]:
     """One sheet: its rows, the comparisons made, counts by design and severity, and any false alarm in words."""
     rng = np.random.default_rng(seed)
-    sheet = honest_sheet(rng, ROWS_PER_SHEET)
+    make = honest_design_sheet if rng.random() < 0.4 else honest_sheet
+    sheet = make(rng, ROWS_PER_SHEET)
     reported = table(sheet)
     evidence = gather(reported)
     blocked = sorted({str(w) for w in evidence.blocked} - {""})
@@ -40,12 +43,16 @@ def examine(seed: int) -> tuple[int, int, Counter[str], list[str]]:
     for finding in audit.findings:
         counts[finding.severity.word] += 1
         if finding.severity >= Severity.INCONSISTENT:
-            alarms.append(f"seed {seed} row {finding.row}: {finding.message} | {_row(sheet, finding.row - 2)}")
+            alarms.append(
+                f"seed {seed} row {finding.row}: {finding.message} | {_row(sheet, finding.row - 2)}"
+            )
     return sheet.rows, audit.checks, counts, alarms
 
 
 def _row(sheet: Sheet, position: int) -> str:
-    return ", ".join(f"{v[0]}{v[1] or ''}={p.value[position]:.{p.decimals}f}" for v, p in sheet.columns.items())
+    return ", ".join(
+        f"{v[0]}{v[1] or ''}={p.value[position]:.{p.decimals}f}" for v, p in sheet.columns.items()
+    )
 
 
 def main(argv: list[str] | None = None) -> int:

@@ -25,8 +25,8 @@ from extractor.output.tables import (
     write_dta,
     write_json,
     write_parquet,
-    write_xlsx,
 )
+from extractor.output.workbook import write_xlsx
 
 FLOATS = [0.1 + 0.2, math.nan, -1e-17, 123456789.12345678, 5e-324, -0.5, 2 / 3]
 
@@ -51,7 +51,9 @@ def same_floats(found: object, expected: list[float]) -> bool:
 
 def test_csv_reads_back(frame: pd.DataFrame, tmp_path: Path) -> None:
     write_csv(frame, tmp_path / "t.csv", raw=True)
-    found = pd.read_csv(tmp_path / "t.csv", keep_default_na=False, na_values={"estimate": [""], "n_total": [""]})
+    found = pd.read_csv(
+        tmp_path / "t.csv", keep_default_na=False, na_values={"estimate": [""], "n_total": [""]}
+    )
     assert list(found.columns) == list(frame.columns)
     assert same_floats(found["estimate"], FLOATS)
     assert same_floats(found["n_total"], [60, math.nan, 40, 2, 3, 4, 5])
@@ -158,7 +160,7 @@ def test_parquet_reads_back(frame: pd.DataFrame, tmp_path: Path) -> None:
 
 
 def test_parquet_without_its_package_names_the_extra(monkeypatch: pytest.MonkeyPatch, tmp_path: Path) -> None:
-    monkeypatch.setattr(tables.importlib.util, "find_spec", lambda name: None)
+    monkeypatch.setattr("importlib.util.find_spec", lambda name: None)
     with pytest.raises(UsageError, match=r"anova-extractor\[parquet\]"):
         write_parquet(pd.DataFrame({"x": [1]}), tmp_path / "t.parquet")
     assert not (tmp_path / "t.parquet").exists()

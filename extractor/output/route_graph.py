@@ -1,0 +1,267 @@
+"""One route as a drawing (SVG): from the reported cells, step by step, to the effect.
+
+Rows whose routes have one shape share the boxes, formulas and arrows; only the values differ. The report draws
+the shape once and refers to it, so that a thousand rows stay small.
+"""
+
+from __future__ import annotations
+
+import textwrap
+from collections.abc import Iterable, Mapping, Sequence
+from dataclasses import dataclass
+from html import escape
+
+import pandas as pd
+
+from extractor.catalogue.relation import catalogue
+from extractor.output.layout import arrange
+from extractor.quantities import VOCABULARY
+from extractor.words import plain
+
+_LETTER, _LINE, _PAD = 7.3, 16, 9
+"""Width of a letter, height of a line and room around the text, in pixels."""
+_COLUMN_GAP, _ROW_GAP, _MARGIN = 46, 12, 6
+_LONGEST = 46
+_SHOWN_GROUPS = 4
+
+STYLE = (
+    ".route{font:12px/1 ui-monospace,Menlo,Consolas,'DejaVu Sans Mono',monospace;fill:#1f2933}"
+    ".route rect{fill:#fff;stroke:#8a97a5}.route .leaf rect{fill:#eef1f4;stroke:none}"
+    ".route .aim rect{stroke:#0b5563;stroke-width:2}.route .loss rect{stroke-dasharray:5 3}"
+    ".route path{fill:none;stroke:#8a97a5}.route .tip{fill:#8a97a5;stroke:none}"
+    ".route .how{fill:#52606d}"
+)
+
+
+@dataclass(frozen=True, slots=True)
+class Step:
+    """One quantity of a route.
+
+    shown : its value or values, with the interval that rounding leaves. lines : what stands below it.
+    """
+
+    quantity: str
+    symbol: str
+    shown: str
+    lines: tuple[str, ...]
+    reported: bool
+    grade: str
+    needs: tuple[str, ...]
+    source: str
+    equation: str
+
+
+@dataclass(frozen=True, slots=True)
+class Box:
+    """A step with its place."""
+
+    step: Step
+    x: float
+    y: float
+    width: float
+    height: float
+
+
+@dataclass(frozen=True, slots=True)
+class Shape:
+    """Boxes and arrows of a route, without values."""
+
+    boxes: tuple[Box, ...]
+    arrows: tuple[str, ...]
+    width: float
+    height: float
+
+
+def route_steps(lines: pd.DataFrame, numbers: Mapping[str, int] | None = None) -> dict[str, Step]:
+    """The steps of one row by quantity, in the order they ran.
+
+    Parameters
+    ----------
+    lines : the row's part of the derivations table.
+    numbers : number by relation in a list of sources, to refer to; without it the source itself is shown.
+    """
+    relations = catalogue()
+    steps: dict[str, Step] = {}
+    for name, part in lines.groupby("quantity", sort=False):
+        quantity, first = str(name), part.iloc[0]
+        relation = str(first["relation"])
+        if relation:
+            where = f"[{numbers[relation]}]" if numbers else str(first["source"])
+            grade = "" if first["grade"] == "identity" else f" {first['grade']}"
+            below = (
+                *textwrap.wrap(str(first["equation"]), _LONGEST),
+                *textwrap.wrap(where + grade, _LONGEST),
+            )
+        else:
+            below = tuple(textwrap.wrap(_origin(first, part), _LONGEST))
+        steps[quantity] = Step(
+            quantity=quantity,
+            symbol=VOCABULARY[quantity].symbol,
+            shown=_values(part),
+            lines=below,
+            reported=not relation,
+            grade=str(first["grade"]),
+            needs=relations[relation].needs if relation else (),
+            source=str(first["source"]),
+            equation=str(first["equation"]),
+        )
+    return steps
+
+
+def _origin(first: pd.Series, part: pd.DataFrame) -> str:
+    """Where a value that was not derived comes from."""
+    cells = [str(cell) for cell in part["cell"] if cell]
+    if cells:
+        more = f" and {len(cells) - 2} more" if len(cells) > 3 else ""
+        return ", ".join(cells if not more else cells[:2]) + more
+    if first["role"] == "assumed":
+        return f"assumed: {first['source']}"
+    return "as coded"
+
+
+def _values(part: pd.DataFrame) -> str:
+    """The values of all groups, or one value with its interval."""
+    triples = list(zip(part["value"], part["low"], part["high"], strict=True))
+    if len(triples) > 1:
+        shown = [_value(*triple, interval=False) for triple in triples[:_SHOWN_GROUPS]]
+        more = f" … ({len(triples)})" if len(triples) > _SHOWN_GROUPS else ""
+        return ", ".join(shown) + more
+    return _value(*triples[0], interval=True)
+
+
+def _value(value: float, low: float, high: float, *, interval: bool) -> str:
+    known = pd.notna(value)
+    exact = known and not high - low > 1e-9 * max(abs(low), abs(high))
+    ends = f"{_end(low, '-∞')} to {_end(high, '∞')}"
+    if not known:
+        return ends
+    return plain(float(value)) if exact or not interval else f"{plain(float(value))} ({ends})"
+
+
+def _end(value: float, without: str) -> str:
+    return plain(float(value)) if pd.notna(value) and abs(value) != float("inf") else without
+
+
+def ancestors(steps: Mapping[str, Step], target: str) -> dict[str, Step]:
+    """The steps the target rests on, itself included, in their order; the others serve its variance."""
+    wanted: set[str] = set()
+    left = [target] if target in steps else []
+    while left:
+        name = left.pop()
+        if name not in wanted:
+            wanted.add(name)
+            left += [need for need in steps[name].needs if need in steps]
+    return {name: step for name, step in steps.items() if name in wanted}
+
+
+def shape(rows: Sequence[Mapping[str, Step]], target: str) -> Shape:
+    """Boxes and arrows for rows whose steps are the same, wide enough for the values of all of them."""
+    steps = rows[0]
+    sizes = {}
+    for name, step in steps.items():
+        heads = (f"{row[name].symbol} = {row[name].shown}" for row in rows)
+        below = (line for row in rows for line in (row[name].lines if step.reported else step.lines))
+        letters = max(len(text) for text in (*heads, *below))
+        lines = 1 + max(len(row[name].lines) for row in rows)
+        sizes[name] = (letters * _LETTER + 2 * _PAD, lines * _LINE + 2 * _PAD - 4)
+    needs = {name: tuple(n for n in step.needs if n in steps) for name, step in steps.items()}
+    places, bends = arrange(needs, target, sizes, _COLUMN_GAP, _ROW_GAP)
+    boxes = tuple(Box(steps[name], *places[name], *sizes[name]) for name in steps)
+    arrows = []
+    for (start, end), between in bends.items():
+        (x, y), (width, height) = places[start], sizes[start]
+        (to_x, to_y), (_, to_height) = places[end], sizes[end]
+        points = [(x + width, y + height / 2), *between, (to_x - 5, to_y + to_height / 2)]
+        arrows.append(_curve(points))
+    right = max(box.x + box.width for box in boxes)
+    bottom = max(
+        [
+            *(box.y + box.height for box in boxes),
+            *(y + _ROW_GAP / 2 for way in bends.values() for _, y in way),
+        ]
+    )
+    return Shape(boxes, tuple(arrows), right + 2 * _MARGIN, bottom + 2 * _MARGIN)
+
+
+def _curve(points: Sequence[tuple[float, float]]) -> str:
+    """A path through points, level at each of them, with a tip at its end."""
+    parts = [f"M{points[0][0]:.0f} {points[0][1]:.0f}"]
+    for (x, y), (to_x, to_y) in zip(points, points[1:], strict=False):
+        middle = (x + to_x) / 2
+        parts.append(f"C{middle:.0f} {y:.0f} {middle:.0f} {to_y:.0f} {to_x:.0f} {to_y:.0f}")
+    return "".join(parts)
+
+
+def outline(drawn: Shape, target: str) -> str:
+    """What all rows of a shape share, as an SVG group: boxes, symbols, formulas, sources, arrows."""
+    parts = [f'<path d="{arrow}"/>' for arrow in drawn.arrows]
+    for arrow in drawn.arrows:
+        x, y = arrow.rsplit(" ", 2)[-2:]
+        parts.append(f'<path class="tip" d="M{x} {float(y) - 4:.0f}l6 4l-6 4z"/>')
+    for box in drawn.boxes:
+        step = box.step
+        kinds = ["leaf"] if step.reported else []
+        kinds += ["aim"] if step.quantity == target else []
+        kinds += ["loss"] if step.grade != "identity" else []
+        parts.append(f'<g class="{" ".join(kinds)}">' if kinds else "<g>")
+        meaning = escape(VOCABULARY[step.quantity].meaning)
+        parts.append(
+            f'<rect x="{box.x:.0f}" y="{box.y:.0f}" width="{box.width:.0f}" height="{box.height:.0f}" rx="2">'
+            f"<title>{meaning}</title></rect>"
+        )
+        if not step.reported:
+            parts += _texts(box, step.lines, first=1)
+        parts.append("</g>")
+    return f'<g transform="translate({_MARGIN} {_MARGIN})">{"".join(parts)}</g>'
+
+
+def values(drawn: Shape, steps: Mapping[str, Step]) -> str:
+    """What differs from row to row, as an SVG group: values, and the cells of reported ones."""
+    parts = []
+    for box in drawn.boxes:
+        step = steps[box.step.quantity]
+        x, y = box.x + _PAD, box.y + _PAD + 9
+        parts.append(f'<text x="{x:.0f}" y="{y:.0f}">{escape(f"{step.symbol} = {step.shown}")}</text>')
+        if step.reported:
+            parts += _texts(box, step.lines, first=1)
+    return f'<g transform="translate({_MARGIN} {_MARGIN})">{"".join(parts)}</g>'
+
+
+def _texts(box: Box, lines: Iterable[str], first: int) -> list[str]:
+    return [
+        f'<text class="how" x="{box.x + _PAD:.0f}" y="{box.y + _PAD + 9 + at * _LINE:.0f}">{escape(line)}</text>'
+        for at, line in enumerate(lines, first)
+    ]
+
+
+def in_words(steps: Mapping[str, Step], target: str) -> str:
+    """The drawing in one sentence, for those who do not see it."""
+    leaves = [f"{s.symbol} = {s.shown}" for s in steps.values() if s.reported]
+    made = [f"{s.equation} gives {s.shown}" for s in steps.values() if not s.reported]
+    said = f"{VOCABULARY[target].symbol} = {steps[target].shown}, from {', '.join(leaves)}"
+    return f"{said}: {'; '.join(made)}" if made else said
+
+
+def route_svg(lines: pd.DataFrame, target: str) -> str:
+    """The route of one row as an SVG document of its own.
+
+    Parameters
+    ----------
+    lines : the row's part of the derivations table.
+    target : the metric.
+
+    Raises
+    ------
+    ValueError
+        where the row has no route to the metric.
+    """
+    steps = ancestors(route_steps(lines), target)
+    if not steps:
+        raise ValueError(f"the row has no route to {target}")
+    drawn = shape([steps], target)
+    return (
+        f'<svg xmlns="http://www.w3.org/2000/svg" class="route" width="{drawn.width:.0f}" '
+        f'height="{drawn.height:.0f}" viewBox="0 0 {drawn.width:.0f} {drawn.height:.0f}" role="img">'
+        f"<title>{escape(in_words(steps, target))}</title><style>{STYLE}</style>"
+        f"{outline(drawn, target)}{values(drawn, steps)}</svg>\n"
+    )
