@@ -77,12 +77,11 @@ def cohens_kappa(codes: Codes, level: float = 0.95) -> Coefficient:
     if len(both) < 2 or chance >= 1.0 - 1e-12:
         return UNDEFINED
     kappa = (observed - chance) / (1 - chance)
-    weight = (second[:, None] + first[None, :]) * (1 - observed)
-    on_diagonal = (np.diag(cross) * ((1 - chance) - np.diag(weight)) ** 2).sum()
-    elsewhere = (cross * weight**2).sum() - (np.diag(cross) * np.diag(weight) ** 2).sum()
-    centre = (observed * chance - 2 * chance + observed) ** 2
-    variance = (on_diagonal + elsewhere - centre) / (len(both) * (1 - chance) ** 4)
-    half = float(stats.norm.ppf((1 + level) / 2)) * math.sqrt(max(float(variance), 0.0))
+    # the published sum, written about its mean so that it loses no digits
+    share = np.eye(categories) * (1 - chance) - (second[:, None] + first[None, :]) * (1 - observed)
+    share -= float((cross * share).sum())
+    variance = float((cross * share**2).sum()) / (len(both) * (1 - chance) ** 4)
+    half = float(stats.norm.ppf((1 + level) / 2)) * math.sqrt(variance)
     return Coefficient(kappa, kappa - half, min(kappa + half, 1.0))
 
 

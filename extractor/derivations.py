@@ -14,7 +14,7 @@ from extractor.conversion import Conversion, route_words
 from extractor.engine import Estimate
 from extractor.planner import Route
 from extractor.quantities import VOCABULARY, Shape
-from extractor.table import FloatArray
+from extractor.table import FloatArray, ObjectArray
 
 STEP_COLUMNS = [
     "row",
@@ -161,10 +161,10 @@ def _lines(
     def flat(values: FloatArray) -> FloatArray:
         return np.asarray(values[mine].ravel())
 
-    places = [""] * groups
-    if cells:
-        known = [table.numbers.get(cell) for cell in cells]
-        places = [f"{n.place.heading} [{n.place.column}]" if n else "" for n in known]
+    positions = chosen.block.positions[mine]
+    places: ObjectArray = np.full((len(rows), groups), "", dtype=object)
+    for column, cell in enumerate(cells or ()):
+        places[:, column] = table.wheres(cell, positions)
     return pd.DataFrame(
         {
             **about,
@@ -173,6 +173,6 @@ def _lines(
             "value": flat(estimate.value),
             "low": flat(estimate.low),
             "high": flat(estimate.high),
-            "cell": np.tile(np.array(places, dtype=object), len(rows)),
+            "cell": places.ravel(),
         }
     )

@@ -193,13 +193,15 @@ def _of_outcome(
         return Line(what, int(out.sum()), pooled)
 
     lines = [line("all rows with an estimate and a variance", np.zeros(len(rows), dtype=bool))]
-    for what, out in (
+    doubts = [
         ("without rows that carry findings", questioned),
         ("without rows that rest on assumptions", assumed),
         ("without rows that rest on assumptions or approximations", low),
         ("without any of these", questioned | low),
-    ):
-        if out.any():
+    ]
+    for at, (what, out) in enumerate(doubts):
+        # a line that leaves out the same rows as one before it says nothing new
+        if out.any() and not any(np.array_equal(out, other) for _, other in doubts[:at]):
             lines.append(line(what, out))
     return Glance(
         outcome,

@@ -27,7 +27,11 @@ class Place:
 
     def at(self, row: int) -> str:
         """The heading with its address, such as ``F [H12]``; rows are the spreadsheet's own numbers."""
-        return f"{self.heading} [{self.column}{row}]" if self.column else f"{self.heading} [row {row}]"
+        return f"{self.before_row()}{row}]"
+
+    def before_row(self) -> str:
+        """The address as far as the row number."""
+        return f"{self.heading} [{self.column}" if self.column else f"{self.heading} [row "
 
 
 @dataclass(slots=True)
@@ -116,3 +120,21 @@ class ReportedTable:
         """A column of words; all blank where the sheet has no such column."""
         found = self.facts.get(name)
         return found if found is not None else np.full(self.rows, "", dtype=object)
+
+    def where(self, variable: Variable, position: int) -> str:
+        """A variable's cell with its address, by position of the row."""
+        return str(self.wheres(variable, np.array([position]))[0])
+
+    def wheres(self, variable: Variable, positions: NDArray[np.intp]) -> ObjectArray:
+        """A variable's cells with their addresses, by positions of rows; a number found in text names itself."""
+        numbers = self.numbers.get(variable)
+        if numbers is None:
+            return np.full(len(positions), "", dtype=object)
+        rows = self.row_numbers[positions].astype(str).astype(object)
+        cells = numbers.place.before_row() + rows + "]"
+        from_text = self.settings.get("from_reported", {}).get(variable)
+        place = self.settings.get("reported_place")
+        if from_text is None or place is None:
+            return np.asarray(cells, dtype=object)
+        in_text = f"{variable[0]} in {place.before_row()}" + rows + "]"
+        return np.where(from_text[positions], in_text, cells)

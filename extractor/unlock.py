@@ -20,7 +20,7 @@ from extractor.quantities import VOCABULARY, Shape
 
 _LARGEST = 4
 """Quantities in a set: with more, nobody answers."""
-_KEPT = 60
+_KEPT = 40
 """Sets kept per quantity while they are combined."""
 
 
@@ -121,7 +121,7 @@ def smallest_sets(
     askable: frozenset[str],
     relations: tuple[Relation, ...],
     goals: frozenset[str],
-    most: int = 20,
+    most: int = 3,
 ) -> list[frozenset[str]]:
     """Smallest sets of askable quantities from which, with what is known, all goals follow; the easiest first.
 
@@ -129,15 +129,16 @@ def smallest_sets(
     """
     if goals <= follows(known, relations):
         return []
-    labels = _Labels(known, askable - known, relations, goals)
-    found = []
-    for asked in labels.sets(goals):
-        if len(found) == most:
-            break
-        if goals <= follows(known | asked, relations) and not any(
-            goals <= follows(known | asked - {quantity}, relations) for quantity in asked
-        ):
-            found.append(asked)
+    found: list[frozenset[str]] = []
+    # few quantities are easy to have, so that the sets made of them alone are found at once
+    for ease in Ease:
+        within = frozenset(q for q in askable if EASE[q] <= ease) - known
+        for asked in _Labels(known, within, relations, goals).sets(goals):
+            if len(found) == most:
+                return found
+            opens = asked not in found and goals <= follows(known | asked, relations)
+            if opens and not any(goals <= follows(known | asked - {q}, relations) for q in asked):
+                found.append(asked)
     return found
 
 
@@ -216,11 +217,11 @@ def _leading_to(goals: frozenset[str], relations: tuple[Relation, ...]) -> set[s
 
 
 @lru_cache(maxsize=4096)
-def _unlocking(start: Start, design: str, metric: str) -> tuple[frozenset[str], ...]:
+def _unlocking(start: Start, design: str, metric: str, most: int) -> tuple[frozenset[str], ...]:
     # the contrast needs no asking: it is there as soon as groups are coded
     known = start.known | start.assumed | {"contrast_weight"}
     relations = graph(design, any_point, frozenset(), None)
-    return tuple(smallest_sets(known, ASKABLE, relations, frozenset([metric])))
+    return tuple(smallest_sets(known, ASKABLE, relations, frozenset([metric]), most))
 
 
 def unlocking_sets(start: Start, design: str, metric: str, most: int = 3) -> list[frozenset[str]]:
@@ -228,7 +229,7 @@ def unlocking_sets(start: Start, design: str, metric: str, most: int = 3) -> lis
 
     No part of a set opens one. The list is empty where a route is open, and where nothing would open one.
     """
-    return list(_unlocking(start, design, metric)[:most])
+    return list(_unlocking(start, design, metric, most))
 
 
 def in_words(sets: Iterable[frozenset[str]]) -> str:

@@ -172,7 +172,7 @@ def _finding(
         study=str(table.fact("study")[position]),
         severity=severity,
         rule="contradiction",
-        cells=tuple(table.numbers[c.variable].place.at(number) for c in named),
+        cells=tuple(dict.fromkeys(table.where(c.variable, position) for c in named)),
         printed=printed_text(table, named[0].variable, position),
         message=f"{message}; {repair}" if single or fits else message,
         explanation=_explanation(fits),

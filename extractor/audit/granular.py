@@ -152,7 +152,7 @@ def _granular(table: ReportedTable, mean: Variable, sd: Variable) -> Iterator[Fi
     spread = _printed(table, sd)
     reached = granularity.sd_is_reachable(scores.n, scores.items, centre, spread, scores.low, scores.high)
     for i in positions(judged & ~scores.zero_one & ~reached):
-        yield _sd_finding(table, i, mean, sd, scores)
+        yield _sd_finding(table, i, mean, sd, scores, Printed(*(end[i] for end in centre)))
     reached = granularity.binary_sd_is_reachable(scores.n, centre, spread)
     for i in positions(judged & scores.zero_one & ~reached):
         yield _binary_finding(table, i, mean, sd, scores)
@@ -181,14 +181,15 @@ def _mean_finding(table: ReportedTable, i: int, mean: Variable, scores: _Scores)
     return finding_at(table, i, Severity.IMPOSSIBLE, "granularity of the mean", cells, said)
 
 
-def _sd_finding(table: ReportedTable, i: int, mean: Variable, sd: Variable, scores: _Scores) -> Finding:
+def _sd_finding(
+    table: ReportedTable, i: int, mean: Variable, sd: Variable, scores: _Scores, centre: Printed
+) -> Finding:
     numbers = table.numbers[sd]
     value, decimals = float(numbers.value[i]), int(numbers.decimals[i])
     steps = np.arange(-_NEIGHBOURS, _NEIGHBOURS + 1)
     tried = np.round(value + steps * 10.0**-decimals, decimals)
     tried = tried[tried >= 0]
     spread = granularity.printed_interval(tried, decimals, cast(Rounding, table.rounding))
-    centre = Printed(*(end[i] for end in _printed(table, mean)))
     limits = scores.low[i], scores.high[i]
     reached = tried[granularity.sd_is_reachable(scores.n[i], scores.items[i], centre, spread, *limits)]
     nearest = [

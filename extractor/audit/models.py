@@ -80,7 +80,7 @@ def _finding(evidence: Evidence, row: int, printed: Numbers, severity: Severity,
         study=str(table.fact("study")[row]),
         severity=severity,
         rule="type of sums of squares",
-        cells=(printed.place.at(number),),
+        cells=(table.where(("f_value", None), row),),
         printed=printed_text(table, ("f_value", None), row),
         message=message,
     )
@@ -107,7 +107,7 @@ def shares_of_the_total(evidence: Evidence) -> Iterator[Finding]:
             study=str(table.fact("study")[row]),
             severity=Severity.INCONSISTENT if certain else Severity.DOUBTFUL,
             rule="shares of the total",
-            cells=tuple(printed.place.at(number) for number in numbers),
+            cells=tuple(table.where(("eta_squared", None), int(m)) for m in members),
             printed=", ".join(printed_text(table, ("eta_squared", None), int(m)) for m in members),
             message=f"the eta squared of the terms of one model add up to at least {plain(float(sums[row]))}, "
             "more than the whole",

@@ -98,12 +98,13 @@ def finding_at(
     """A finding about cells of one row, the most suspect first; open ends of ``expected`` are left blank."""
     row = int(table.row_numbers[position])
     low, high = (float(end) if np.isfinite(end) else np.nan for end in expected)
+    studies = table.facts.get("study")
     return Finding(
         row=row,
-        study=str(table.fact("study")[position]),
+        study="" if studies is None else str(studies[position]),
         severity=severity,
         rule=rule,
-        cells=tuple(dict.fromkeys(table.numbers[variable].place.at(row) for variable in variables)),
+        cells=tuple(dict.fromkeys(table.where(variable, position) for variable in variables)),
         printed=printed_text(table, variables[0], position) if variables else "",
         message=message,
         explanation=explanation,

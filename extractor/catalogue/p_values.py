@@ -17,7 +17,7 @@ from extractor.catalogue.relation import (
 _TAILS = "definition of one- and two-tailed p values; a one-tailed p above .5 belongs to the other tail"
 _F_TAIL = "upper tail of the F distribution, as the incomplete beta function (Abramowitz & Stegun 1964, 26.6)"
 _T_TAIL = "two tails of Student's t, as the incomplete beta function (Abramowitz & Stegun 1964, 26.7)"
-_ACCURACY = 1e-9
+_ACCURACY = 1e-7
 
 
 def _two_sided_image(p_value: Interval, tails: Interval) -> Interval:

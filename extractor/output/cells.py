@@ -5,20 +5,8 @@ from __future__ import annotations
 from extractor.table import ReportedTable
 
 
-def address(table: ReportedTable, quantity: str, group: int, position: int) -> str:
-    """The heading and address of a printed number, such as ``F [H12]``; "" where it has no column of its own.
-
-    Parameters
-    ----------
-    group : counted from 1; 0 for a quantity of the whole row.
-    position : index of the row in the table.
-    """
-    numbers = table.numbers.get((quantity, group or None))
-    return "" if numbers is None else numbers.place.at(int(table.row_numbers[position]))
-
-
 def understood(table: ReportedTable, quantity: str, group: int, position: int) -> str:
-    """How a cell was read, where that was not plain; parameters as for ``address``."""
+    """How a cell was read, where that was not plain; ``group`` counts from 1, 0 is the whole row."""
     numbers = table.numbers.get((quantity, group or None))
     return "" if numbers is None else str(numbers.understood[position])
 

@@ -7,6 +7,7 @@ which takes part in the ordering, so that arrows do not run through boxes.
 from __future__ import annotations
 
 from collections.abc import Mapping
+from itertools import pairwise
 
 Point = tuple[float, float]
 Edge = tuple[str, str]
@@ -22,7 +23,7 @@ def arrange(
     column_gap: float,
     row_gap: float,
 ) -> tuple[dict[str, Point], dict[Edge, list[Point]]]:
-    """Top left corners of the boxes, and the points at which every arrow enters and leaves a column it passes.
+    """Top left corners of the boxes, and the points at which every arrow enters and leaves columns.
 
     Parameters
     ----------
@@ -63,7 +64,7 @@ def _neighbours(chains: Mapping[Edge, list[str]]) -> dict[str, list[str]]:
     found: dict[str, list[str]] = {}
     for (start, end), bends in chains.items():
         way = [start, *bends, end]
-        for one, other in zip(way, way[1:], strict=False):
+        for one, other in pairwise(way):
             found.setdefault(one, []).append(other)
             found.setdefault(other, []).append(one)
     return found
@@ -95,7 +96,10 @@ def _place(
     column_gap: float,
     row_gap: float,
 ) -> tuple[dict[str, Point], dict[Edge, list[Point]]]:
-    """Coordinates: columns side by side, each centred."""
+    """Coordinates: columns side by side, each centred, their boxes flush right.
+
+    An arrow so leaves at the edge of a column, and enters one level with its box: it never runs under another.
+    """
 
     def height(name: str) -> float:
         return sizes[name][1] if name in sizes else _BEND_HEIGHT
@@ -110,11 +114,14 @@ def _place(
         y = (tallest - own) / 2
         for name in column:
             if name in sizes:
-                places[name] = (x, y)
+                places[name] = (x + width - sizes[name][0], y)
+                passages[name] = [(x, y + sizes[name][1] / 2)]
             else:
                 middle = y + _BEND_HEIGHT / 2
                 passages[name] = [(x, middle), (x + width, middle)]
             y += height(name) + row_gap
         x += width + column_gap
-    bends = {edge: [point for bend in chain for point in passages[bend]] for edge, chain in chains.items()}
+    bends = {
+        edge: [p for name in (*chain, edge[1]) for p in passages[name]] for edge, chain in chains.items()
+    }
     return places, bends

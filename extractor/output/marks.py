@@ -109,10 +109,8 @@ def show(cell: Cell | MergedCell, mark: Mark) -> None:
     text = "\n".join(mark.sentences)
     if mark.suspect:
         text += "\nA question for the article, not a verdict: read the page again first."
-    if cell.comment is not None:
-        text = f"{cell.comment.text.rstrip()}\n\n{_DIVIDER}\n{text}"
-    else:
-        text = f"{_DIVIDER}\n{text}"
+    own = f"{cell.comment.text.rstrip()}\n\n" if cell.comment is not None else ""
+    text = f"{own}{_DIVIDER}\n{text}"
     lines = sum(1 + len(line) // 46 for line in text.split("\n"))
     cell.comment = Comment(clean(text), AUTHOR, height=18 * lines + 12, width=330)
 

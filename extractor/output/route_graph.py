@@ -6,10 +6,14 @@ the shape once and refers to it, so that a thousand rows stay small.
 
 from __future__ import annotations
 
+import math
+import re
 import textwrap
-from collections.abc import Iterable, Mapping, Sequence
+from collections.abc import Hashable, Iterable, Mapping, Sequence
 from dataclasses import dataclass
 from html import escape
+from itertools import pairwise
+from typing import Any
 
 import pandas as pd
 
@@ -20,9 +24,11 @@ from extractor.words import plain
 
 _LETTER, _LINE, _PAD = 7.3, 16, 9
 """Width of a letter, height of a line and room around the text, in pixels."""
-_COLUMN_GAP, _ROW_GAP, _MARGIN = 46, 12, 6
-_LONGEST = 46
+_COLUMN_GAP, _ROW_GAP, _MARGIN = 36, 12, 6
+_LONGEST = 34
 _SHOWN_GROUPS = 4
+_COLUMN = re.compile(r"(\[[A-Z]{1,3})\]\Z")
+"""The column of a cell, whose row completes the address."""
 
 STYLE = (
     ".route{font:12px/1 ui-monospace,Menlo,Consolas,'DejaVu Sans Mono',monospace;fill:#1f2933}"
@@ -63,65 +69,77 @@ class Box:
 
 
 @dataclass(frozen=True, slots=True)
+class Arrow:
+    """A path, and where its tip stands."""
+
+    path: str
+    x: float
+    y: float
+
+
+@dataclass(frozen=True, slots=True)
 class Shape:
     """Boxes and arrows of a route, without values."""
 
     boxes: tuple[Box, ...]
-    arrows: tuple[str, ...]
+    arrows: tuple[Arrow, ...]
     width: float
     height: float
 
 
-def route_steps(lines: pd.DataFrame, numbers: Mapping[str, int] | None = None) -> dict[str, Step]:
+Record = Mapping[Hashable, Any]
+"""One line of the derivations table."""
+
+
+def route_steps(lines: Sequence[Record], numbers: Mapping[str, int] | None = None) -> dict[str, Step]:
     """The steps of one row by quantity, in the order they ran.
 
     Parameters
     ----------
-    lines : the row's part of the derivations table.
+    lines : the row's part of the derivations table, as records.
     numbers : number by relation in a list of sources, to refer to; without it the source itself is shown.
     """
-    relations = catalogue()
-    steps: dict[str, Step] = {}
-    for name, part in lines.groupby("quantity", sort=False):
-        quantity, first = str(name), part.iloc[0]
-        relation = str(first["relation"])
-        if relation:
-            where = f"[{numbers[relation]}]" if numbers else str(first["source"])
-            grade = "" if first["grade"] == "identity" else f" {first['grade']}"
-            below = (
-                *textwrap.wrap(str(first["equation"]), _LONGEST),
-                *textwrap.wrap(where + grade, _LONGEST),
-            )
-        else:
-            below = tuple(textwrap.wrap(_origin(first, part), _LONGEST))
-        steps[quantity] = Step(
-            quantity=quantity,
-            symbol=VOCABULARY[quantity].symbol,
-            shown=_values(part),
-            lines=below,
-            reported=not relation,
-            grade=str(first["grade"]),
-            needs=relations[relation].needs if relation else (),
-            source=str(first["source"]),
-            equation=str(first["equation"]),
-        )
-    return steps
+    parts: dict[str, list[Record]] = {}
+    for line in lines:
+        parts.setdefault(str(line["quantity"]), []).append(line)
+    return {quantity: _step(quantity, part, numbers) for quantity, part in parts.items()}
 
 
-def _origin(first: pd.Series, part: pd.DataFrame) -> str:
+def _step(quantity: str, part: Sequence[Record], numbers: Mapping[str, int] | None) -> Step:
+    first = part[0]
+    relation = str(first["relation"])
+    if relation:
+        where = f"[{numbers[relation]}]" if numbers else str(first["source"])
+        grade = "" if first["grade"] == "identity" else f" {first['grade']}"
+        below = (*textwrap.wrap(str(first["equation"]), _LONGEST), *textwrap.wrap(where + grade, _LONGEST))
+    else:
+        below = tuple(textwrap.wrap(_origin(part), _LONGEST))
+    return Step(
+        quantity=quantity,
+        symbol=VOCABULARY[quantity].symbol,
+        shown=_values(part),
+        lines=below,
+        reported=not relation,
+        grade=str(first["grade"]),
+        needs=catalogue()[relation].needs if relation else (),
+        source=str(first["source"]),
+        equation=str(first["equation"]),
+    )
+
+
+def _origin(part: Sequence[Record]) -> str:
     """Where a value that was not derived comes from."""
-    cells = [str(cell) for cell in part["cell"] if cell]
+    cells = [_COLUMN.sub(f"\\g<1>{line['row']}]", str(line["cell"])) for line in part if line["cell"]]
     if cells:
-        more = f" and {len(cells) - 2} more" if len(cells) > 3 else ""
-        return ", ".join(cells if not more else cells[:2]) + more
-    if first["role"] == "assumed":
-        return f"assumed: {first['source']}"
+        return ", ".join(cells if len(cells) < 4 else [*cells[:2], f"{len(cells) - 2} more"])
+    if part[0]["role"] == "assumed":
+        return f"assumed: {part[0]['source']}"
     return "as coded"
 
 
-def _values(part: pd.DataFrame) -> str:
+def _values(part: Sequence[Record]) -> str:
     """The values of all groups, or one value with its interval."""
-    triples = list(zip(part["value"], part["low"], part["high"], strict=True))
+    triples = [(line["value"], line["low"], line["high"]) for line in part]
     if len(triples) > 1:
         shown = [_value(*triple, interval=False) for triple in triples[:_SHOWN_GROUPS]]
         more = f" … ({len(triples)})" if len(triples) > _SHOWN_GROUPS else ""
@@ -130,7 +148,7 @@ def _values(part: pd.DataFrame) -> str:
 
 
 def _value(value: float, low: float, high: float, *, interval: bool) -> str:
-    known = pd.notna(value)
+    known = not math.isnan(value)
     exact = known and not high - low > 1e-9 * max(abs(low), abs(high))
     ends = f"{_end(low, '-∞')} to {_end(high, '∞')}"
     if not known:
@@ -139,7 +157,7 @@ def _value(value: float, low: float, high: float, *, interval: bool) -> str:
 
 
 def _end(value: float, without: str) -> str:
-    return plain(float(value)) if pd.notna(value) and abs(value) != float("inf") else without
+    return plain(float(value)) if not math.isnan(value) and abs(value) != float("inf") else without
 
 
 def ancestors(steps: Mapping[str, Step], target: str) -> dict[str, Step]:
@@ -171,8 +189,9 @@ def shape(rows: Sequence[Mapping[str, Step]], target: str) -> Shape:
     for (start, end), between in bends.items():
         (x, y), (width, height) = places[start], sizes[start]
         (to_x, to_y), (_, to_height) = places[end], sizes[end]
-        points = [(x + width, y + height / 2), *between, (to_x - 5, to_y + to_height / 2)]
-        arrows.append(_curve(points))
+        enter = (to_x - 5, to_y + to_height / 2)
+        points = [(x + width, y + height / 2), *((min(at, enter[0]), over) for at, over in between), enter]
+        arrows.append(Arrow(_curve(points), *enter))
     right = max(box.x + box.width for box in boxes)
     bottom = max(
         [
@@ -184,9 +203,12 @@ def shape(rows: Sequence[Mapping[str, Step]], target: str) -> Shape:
 
 
 def _curve(points: Sequence[tuple[float, float]]) -> str:
-    """A path through points, level at each of them, with a tip at its end."""
+    """A path through points, level at each of them."""
     parts = [f"M{points[0][0]:.0f} {points[0][1]:.0f}"]
-    for (x, y), (to_x, to_y) in zip(points, points[1:], strict=False):
+    for (x, y), (to_x, to_y) in pairwise(points):
+        if y == to_y:
+            parts.append(f"H{to_x:.0f}")
+            continue
         middle = (x + to_x) / 2
         parts.append(f"C{middle:.0f} {y:.0f} {middle:.0f} {to_y:.0f} {to_x:.0f} {to_y:.0f}")
     return "".join(parts)
@@ -194,10 +216,9 @@ def _curve(points: Sequence[tuple[float, float]]) -> str:
 
 def outline(drawn: Shape, target: str) -> str:
     """What all rows of a shape share, as an SVG group: boxes, symbols, formulas, sources, arrows."""
-    parts = [f'<path d="{arrow}"/>' for arrow in drawn.arrows]
+    parts = [f'<path d="{arrow.path}"/>' for arrow in drawn.arrows]
     for arrow in drawn.arrows:
-        x, y = arrow.rsplit(" ", 2)[-2:]
-        parts.append(f'<path class="tip" d="M{x} {float(y) - 4:.0f}l6 4l-6 4z"/>')
+        parts.append(f'<path class="tip" d="M{arrow.x:.0f} {arrow.y - 4:.0f}l6 4l-6 4z"/>')
     for box in drawn.boxes:
         step = box.step
         kinds = ["leaf"] if step.reported else []
@@ -255,7 +276,7 @@ def route_svg(lines: pd.DataFrame, target: str) -> str:
     ValueError
         where the row has no route to the metric.
     """
-    steps = ancestors(route_steps(lines), target)
+    steps = ancestors(route_steps(lines.to_dict("records")), target)
     if not steps:
         raise ValueError(f"the row has no route to {target}")
     drawn = shape([steps], target)

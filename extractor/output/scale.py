@@ -50,15 +50,20 @@ def scale_of(effects: pd.DataFrame, most: int = 7) -> Scale:
     A limit is far outside where it is beyond every estimate by more than three times the spread of the
     estimates and of the inner nine tenths of the limits; it is then drawn as running off the plot.
     """
-    estimates = _finite(effects[["estimate", "estimate_low", "estimate_high"]].to_numpy(dtype=float))
+    ends = effects[["estimate_low", "estimate_high"]].to_numpy(dtype=float)
+    bounds = ends[effects["status"].to_numpy() == "bounded"]
+    # of a bound the end nearer to zero says something; the other may be the end of what is possible
+    nearer = np.abs(bounds) == np.fmin(np.abs(bounds[:, :1]), np.abs(bounds[:, 1:]))
+    pointed = effects.loc[effects["status"] == "converted", ["estimate", "estimate_low", "estimate_high"]]
+    estimates = np.concatenate([_finite(pointed.to_numpy(dtype=float)), _finite(bounds[nearer])])
     limits = _finite(effects[["ci_low", "ci_high"]].to_numpy(dtype=float))
     shown = np.concatenate([estimates, [0.0]])
     low, high = float(shown.min()), float(shown.max())
     if len(limits):
         inner = np.quantile(limits, [0.05, 0.95])
         spread = max(high - low, float(inner[1] - inner[0]), 1e-9)
-        near = limits[(limits >= low - 3 * spread) & (limits <= high + 3 * spread)]
-        low, high = min([low, *near.tolist()]), max([high, *near.tolist()])
+        inside = limits[(limits >= low - 3 * spread) & (limits <= high + 3 * spread)]
+        low, high = min([low, *inside.tolist()]), max([high, *inside.tolist()])
     return round_scale(low, high, most)
 
 

@@ -10,7 +10,6 @@ from rich.tree import Tree
 from extractor.api import Result
 from extractor.catalogue.relation import catalogue
 from extractor.choice import NOTHING, Supported
-from extractor.output.cells import address
 from extractor.output.terminal import between, number, printable, say, show_finding, show_tree
 from extractor.table import FloatArray, ReportedTable
 
@@ -118,7 +117,7 @@ class _Branches:
     def _cells(self, lines: pd.DataFrame) -> list[str]:
         """The cells of a reported quantity, each once."""
         found = [
-            address(self.table, str(line["quantity"]), int(line["group"]), self.position) or str(line["cell"])
+            str(line["cell"]).removeprefix(f"{line['quantity']} in ")
             for line in lines.to_dict("records")
         ]
         return list(dict.fromkeys(found))

@@ -9,7 +9,7 @@ import pandas as pd
 
 from extractor.api import Result
 from extractor.catalogue.relation import catalogue
-from extractor.output.cells import address, understood
+from extractor.output.cells import understood
 from extractor.output.tables import as_json, records
 from extractor.table import ReportedTable
 
@@ -77,7 +77,6 @@ def _step(record: dict[str, object], table: ReportedTable, position: int) -> dic
     kept = {name: value for name, value in record.items() if name not in said_once and value != ""}
     if record["role"] == "reported":
         where = str(record["quantity"]), int(str(record["group"])), position
-        kept["cell"] = address(table, *where) or record["cell"]
         kept["understood"] = understood(table, *where)
     return {name: value for name, value in kept.items() if value != "" and (name, value) != ("group", 0)}
 

@@ -149,6 +149,12 @@ def worlds_of(relation: Relation, rows: int, seed: int) -> list[World]:
     return [world(rng, rows, k, equal=equal) for k in sizes]
 
 
+def anywhere(relation: Relation) -> bool:
+    """Whether the formula makes sense for inputs that do not know of each other."""
+    true = _loose(np.random.default_rng(0), relation, 400)
+    return bool(np.isfinite(true[relation.gives]).mean() > 0.9)
+
+
 def one_factor(relation: Relation) -> bool:
     """Whether the relation holds in a design of which these are worlds."""
     return bool(relation.designs & {"one-way", "two-group"})
@@ -181,7 +187,7 @@ def _draw(rng: np.random.Generator, quantity: Quantity, rows: int) -> FloatArray
         return _weights(rng, rows, groups)
     if quantity.name in ("direction", "tails"):
         return rng.choice([quantity.low, quantity.high], size=rows)
-    if quantity.name in ("df_effect", "df_others", "k_groups", "n_covariates"):
+    if quantity.name.endswith(("df_effect", "df_others", "k_groups", "n_covariates")):
         return quantity.low + rng.integers(0, 4, size=shape)
     if quantity.integer or quantity.name == "n_observations":
         return rng.integers(30, 90, size=shape).astype(float)

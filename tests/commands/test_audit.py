@@ -21,7 +21,7 @@ def test_findings_by_study_then_what_was_checked(run: Run) -> None:
     assert lines[0] == "Mill Lane"
     assert lines[1].startswith("  row 4 inconsistent: ")
     flat = " ".join(result.stdout.split())
-    assert "cells: reported [D4]" in flat
+    assert "p_value in reported [D4]" in flat
     assert "explanation: a decimal point moved one place" in flat
     assert "could not be checked:" in flat
     assert "row 6: design 'nonsense' is not one of" in flat

@@ -1,0 +1,280 @@
+"""What to ask about each row: the cheapest sets of numbers that open it, tighten it or free it from an assumption.
+
+A set is offered only when it does what is promised whatever the answer is, and when no part of it would do. Sets are
+ranked by how readily they are to be had, then by how many numbers they are, then by what they still leave to an
+assumption, then by how much rounding would leave.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import dataclass
+from enum import Enum
+from functools import lru_cache
+from itertools import combinations
+
+import numpy as np
+from numpy.typing import NDArray
+
+from extractor.catalogue.relation import Grade, catalogue
+from extractor.choice import NOTHING, STANDARDIZED, Chosen, grade_of
+from extractor.conversion import Conversion
+from extractor.evidence import Block, fractional_df
+from extractor.sampling.precision import limits_of, standardizer_of, variance_of
+from extractor.situation import GROUPED, Situation, Wanted, World, askable_in, worlds
+from extractor.study.terms import factors_of, terms_per_row
+from extractor.table import BoolArray, ReportedTable
+from extractor.typical import width_left
+from extractor.unlock import EASE, Ease, any_point, graph, no_assumption, smallest_sets
+
+_CANDIDATES = 24
+_CLASSICAL = frozenset({"f_value", "t_value", "p_value", "df_effect", "df_error"})
+
+
+class Aim(Enum):
+    """What an answer would do for a row."""
+
+    OPENS = "opens"
+    TIGHTENS = "tightens"
+    FREES = "frees from an assumption"
+    COMPLETES = "adds the variance"
+
+
+@dataclass(frozen=True, slots=True)
+class Offer:
+    """One set of quantities to ask for.
+
+    assuming : whether the effect would still rest on something nobody reported.
+    rounding : width that rounding would leave in a typical study, as a share of the effect.
+    also : what the sampling variance would need beyond the set.
+    """
+
+    aim: Aim
+    asked: frozenset[str]
+    assuming: bool
+    rounding: float
+    also: frozenset[str]
+
+    @property
+    def ease(self) -> Ease:
+        """How readily the hardest of the numbers is to be had."""
+        return max(EASE[name] for name in self.asked)
+
+
+@dataclass(frozen=True, slots=True)
+class Asked:
+    """Rows of one block to which the same offers apply; ``positions`` into the table, shape (rows,)."""
+
+    positions: NDArray[np.intp]
+    block: Block
+    aim: Aim
+    offers: tuple[Offer, ...]
+
+
+def questions(
+    conversion: Conversion, *, method: str | None = None, standardizer: str = "", most: int = 6
+) -> list[Asked]:
+    """Offers for every row that is blocked, bounded, rests on an assumption or lacks its variance.
+
+    Parameters
+    ----------
+    method, standardizer : as the conversion was made with.
+    most : offers per row.
+
+    Returns
+    -------
+    Groups of rows with equal offers; rows for which nothing can be asked are in a group without offers.
+    """
+    table = conversion.evidence.table
+    said = _Said(table)
+    found: list[Asked] = []
+    for chosen in conversion.chosen:
+        for rows, index in _same_route(chosen):
+            for aim, needs in _aims(chosen, index, method):
+                wanted = Wanted(conversion.metric, standardizer, needs)
+                for part in said.alike(chosen.block, rows):
+                    situation = said.situation(chosen, part, index)
+                    offers = _offers(situation, wanted, aim)[:most]
+                    found.append(Asked(chosen.block.positions[part], chosen.block, aim, offers))
+    return found
+
+
+def _same_route(chosen: Chosen) -> Iterator[tuple[NDArray[np.intp], int]]:
+    """Rows of a block by the route that was chosen for them, those with a point and those with a bound apart."""
+    for index in np.unique(chosen.which):
+        for pointed in (True, False):
+            rows = np.flatnonzero((chosen.which == index) & (chosen.pointed == pointed))
+            if len(rows):
+                yield rows, int(index)
+
+
+def _aims(chosen: Chosen, index: int, method: str | None) -> Iterator[tuple[Aim, frozenset[str]]]:
+    """What the rows of one route lack, and what their variance needs."""
+    if index == NOTHING:
+        yield Aim.OPENS, frozenset()
+        return
+    route, supported = chosen.routes[index], chosen.precisions.get(index)
+    if supported is None:
+        yield Aim.TIGHTENS, frozenset()
+        return
+    needs = _variance_needs(chosen.metric, chosen.block.design, route.standardizer, method)
+    if grade_of((route, *supported.further)) is Grade.ASSUMPTION:
+        yield Aim.FREES, needs - frozenset(supported.missing)
+    if supported.missing:
+        yield Aim.COMPLETES, needs
+
+
+def _variance_needs(metric: str, design: str, standardizer: str, method: str | None) -> frozenset[str]:
+    named = standardizer_of(standardizer, design) if metric in STANDARDIZED else "pooled"
+    ways = variance_of(metric, method, design, named), limits_of(metric, design, named)
+    return frozenset(need for way in ways if way for need in way.needs) - {metric}
+
+
+class _Said:
+    """Facts of the rows, beyond their blocks, on which it depends what can be asked; arrays of shape (rows,)."""
+
+    def __init__(self, table: ReportedTable) -> None:
+        design = table.fact("design")
+        several = terms_per_row(table, design) > 1
+        terms = table.fact("term").astype(str)
+        joint = np.isin(terms, [t for t in set(terms) if len(factors_of(t)) > 1])
+        self.modelled: BoolArray = several
+        self.ungrouped: BoolArray = (design == "within") & (several | joint)
+        self.fractional = fractional_df(table)
+        self.compared: BoolArray = np.asarray(table.fact("contrast") != "none")
+
+    def alike(self, block: Block, rows: NDArray[np.intp]) -> Iterator[NDArray[np.intp]]:
+        """The rows of a block, split by these facts."""
+        at = block.positions[rows]
+        keys = np.column_stack(
+            [
+                self.modelled[at],
+                self.ungrouped[at],
+                self.fractional[at],
+                self.compared[at],
+                _one_df(block)[rows],
+            ]
+        )
+        _, inverse = np.unique(keys, axis=0, return_inverse=True)
+        for code in range(int(inverse.max()) + 1):
+            yield rows[inverse.ravel() == code]
+
+    def situation(self, chosen: Chosen, rows: NDArray[np.intp], index: int) -> Situation:
+        """What rows that are alike know."""
+        block, first = chosen.block, rows[0]
+        at = block.positions[first]
+        askable = askable_in(block.design)
+        if self.ungrouped[at]:
+            askable -= GROUPED
+        if self.fractional[at]:
+            corrected = block.design in ("within", "mixed")
+            askable -= {"df_effect", "df_error"} if corrected else _CLASSICAL
+        one = int(_one_df(block)[first])
+        return Situation(
+            design=block.design,
+            groups=block.groups,
+            start=block.start,
+            askable=askable,
+            without=_sterile(chosen, rows) if index == NOTHING else frozenset(),
+            counted=block.groups > 0 or bool({"df_effect", "k_groups"} & block.leaves.keys()),
+            compared=bool(self.compared[at]),
+            one_df=None if one < 0 else bool(one),
+            modelled=bool(self.modelled[at]),
+        )
+
+
+def _one_df(block: Block) -> NDArray[np.int64]:
+    """Whether the effect has one df: 1, 0, or -1 where it is not coded."""
+    df = block.leaves.get("df_effect")
+    if df is None:
+        return np.full(len(block.positions), -1)
+    return np.asarray(np.where(np.isnan(df.value), -1, df.value == 1), dtype=np.int64)
+
+
+def _sterile(chosen: Chosen, rows: NDArray[np.intp]) -> frozenset[str]:
+    """Relations that give these rows no value although all their inputs have one."""
+    found: set[str] = set()
+    for route in chosen.routes:
+        steps = chosen.engine.all_steps(route)
+        valued = {name: np.isfinite(e.value[rows]).all() for name, e in steps.items()}
+        for quantity, relation in route.steps.items():
+            if not valued[quantity] and all(valued[need] for need in catalogue()[relation].needs):
+                found.add(relation)
+    return frozenset(found)
+
+
+@lru_cache(maxsize=4096)
+def _offers(situation: Situation, wanted: Wanted, aim: Aim) -> tuple[Offer, ...]:
+    offers = [
+        Offer(aim, asked, *_afterwards(situation, wanted, asked)) for asked in _sets(situation, wanted, aim)
+    ]
+    groups = situation.groups or (2 if situation.design != "one-way" else 3)
+
+    def cost(offer: Offer) -> tuple[Ease, int, bool, float, list[str]]:
+        numbers = sum(groups if name in GROUPED else 1 for name in offer.asked)
+        return offer.ease, numbers, offer.assuming, offer.rounding, sorted(offer.asked)
+
+    return tuple(sorted(offers, key=cost))
+
+
+def _sets(situation: Situation, wanted: Wanted, aim: Aim) -> list[frozenset[str]]:
+    """Sets that surely do what is wanted, no part of which possibly does."""
+
+    def does(asked: frozenset[str], surely: bool) -> bool:
+        each = (_does(world, wanted, aim, surely) for world in worlds(situation, asked))
+        return all(each) if surely else any(each)
+
+    if does(frozenset(), False):
+        return []
+    kept = []
+    for asked in _candidates(situation, wanted, aim):
+        parts = (frozenset(p) for size in range(1, len(asked)) for p in combinations(sorted(asked), size))
+        if does(asked, True) and not any(does(part, False) for part in parts):
+            kept.append(asked)
+    return kept
+
+
+def _does(world: World, wanted: Wanted, aim: Aim, surely: bool) -> bool:
+    if aim in (Aim.OPENS, Aim.TIGHTENS):
+        return wanted.pointed(world, surely=surely)
+    return wanted.free(world) if aim is Aim.FREES else wanted.complete(world)
+
+
+def _candidates(situation: Situation, wanted: Wanted, aim: Aim) -> list[frozenset[str]]:
+    """Smallest sets in each way the rows may turn out, along routes with and without assumptions."""
+    goals = frozenset([wanted.metric]) | (wanted.needs if aim in (Aim.FREES, Aim.COMPLETES) else frozenset())
+    grouped = situation.askable & GROUPED
+    found: dict[frozenset[str], None] = {}
+    designs = {world.design: None for world in worlds(situation, grouped | {"df_effect"})}
+    for design in designs:
+        for assuming in (False, True) if aim is not Aim.FREES else (False,):
+            start = situation.start
+            known = start.known | (start.assumed if assuming else frozenset())
+            if situation.compared:
+                known |= {"contrast_weight"}
+            allowed = any_point if assuming else no_assumption
+            for standardizer in {wanted.standardizer: None} if wanted.standardizer else ("", None):
+                relations = graph(design, allowed, situation.without, standardizer)
+                # k comes with the groups, so that sets are sought with and without it
+                for given in (known, known | {"k_groups"}) if grouped else (known,):
+                    sets = smallest_sets(given, situation.askable, relations, goals, _CANDIDATES)
+                    found |= dict.fromkeys(sets)
+    return sorted(found, key=lambda s: (max(EASE[q] for q in s), len(s), sorted(s)))
+
+
+def _afterwards(
+    situation: Situation, wanted: Wanted, asked: frozenset[str]
+) -> tuple[bool, float, frozenset[str]]:
+    """Whether an assumption stays, the rounding that would be left, and what the variance would still need."""
+    after = list(worlds(situation, asked))
+    assuming = not all(Wanted(wanted.metric, wanted.standardizer).free(world) for world in after)
+    rounding = width_left(situation.design, after[0].points, wanted.metric)
+    return assuming, rounding, _also(after[0], wanted, situation)
+
+
+def _also(world: World, wanted: Wanted, situation: Situation) -> frozenset[str]:
+    """The cheapest set that the sampling variance would need in addition."""
+    needs = wanted.needs or _variance_needs(wanted.metric, world.design, wanted.standardizer, None)
+    relations = graph(world.design, any_point, world.without, None)
+    sets = smallest_sets(world.points, situation.askable, relations, needs | {wanted.metric}, 1)
+    return sets[0] if sets else frozenset()

@@ -1,0 +1,181 @@
+"""What a group of rows knows, and what it would know once certain quantities were filled in.
+
+Filling a cell can change more than that cell: a first group mean brings the contrast and the number of groups, a t
+beside a p value makes the p value the contrast's, an F makes its p value two-tailed, and a one-way row may turn out to
+have two groups. What is not known beforehand gives several worlds; a promise must hold in all of them.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import dataclass, replace
+from functools import lru_cache
+
+from extractor.planner import Start
+from extractor.quantities import VOCABULARY, Shape
+from extractor.unlock import EASE, any_point, follows, graph, no_assumption
+
+GROUPED = frozenset(name for name, quantity in VOCABULARY.items() if quantity.shape is Shape.GROUP)
+_OF_TERMS = frozenset(
+    {
+        "df_others",
+        "explained_by_others",
+        "ss_others",
+        "ss_measured",
+        "explained_by_measured",
+        "ss_strata",
+    }
+)
+"""Sums over the other rows of a model, which may exist as soon as the row itself is filled."""
+_OWN_TERM = frozenset({"f_value", "df_effect", "ss_effect", "ss_error", "ss_subjects"})
+_ONE_DF = frozenset({"factorial", "mixed", "ancova", "pre-post-control"})
+"""Designs in which a direction makes F a t only where F has one numerator df."""
+
+
+@dataclass(frozen=True, slots=True)
+class Situation:
+    """Rows that know the same and can be asked the same.
+
+    groups : groups coded. start : what their routes may start from. askable : what can be asked.
+    without : names of relations that give these rows no value.
+    counted : whether the number of groups follows from what is coded. compared : whether groups bring a contrast.
+    one_df : whether F has one numerator df; None where that is not known.
+    modelled : whether the row is a term of a model with several rows.
+    """
+
+    design: str
+    groups: int
+    start: Start
+    askable: frozenset[str]
+    without: frozenset[str] = frozenset()
+    counted: bool = True
+    compared: bool = True
+    one_df: bool | None = None
+    modelled: bool = False
+
+
+@dataclass(frozen=True, slots=True)
+class World:
+    """One way the rows may turn out to be once the asked quantities are there."""
+
+    design: str
+    start: Start
+    without: frozenset[str]
+
+    @property
+    def points(self) -> frozenset[str]:
+        """Everything with a value, assumed ones included."""
+        return self.start.known | self.start.assumed
+
+
+def worlds(situation: Situation, asked: frozenset[str]) -> Iterator[World]:
+    """The worlds in which the asked quantities have been filled in with values nobody knows yet."""
+    start = situation.start
+    known, bounds = start.known | asked, start.bounds - asked
+    coded = situation.groups >= 2 or bool(asked & GROUPED)
+    if coded and situation.compared:
+        known |= {"contrast_weight"}
+    unknown_df = situation.one_df is None and "df_effect" in asked and situation.design in _ONE_DF
+    for design in _designs(situation, asked):
+        mine = _read(design, known, bounds)
+        if design in ("two-group", "paired", "pre-post-control") or (
+            coded and design in ("one-way", "within", "ancova")
+        ):
+            mine |= {"k_groups"}
+        signless = situation.one_df is False and design in _ONE_DF
+        for direction in (False, True) if unknown_df else (not signless,):
+            have = mine if direction else mine - {"direction"}
+            world = World(design, replace(start, known=have, bounds=bounds - have), situation.without)
+            yield world
+            if situation.modelled and asked & _OWN_TERM:
+                yield replace(world, start=replace(world.start, known=have | _OF_TERMS))
+
+
+def _designs(situation: Situation, asked: frozenset[str]) -> tuple[str, ...]:
+    grouped = bool(asked & GROUPED)
+    if (
+        situation.design == "one-way"
+        and not situation.counted
+        and (grouped or asked & {"k_groups", "df_effect"})
+    ):
+        return ("one-way", "two-group")
+    if situation.design == "one-way-partial" and situation.groups < 2 and grouped:
+        return ("one-way-partial", "one-way", "two-group")
+    return (situation.design,)
+
+
+def _read(design: str, known: frozenset[str], bounds: frozenset[str]) -> frozenset[str]:
+    """How a p value is read beside the other statistics of a row."""
+    if design.startswith("one-way") and "t_value" in known and known & {"p_value", "p_contrast"}:
+        known -= {"p_value", "p_contrast"}
+        if "f_value" not in known:
+            known |= {"p_contrast"}
+    if "p_value" in known | bounds and (
+        design not in ("two-group", "paired") or known & {"f_value", "df_effect"}
+    ):
+        known |= {"tails"}
+    return known
+
+
+@lru_cache(maxsize=1 << 15)
+def _derived(world: World, assuming: bool, standardizer: str | None) -> frozenset[str]:
+    """What follows as a point; without ``assuming`` from nothing that nobody reported."""
+    start = world.start
+    relations = graph(world.design, any_point if assuming else no_assumption, world.without, standardizer)
+    return frozenset(follows(world.points if assuming else start.known, relations))
+
+
+@lru_cache(maxsize=1 << 15)
+def _bounded(world: World, assuming: bool, standardizer: str | None) -> frozenset[str]:
+    """What follows when bounds are taken as well."""
+    relations = graph(world.design, any_point if assuming else no_assumption, world.without, standardizer)
+    known = world.points if assuming else world.start.known
+    return frozenset(follows(known | world.start.bounds, relations))
+
+
+@dataclass(frozen=True, slots=True)
+class Wanted:
+    """What the rows are to give: a metric, over a named standardizer or ("") the design's usual one first.
+
+    needs : quantities that the sampling variance needs as well.
+    """
+
+    metric: str
+    standardizer: str = ""
+    needs: frozenset[str] = frozenset()
+
+    def preferred(self, world: World) -> str | None:
+        """The standardizer of the route that will be chosen; None for whichever can be had."""
+        if self.standardizer:
+            return self.standardizer
+        return "" if self.metric in _bounded(world, True, "") else None
+
+    def pointed(self, world: World, *, surely: bool) -> bool:
+        """Whether the metric gets a point: a route without assumptions wins, a bound without them comes next."""
+        preferred = self.preferred(world)
+        if self.metric in _derived(world, False, preferred):
+            return True
+        if self.metric not in _derived(world, True, preferred):
+            return False
+        return not world.start.bounds if surely else self.metric not in _bounded(world, False, preferred)
+
+    def free(self, world: World) -> bool:
+        """Whether metric and variance rest on nothing that nobody reported."""
+        derived = _derived(world, False, self.preferred(world))
+        return self.metric in derived and self.needs <= _derived(world, False, None) | derived
+
+    def complete(self, world: World) -> bool:
+        """Whether metric and variance can be had."""
+        derived = _derived(world, True, self.preferred(world))
+        return self.metric in derived and self.needs <= _derived(world, True, None) | derived
+
+
+def askable_in(design: str) -> frozenset[str]:
+    """What can be asked about a row of a design; a number that stands for several is asked once."""
+    none = set() if design == "two-group" else {"count_a", "count_b", "count_c", "count_d"}
+    if design in ("paired", "within"):
+        # every condition has all participants
+        none |= {"n"}
+    if design != "paired":
+        none |= {"sd_difference"}
+    return frozenset(EASE) - none
