@@ -82,7 +82,7 @@ def cohens_kappa(codes: Codes, level: float = 0.95) -> Coefficient:
     share -= float((cross * share).sum())
     variance = float((cross * share**2).sum()) / (len(both) * (1 - chance) ** 4)
     half = float(stats.norm.ppf((1 + level) / 2)) * math.sqrt(variance)
-    return Coefficient(kappa, kappa - half, min(kappa + half, 1.0))
+    return _limited(kappa, half)
 
 
 def fleiss_kappa(counts: FloatArray, level: float = 0.95) -> Coefficient:
@@ -230,4 +230,9 @@ def _corrected(agreeing: FloatArray, chance: float, moved: FloatArray, level: fl
         return Coefficient(value)
     shares = (agreeing - observed) / (1 - chance) - (1 - value) * moved / (1 - chance)
     half = float(stats.t.ppf((1 + level) / 2, n - 1)) * math.sqrt(float((shares**2).sum()) / (n * (n - 1)))
-    return Coefficient(value, value - half, min(value + half, 1.0))
+    return _limited(value, half)
+
+
+def _limited(value: float, half: float) -> Coefficient:
+    """Limits at a distance, cut where no coefficient can be."""
+    return Coefficient(value, max(value - half, -1.0), min(value + half, 1.0))

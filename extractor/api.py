@@ -10,11 +10,22 @@ import pandas as pd
 
 from extractor.audit.run import Audit, audit_evidence
 from extractor.codebook import Codebook, default_codebook, load_codebook
-from extractor.conversion import Conversion, check_method, check_metric, check_standardizer, convert_evidence
+from extractor.conversion import (
+    Conversion,
+    check_method,
+    check_metric,
+    check_standardizer,
+    convert_evidence,
+)
+from extractor.decisions import Decision, apply_decisions, mark, read_decisions
 from extractor.derivations import alternatives_frame, steps_frame
 from extractor.evidence import Evidence, gather
+from extractor.findings import Finding
 from extractor.groups_sheet import with_groups
 from extractor.sheet import read_table
+from extractor.table import ReportedTable
+
+Source = str | Path | pd.DataFrame
 
 
 @dataclass(frozen=True)
@@ -50,15 +61,38 @@ class Result:
         return alternatives_frame(self.conversion)
 
 
+@dataclass(frozen=True)
+class Reading:
+    """A sheet, read and ready for work.
+
+    table : as coded. evidence : with the coder's corrections applied. notes : what the decisions changed.
+    """
+
+    table: ReportedTable
+    evidence: Evidence
+    decisions: list[Decision]
+    codebook: Codebook
+    notes: list[str]
+
+    def review(self, findings: list[Finding]) -> list[Finding]:
+        """Findings with the coder's decisions on them."""
+        return mark(findings, self.decisions, self.table, self.codebook)
+
+    def audit(self, conversion: Conversion | None = None) -> Audit:
+        """Every check over every row, the decisions honoured."""
+        return audit_evidence(self.evidence, conversion, self.review)
+
+
 def convert(
-    source: str | Path | pd.DataFrame,
+    source: Source,
     to: str,
     codebook: str | Path | Codebook | None = None,
     *,
     variance: str | None = None,
     level: float = 0.95,
     standardizer: str = "",
-    groups: str | Path | pd.DataFrame | None = None,
+    groups: Source | None = None,
+    decisions: str | Path | None = None,
 ) -> Result:
     """Turn a coded sheet into effects of one metric.
 
@@ -69,8 +103,8 @@ def convert(
     codebook : the name of a ready codebook, a TOML file, or nothing where headings are quantity names.
     variance : "exact" or "large-sample"; by default each metric's preferred one.
     level : confidence level of the limits, as a proportion.
-    groups : the lines of the sheet ``groups``, where they stand in a file or frame of their own.
     standardizer : for d and g, the only one to accept; by default each design's usual one.
+    groups, decisions : where the sheets of those names stand in files of their own.
 
     Raises
     ------
@@ -80,31 +114,43 @@ def convert(
     check_metric(to)
     check_method(to, variance)
     check_standardizer(standardizer)
-    evidence = read_evidence(source, codebook, groups)
-    conversion = convert_evidence(evidence, to, method=variance, level=level, standardizer=standardizer)
-    return Result(conversion, audit_evidence(evidence, conversion))
+    reading = read(source, codebook, groups=groups, decisions=decisions)
+    conversion = convert_evidence(
+        reading.evidence, to, method=variance, level=level, standardizer=standardizer
+    )
+    return Result(conversion, reading.audit(conversion))
 
 
 def audit_sheet(
-    source: str | Path | pd.DataFrame,
+    source: Source,
     codebook: str | Path | Codebook | None = None,
     *,
-    groups: str | Path | pd.DataFrame | None = None,
+    groups: Source | None = None,
+    decisions: str | Path | None = None,
 ) -> Audit:
-    """Ask of every row whether its printed numbers can all be true; raises as ``convert`` does."""
-    return audit_evidence(read_evidence(source, codebook, groups), None)
+    """Ask of every row whether its printed numbers can all be true; parameters and errors as for ``convert``."""
+    return read(source, codebook, groups=groups, decisions=decisions).audit()
 
 
-def read_evidence(
-    source: str | Path | pd.DataFrame,
+def read(
+    source: Source,
     codebook: str | Path | Codebook | None = None,
-    groups: str | Path | pd.DataFrame | None = None,
-) -> Evidence:
-    """Read a sheet, with the lines of its groups sheet, and arrange it for computing."""
+    *,
+    groups: Source | None = None,
+    decisions: str | Path | None = None,
+) -> Reading:
+    """Read a sheet with its groups and decisions and arrange it for computing; parameters as for ``convert``."""
     if codebook is None:
         book = default_codebook()
     elif isinstance(codebook, Codebook):
         book = codebook
     else:
         book = load_codebook(codebook)
-    return gather(with_groups(read_table(source, book), source, book, groups))
+    table = with_groups(read_table(source, book), source, book, groups)
+    decided: list[Decision] = []
+    if decisions is not None:
+        decided = read_decisions(decisions)
+    elif not isinstance(source, pd.DataFrame) and str(source) != "-" and str(source).endswith((".xlsx", ".xlsm")):
+        decided = read_decisions(source)
+    corrected, notes = apply_decisions(table, decided, book)
+    return Reading(table, gather(corrected), decided, book, notes)

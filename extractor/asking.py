@@ -1,4 +1,4 @@
-"""The questions about a sheet as tables: per row what to ask and where the answer goes, and which question does most."""
+"""The questions about a sheet as tables: what to ask about each row and where it goes, and which one does most."""
 
 from __future__ import annotations
 

@@ -13,7 +13,7 @@ from extractor.catalogue.relation import FloatArray, Grade, Interval, catalogue
 from extractor.engine import Engine, Estimate
 from extractor.evidence import Block
 from extractor.planner import Route, search
-from extractor.sampling.precision import Precision, limits_of, standardizer_of, variance_of
+from extractor.sampling.precision import Precision, limits_of, standardizer_of, variances_of
 
 NOTHING = -1
 STANDARDIZED = ("cohens_d", "hedges_g")
@@ -106,9 +106,10 @@ def support(chosen: Chosen, method: str | None, level: float) -> None:
         standardizer = (
             standardizer_of(route.standardizer, design) if chosen.metric in STANDARDIZED else "pooled"
         )
-        variance = variance_of(chosen.metric, method, design, standardizer)
-        limits = limits_of(chosen.metric, design, standardizer)
         steps = chosen.engine.all_steps(route)
+        known = {*steps, *(q for q, found in reachable.items() if any(r.grade is not Grade.BOUND for r in found))}
+        variance = _first_served(variances_of(chosen.metric, method, design, standardizer), known)
+        limits = _first_served(limits_of(chosen.metric, design, standardizer), known)
         further: dict[str, Route] = {}
         inputs: dict[str, FloatArray] = {}
         wanted = (*(variance.needs if variance else ()), *(limits.needs if limits else ()), *CLUSTER)
@@ -121,6 +122,11 @@ def support(chosen: Chosen, method: str | None, level: float) -> None:
                 further[need] = options[0]
                 inputs[need] = chosen.engine.run(options[0]).value[rows]
         chosen.precisions[int(index)] = _supported(variance, limits, inputs, further, int(rows.sum()), level)
+
+
+def _first_served(options: list[Precision], known: set[str]) -> Precision | None:
+    """The first whose needs are all known, else the first."""
+    return next((p for p in options if known.issuperset(p.needs)), next(iter(options), None))
 
 
 def _supported(

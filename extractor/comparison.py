@@ -7,7 +7,8 @@ statement, too: it disagrees with a number or a word, and rows that all coders l
 from __future__ import annotations
 
 from collections.abc import Callable, Collection, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
+from string import ascii_uppercase
 
 import numpy as np
 import pandas as pd
@@ -22,7 +23,7 @@ from extractor.reported import read_number
 from extractor.stack import Stack
 from extractor.table import BoolArray, ObjectArray, ReportedTable, Variable
 
-NUMBER, WORDS, LABEL = "number", "words", "label"
+NUMBER, WORDS, LABEL, EFFECT = "number", "words", "label", "effect"
 _NOT_COMPARED = ("study", "quote", "coder", "reported")
 _FREE_TEXT = 0.5
 _FEW = 10
@@ -48,11 +49,6 @@ class Column:
     apart: BoolArray
     blank: BoolArray
     words: tuple[str, ...] = ()
-
-    @property
-    def shared(self) -> bool:
-        """Whether the effect can depend on it."""
-        return self.variable is not None and self.kind != LABEL
 
 
 def columns_of(
@@ -95,6 +91,16 @@ def _numbers(
     reference = Printed(said.kind[here], said.value[here], said.low[here], said.high[here])
     apart = (rows != ABSENT) & ~alike(said, reference, tolerance)
     return Column(name, NUMBER, variable, said, None, apart, said.kind <= 0)
+
+
+def effect_column(metric: str, effects: pd.DataFrame, rows: NDArray[np.intp]) -> Column:
+    """The effects of all coders as a variable: they agree where their rounding envelopes overlap."""
+    value, low, high = (
+        effects[name].to_numpy(dtype=float) for name in ("estimate", "estimate_low", "estimate_high")
+    )
+    ends = (np.where(np.isnan(end), value, end) for end in (low, high))
+    column = _numbers(metric, None, Printed(np.isfinite(value).astype(np.int64), value, *ends), rows, 0.0)
+    return replace(column, kind=EFFECT)
 
 
 def _words(
@@ -162,9 +168,12 @@ def _one_name(
         named[mine] = [
             names.get((s, w), w) for s, w in zip(study[mine].tolist(), words[mine].tolist(), strict=True)
         ]
-        notes.append(
-            f"{len(renamed)} analyses have another name with coder {coder + 1} and hold the same rows: no dispute"
+        many = (
+            "1 analysis has another name"
+            if len(renamed) == 1
+            else f"{len(renamed)} analyses have other names"
         )
+        notes.append(f"{many} with coder {ascii_uppercase[coder]} and the same rows: no dispute")
     return named.astype(np.str_), notes
 
 

@@ -22,6 +22,9 @@ from extractor.study.terms import factors_of, sums_over_terms, terms_per_row
 from extractor.table import Assumption, BoolArray, FloatArray, Numbers, ObjectArray, ReportedTable, Variable
 
 _CLASSICAL_STATISTICS = ("f_value", "t_value", "p_value", "df_error", "df", "df_effect")
+_OTHER_TESTS = ("h_value", "u_value", "z_value", "chi_squared", "rank_sum", "signed_rank_sum")
+"""Statistics beside which a p value may be theirs, not that of F or t."""
+
 _CORRECTABLE = ("within", "mixed")
 """Designs in which a sphericity correction makes both df fractional and leaves F as it is."""
 
@@ -182,6 +185,11 @@ class _Gathering:
             keep = ~fractional | (correctable & ~np.isin(name, ("df_effect", "df_error")))
             if (name, None) in self.use:
                 self.use[name, None] = self.use[name, None] & keep
+        other = np.logical_or.reduce([self.given(name) for name in _OTHER_TESTS])
+        for name, own in (("p_value", np.zeros(self.rows, dtype=bool)), ("df", self.given("t_value"))):
+            if (name, None) in self.use:
+                self.coding.remark(other & ~own & self.use[name, None], f"{name} beside another test is not used")
+                self.use[name, None] = self.use[name, None] & (own | ~other)
         self.corrected = fractional & correctable
         self.coding.remark(
             fractional & ~correctable, "the df are not whole: its test is not the classical one"

@@ -35,6 +35,8 @@ def image(relation: Relation, inputs: dict[str, Interval], current: Interval | N
             known = inputs[name][0] == inputs[name][1]
             if known.ndim > low.ndim:
                 known = known.all(axis=-1)
+            elif known.ndim < low.ndim:
+                known = known[:, None]
             low = np.where(known, low, -np.inf)
             high = np.where(known, high, np.inf)
         return _padded(relation, low, high)

@@ -28,7 +28,7 @@ KEYS = ("study", "outcome", "effect", "analysis", "term", "contrast")
 """Labels that say which effect a row is about."""
 
 ABSENT = -1
-_FROM_CODEBOOK = "from the codebook"
+FROM_CODEBOOK = "from the codebook"
 _SHARED = frozenset({"ms_error", "ss_error", "ss_total", "ss_subjects"})
 """Numbers that all rows of a model have in common, so that they tell no row from another."""
 _MOST_PAIRS = 4_000_000
@@ -82,7 +82,7 @@ def printed(given: Stack, variable: Variable) -> Printed:
     ).astype(np.int64)
     odd = ~numbers.given & (numbers.problem != "")
     kind[odd] = [10 + crc32(str(text).encode()) for text in numbers.problem[odd]]
-    kind[numbers.understood == _FROM_CODEBOOK] = _BLANK
+    kind[numbers.understood == FROM_CODEBOOK] = _BLANK
     return Printed(kind, numbers.value, numbers.low, numbers.high)
 
 

@@ -183,9 +183,9 @@ _OTHER = [
     _scalar("h_value", "H", "Kruskal-Wallis H", 0.0),
     _scalar("u_value", "U", "Mann-Whitney U", 0.0),
     _scalar("z_value", "z", "normal deviate of a test"),
-    _scalar("chi_squared", "χ²", "chi-square statistic", 0.0),
+    _scalar("chi_squared", "χ²", "chi-square statistic of a 2 x 2 table, one df, without continuity correction", 0.0),
     _scalar("homogeneity_p", "p_hom", "p value of a test of equal variances", 0.0, 1.0),
-    *(_count(f"count_{cell}", cell, f"cell {cell} of a 2 x 2 table") for cell in "abcd"),
+    *(_count(f"count_{cell}", cell, f"cell {cell} of a 2 x 2 table: a, b group 1 with and without the event; c, d group 2") for cell in "abcd"),
     _scalar("rank_sum", "W", "sum of the ranks of group 1 (Wilcoxon)", 0.0),
     _scalar("signed_rank_sum", "T", "smaller sum of the signed ranks of pairs (Wilcoxon)", 0.0),
     _scalar("rank_eta_squared", "η²_ranks", "eta squared of the ranks, H / (N - 1)", 0.0, 1.0),
@@ -367,6 +367,7 @@ class Default:
 
 DEFAULTS: dict[str, Default] = {
     "tails": Default(2.0, "Extractor's default: p values are two-tailed"),
+    "significance_level": Default(0.05, "Extractor's default: comparisons at the 5 % level"),
     "confidence_level": Default(0.95, "Extractor's default: confidence limits are at 95 %"),
 }
 

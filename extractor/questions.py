@@ -16,18 +16,18 @@ from itertools import combinations
 import numpy as np
 from numpy.typing import NDArray
 
-from extractor.catalogue.relation import Grade, catalogue
+from extractor.catalogue.relation import Grade, Relation, catalogue
 from extractor.choice import NOTHING, STANDARDIZED, Chosen, grade_of
 from extractor.conversion import Conversion
 from extractor.evidence import Block, fractional_df
-from extractor.sampling.precision import limits_of, standardizer_of, variance_of
+from extractor.sampling.precision import limits_of, standardizer_of, variances_of
 from extractor.situation import GROUPED, Situation, Wanted, World, askable_in, worlds
 from extractor.study.terms import factors_of, terms_per_row
 from extractor.table import BoolArray, ReportedTable
 from extractor.typical import width_left
-from extractor.unlock import EASE, Ease, any_point, graph, no_assumption, smallest_sets
+from extractor.unlock import EASE, Ease, any_point, follows, graph, no_assumption, smallest_sets
 
-_CANDIDATES = 24
+_CANDIDATES = 16
 _CLASSICAL = frozenset({"f_value", "t_value", "p_value", "df_effect", "df_error"})
 
 
@@ -94,7 +94,7 @@ def questions(
                 wanted = Wanted(conversion.metric, standardizer, needs)
                 for part in said.alike(chosen.block, rows):
                     situation = said.situation(chosen, part, index)
-                    offers = _offers(situation, wanted, aim)[:most]
+                    offers = _offers(situation, wanted, aim, most)
                     found.append(Asked(chosen.block.positions[part], chosen.block, aim, offers))
     return found
 
@@ -126,8 +126,8 @@ def _aims(chosen: Chosen, index: int, method: str | None) -> Iterator[tuple[Aim,
 
 def _variance_needs(metric: str, design: str, standardizer: str, method: str | None) -> frozenset[str]:
     named = standardizer_of(standardizer, design) if metric in STANDARDIZED else "pooled"
-    ways = variance_of(metric, method, design, named), limits_of(metric, design, named)
-    return frozenset(need for way in ways if way for need in way.needs) - {metric}
+    ways = variances_of(metric, method, design, named)[:1] + limits_of(metric, design, named)[:1]
+    return frozenset(need for way in ways for need in way.needs) - {metric}
 
 
 class _Said:
@@ -176,7 +176,7 @@ class _Said:
             start=block.start,
             askable=askable,
             without=_sterile(chosen, rows) if index == NOTHING else frozenset(),
-            counted=block.groups > 0 or bool({"df_effect", "k_groups"} & block.leaves.keys()),
+            counted=block.groups > 1 or bool({"df_effect", "k_groups"} & block.leaves.keys()),
             compared=bool(self.compared[at]),
             one_df=None if one < 0 else bool(one),
             modelled=bool(self.modelled[at]),
@@ -204,17 +204,17 @@ def _sterile(chosen: Chosen, rows: NDArray[np.intp]) -> frozenset[str]:
 
 
 @lru_cache(maxsize=4096)
-def _offers(situation: Situation, wanted: Wanted, aim: Aim) -> tuple[Offer, ...]:
-    offers = [
-        Offer(aim, asked, *_afterwards(situation, wanted, asked)) for asked in _sets(situation, wanted, aim)
-    ]
+def _offers(situation: Situation, wanted: Wanted, aim: Aim, most: int) -> tuple[Offer, ...]:
     groups = situation.groups or (2 if situation.design != "one-way" else 3)
 
-    def cost(offer: Offer) -> tuple[Ease, int, bool, float, list[str]]:
-        numbers = sum(groups if name in GROUPED else 1 for name in offer.asked)
-        return offer.ease, numbers, offer.assuming, offer.rounding, sorted(offer.asked)
+    def cost(asked: frozenset[str]) -> tuple[Ease, int, bool, list[str]]:
+        numbers = sum(groups if name in GROUPED else 1 for name in asked)
+        return max(EASE[name] for name in asked), numbers, _assuming(situation, wanted, asked), sorted(asked)
 
-    return tuple(sorted(offers, key=cost))
+    sets = sorted(_sets(situation, wanted, aim), key=cost)[: 2 * most]
+    offers = [Offer(aim, asked, cost(asked)[2], *_left(situation, wanted, asked)) for asked in sets]
+    # rounding decides between sets that cost the same
+    return tuple(sorted(offers, key=lambda o: (*cost(o.asked)[:3], o.rounding, sorted(o.asked)))[:most])
 
 
 def _sets(situation: Situation, wanted: Wanted, aim: Aim) -> list[frozenset[str]]:
@@ -228,7 +228,9 @@ def _sets(situation: Situation, wanted: Wanted, aim: Aim) -> list[frozenset[str]
         return []
     kept = []
     for asked in _candidates(situation, wanted, aim):
-        parts = (frozenset(p) for size in range(1, len(asked)) for p in combinations(sorted(asked), size))
+        parts = (
+            frozenset(p) for size in range(len(asked) - 1, 0, -1) for p in combinations(sorted(asked), size)
+        )
         if does(asked, True) and not any(does(part, False) for part in parts):
             kept.append(asked)
     return kept
@@ -241,40 +243,46 @@ def _does(world: World, wanted: Wanted, aim: Aim, surely: bool) -> bool:
 
 
 def _candidates(situation: Situation, wanted: Wanted, aim: Aim) -> list[frozenset[str]]:
-    """Smallest sets in each way the rows may turn out, along routes with and without assumptions."""
+    """Smallest sets in each way the rows may turn out, the easiest first."""
+    start, askable = situation.start, situation.askable
     goals = frozenset([wanted.metric]) | (wanted.needs if aim in (Aim.FREES, Aim.COMPLETES) else frozenset())
-    grouped = situation.askable & GROUPED
-    found: dict[frozenset[str], None] = {}
-    designs = {world.design: None for world in worlds(situation, grouped | {"df_effect"})}
-    for design in designs:
-        for assuming in (False, True) if aim is not Aim.FREES else (False,):
-            start = situation.start
-            known = start.known | (start.assumed if assuming else frozenset())
-            if situation.compared:
-                known |= {"contrast_weight"}
+    ways: dict[tuple[tuple[Relation, ...], frozenset[str]], None] = {}
+    for design in {world.design: None for world in worlds(situation, askable & GROUPED | {"df_effect"})}:
+        for assuming in _ASSUMING[aim] if not start.bounds or aim is Aim.FREES else (True, False):
             allowed = any_point if assuming else no_assumption
-            for standardizer in {wanted.standardizer: None} if wanted.standardizer else ("", None):
-                relations = graph(design, allowed, situation.without, standardizer)
-                # k comes with the groups, so that sets are sought with and without it
-                for given in (known, known | {"k_groups"}) if grouped else (known,):
-                    sets = smallest_sets(given, situation.askable, relations, goals, _CANDIDATES)
-                    found |= dict.fromkeys(sets)
-    return sorted(found, key=lambda s: (max(EASE[q] for q in s), len(s), sorted(s)))
+            known = start.known | (start.assumed if assuming else frozenset())
+            known |= {"contrast_weight"} if situation.compared else set()
+            # k comes with the groups, so that sets are sought with and without it
+            for given in (known, known | {"k_groups"}) if not situation.counted else (known,):
+                for standardizer in (wanted.standardizer,) if wanted.standardizer else ("", None):
+                    ways[graph(design, allowed, situation.without, standardizer), given] = None
+    sets = {s: None for way, given in ways for s in smallest_sets(given, askable, way, goals, _CANDIDATES)}
+    return sorted(sets, key=lambda s: (max(EASE[q] for q in s), len(s), sorted(s)))
 
 
-def _afterwards(
-    situation: Situation, wanted: Wanted, asked: frozenset[str]
-) -> tuple[bool, float, frozenset[str]]:
-    """Whether an assumption stays, the rounding that would be left, and what the variance would still need."""
-    after = list(worlds(situation, asked))
-    assuming = not all(Wanted(wanted.metric, wanted.standardizer).free(world) for world in after)
-    rounding = width_left(situation.design, after[0].points, wanted.metric)
-    return assuming, rounding, _also(after[0], wanted, situation)
+_ASSUMING = {
+    Aim.OPENS: (True,),
+    Aim.TIGHTENS: (True,),
+    Aim.FREES: (False,),
+    Aim.COMPLETES: (True,),
+}
+"""Whether sets are sought along routes that suppose what nobody reported."""
 
 
-def _also(world: World, wanted: Wanted, situation: Situation) -> frozenset[str]:
-    """The cheapest set that the sampling variance would need in addition."""
-    needs = wanted.needs or _variance_needs(wanted.metric, world.design, wanted.standardizer, None)
-    relations = graph(world.design, any_point, world.without, None)
-    sets = smallest_sets(world.points, situation.askable, relations, needs | {wanted.metric}, 1)
-    return sets[0] if sets else frozenset()
+def _assuming(situation: Situation, wanted: Wanted, asked: frozenset[str]) -> bool:
+    """Whether the estimate may still rest on an assumption."""
+    estimate = Wanted(wanted.metric, wanted.standardizer)
+    return not all(estimate.free(world) for world in worlds(situation, asked))
+
+
+def _left(situation: Situation, wanted: Wanted, asked: frozenset[str]) -> tuple[float, frozenset[str]]:
+    """The rounding that would be left, and the cheapest set that the variance would need in addition."""
+    after = next(worlds(situation, asked))
+    relations = graph(after.design, any_point, after.without, None)
+    used = after.points
+    for name in sorted(used - asked):
+        if wanted.metric in follows(used - {name}, relations):
+            used -= {name}
+    needs = wanted.needs or _variance_needs(wanted.metric, after.design, wanted.standardizer, None)
+    more = smallest_sets(after.points, situation.askable, relations, needs | {wanted.metric}, 1)
+    return width_left(situation.design, used, wanted.metric), more[0] if more else frozenset()

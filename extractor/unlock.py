@@ -20,7 +20,7 @@ from extractor.quantities import VOCABULARY, Shape
 
 _LARGEST = 4
 """Quantities in a set: with more, nobody answers."""
-_KEPT = 40
+_KEPT = 32
 """Sets kept per quantity while they are combined."""
 
 
@@ -129,11 +129,12 @@ def smallest_sets(
     """
     if goals <= follows(known, relations):
         return []
+    labels = _Labels(known, askable - known, relations, goals)
     found: list[frozenset[str]] = []
     # few quantities are easy to have, so that the sets made of them alone are found at once
     for ease in Ease:
-        within = frozenset(q for q in askable if EASE[q] <= ease) - known
-        for asked in _Labels(known, within, relations, goals).sets(goals):
+        labels.allow(ease)
+        for asked in labels.sets(goals):
             if len(found) == most:
                 return found
             opens = asked not in found and goals <= follows(known | asked, relations)
@@ -155,50 +156,64 @@ class _Labels:
         useful = _leading_to(goals, relations)
         self.names = sorted(askable & useful, key=lambda q: (EASE[q], q))
         self.ease = [EASE[q] for q in self.names]
-        self.label: dict[str, list[int]] = {q: [1 << at] for at, q in enumerate(self.names)}
-        self.label |= {q: [0] for q in known}
-        self.key = lru_cache(maxsize=None)(self._key)
-        users: dict[str, list[Relation]] = {}
+        derived = follows(known, relations)
+        self.label: dict[str, list[int]] = {q: [0] for q in derived}
+        self.costs: dict[int, tuple[int, int, int]] = {}
+        self.users: dict[str, list[Relation]] = {}
         for relation in relations:
-            if relation.gives in useful and relation.gives not in known:
+            if relation.gives in useful and relation.gives not in derived:
                 for need in relation.needs:
-                    users.setdefault(need, []).append(relation)
-        changed = set(self.label)
+                    self.users.setdefault(need, []).append(relation)
+
+    def allow(self, ease: Ease) -> None:
+        """Let quantities of this ease be asked for, and combine."""
+        changed = {q for q, own in zip(self.names, self.ease, strict=True) if own is ease and self._add(q)}
         while changed:
-            due = {r.name: r for q in changed for r in users.get(q, ())}
+            due = {r.name: r for q in changed for r in self.users.get(q, ())}
             changed = {r.gives for _, r in sorted(due.items()) if self._update(r)}
 
-    def _key(self, mask: int) -> tuple[int, int, int]:
-        worst = max((ease for at, ease in enumerate(self.ease) if mask >> at & 1), default=Ease.ARTICLE)
-        return int(worst), mask.bit_count(), mask
+    def _add(self, quantity: str) -> bool:
+        old = self.label.get(quantity, [])
+        self.label[quantity] = self._antichain({*old, 1 << self.names.index(quantity)})
+        return self.label[quantity] != old
+
+    def _cost(self, mask: int) -> tuple[int, int, int]:
+        if mask not in self.costs:
+            worst = self.ease[mask.bit_length() - 1] if mask else Ease.ARTICLE
+            self.costs[mask] = int(worst), mask.bit_count(), mask
+        return self.costs[mask]
 
     def _update(self, relation: Relation) -> bool:
         """Whether the relation gave what it gives a new set."""
-        fresh = self._all_of(relation.needs)
         old = self.label.get(relation.gives, [])
-        if not fresh or old == [0]:
+        fresh = self._all_of(relation.needs)
+        if old == [0] or not fresh or set(old).issuperset(fresh):
             return False
-        new = self._antichain({*old, *fresh})
-        self.label[relation.gives] = new
-        return new != old
+        self.label[relation.gives] = self._antichain({*old, *fresh})
+        return self.label[relation.gives] != old
 
     def _all_of(self, quantities: Iterable[str]) -> list[int]:
         """Sets from which all the quantities follow."""
+        labels = [self.label.get(quantity, []) for quantity in quantities]
+        if not all(labels):
+            return []
         together = [0]
-        for quantity in quantities:
-            label = self.label.get(quantity)
-            if not label:
-                return []
+        for label in labels:
             if label != [0]:
                 together = self._antichain({a | b for a in together for b in label})
         return together
 
     def _antichain(self, masks: set[int]) -> list[int]:
+        """The smallest of the sets, the easiest first."""
         kept: list[int] = []
-        for mask in sorted(masks, key=int.bit_count):
-            if mask.bit_count() <= _LARGEST and not any(mask & other == other for other in kept):
-                kept.append(mask)
-        return sorted(kept, key=self.key)[:_KEPT]
+        for mask in sorted(masks, key=self._cost):
+            if mask.bit_count() > _LARGEST or any(mask & other == other for other in kept):
+                continue
+            kept = [other for other in kept if mask & other != mask]
+            kept.append(mask)
+            if len(kept) == _KEPT:
+                break
+        return kept
 
     def sets(self, goals: frozenset[str]) -> list[frozenset[str]]:
         """The sets from which all goals follow."""

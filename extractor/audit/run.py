@@ -52,8 +52,13 @@ class Audit:
         return max((f.severity for f in self.findings), default=None)
 
 
-def audit_evidence(evidence: Evidence, conversion: Conversion | None) -> Audit:
-    """Run every check; where a conversion is given, its effect table gets a summary of each row's findings."""
+def audit_evidence(
+    evidence: Evidence, conversion: Conversion | None, review: Callable[[list[Finding]], list[Finding]] | None = None
+) -> Audit:
+    """Run every check; where a conversion is given, its effect table gets a summary of each row's findings.
+
+    ``review`` puts the coder's decisions on the findings.
+    """
     table = evidence.table
     findings: list[Finding] = []
     for check in CHECKS:
@@ -67,6 +72,8 @@ def audit_evidence(evidence: Evidence, conversion: Conversion | None) -> Audit:
             findings.extend(contradictions(block, table))
     why = np.where(evidence.blocked != "", evidence.blocked, "no printed number is implied by others")
     unchecked = [(int(table.row_numbers[i]), str(why[i])) for i in np.flatnonzero(counts == 0)]
+    if review is not None:
+        findings = review(findings)
     findings.sort(key=lambda f: (f.row, -f.severity, f.rule, f.cells))
     found = Audit(findings, int(counts.sum()), unchecked, table.rows)
     if conversion is not None:

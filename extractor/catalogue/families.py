@@ -22,6 +22,10 @@ FAMILIES = (
     "pre_post",
     "adjusted",
     "cells",
+    "ranks",
+    "proportions",
+    "medians",
+    "multiple_comparisons",
 )
 
 

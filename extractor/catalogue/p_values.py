@@ -50,6 +50,14 @@ def printed_p(p_two_sided: FloatArray, tails: FloatArray) -> FloatArray:
     return np.where(tails == 1, p_two_sided / 2, p_two_sided)
 
 
+def _upper_tail(explained: FloatArray, df_effect: FloatArray, df_error: FloatArray) -> FloatArray:
+    """P(F ≥ f) from df1·f; through whichever of the beta variable and its complement keeps its digits."""
+    share, rest = explained / (explained + df_error), df_error / (explained + df_error)
+    rest = np.where(np.isposinf(explained), 0.0, rest)
+    near_one = special.betaincc(df_effect / 2, df_error / 2, share)
+    return np.asarray(np.where(share < 0.5, near_one, special.betainc(df_error / 2, df_effect / 2, rest)))
+
+
 @relation(
     gives="p_two_sided",
     falling=["f_value"],
@@ -103,7 +111,7 @@ def _contrast_p_image(t_value: Interval, df_error: Interval) -> Interval:
 )
 def contrast_p(t_value: FloatArray, df_error: FloatArray) -> FloatArray:
     """p = P(|t(df2)| ≥ |t|)."""
-    return np.asarray(special.betainc(df_error / 2, 0.5, df_error / (df_error + t_value**2)))
+    return _upper_tail(t_value**2, np.ones_like(df_error), df_error)
 
 
 def _contrast_t_image(

@@ -68,8 +68,7 @@ def partial_eta_from_sums(ss_effect: FloatArray, ss_error: FloatArray) -> FloatA
 @relation(
     gives="partial_omega_squared",
     rising=["f_value"],
-    either=["df_effect"],
-    exact=["n_observations"],
+    exact=["df_effect", "n_observations"],
     designs=PARTIAL,
     source=_OMEGA,
 )
@@ -86,6 +85,7 @@ def partial_omega_from_f(
     rising=["partial_omega_squared"],
     either=["df_effect"],
     exact=["n_observations"],
+    accuracy=1e-11,
     designs=PARTIAL,
     source=_OMEGA,
 )

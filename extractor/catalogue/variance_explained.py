@@ -45,8 +45,7 @@ def f_from_eta_squared(eta_squared: FloatArray, df_effect: FloatArray, df_error:
 @relation(
     gives="omega_squared",
     rising=["f_value"],
-    either=["df_effect"],
-    exact=["n_total"],
+    exact=["df_effect", "n_total"],
     designs=ONE_FACTOR,
     source=_OMEGA,
 )
@@ -61,6 +60,7 @@ def omega_squared_from_f(f_value: FloatArray, df_effect: FloatArray, n_total: Fl
     rising=["omega_squared"],
     either=["df_effect"],
     exact=["n_total"],
+    accuracy=1e-11,
     designs=ONE_FACTOR,
     source=_OMEGA,
 )
@@ -88,6 +88,7 @@ def epsilon_squared_from_f(f_value: FloatArray, df_effect: FloatArray, df_error:
     rising=["epsilon_squared"],
     either=["df_error"],
     exact=["df_effect"],
+    accuracy=1e-11,
     designs=ONE_FACTOR,
     source=_EPSILON,
 )

@@ -12,7 +12,7 @@ _PARTIAL = (
     "a sphericity correction multiplies both df alike: F and the ratio of the df stay (textbook identity)"
 )
 _BOX = "Greenhouse & Geisser (1959): df multiplied by epsilon, 1/df1 ≤ epsilon ≤ 1 for one factor"
-_LIMITS = "the mean correlation of k measurements is at least -1/(k - 1) (textbook identity)"
+_LIMITS = "the sum of k scores has no negative variance: mean covariance ≥ -mean variance/(k - 1) (textbook identity)"
 
 
 def _mean_product(sd: FloatArray) -> FloatArray:
@@ -49,13 +49,15 @@ def error_mean_square_within(sd: FloatArray, correlation: FloatArray) -> FloatAr
     return np.asarray((sd**2).mean(axis=-1) - correlation * _mean_product(sd))
 
 
-def _limited(correlation: Interval, k_groups: Interval) -> Interval:
-    return -1 / (k_groups[1] - 1), np.ones_like(k_groups[0])
+def _limited(correlation: Interval, sd: Interval) -> Interval:
+    k = sd[0].shape[1]
+    low = -(sd[1] ** 2).mean(axis=-1) / ((k - 1) * _mean_product(sd[0]))
+    return low, np.ones_like(low)
 
 
-@relation(gives="correlation", image=_limited, designs=WITHIN | PAIRED, source=_LIMITS)
-def correlation_within_limits(correlation: FloatArray, k_groups: FloatArray) -> FloatArray:
-    """-1/(k - 1) ≤ r ≤ 1."""
+@relation(gives="correlation", image=_limited, designs=WITHIN, source=_LIMITS, accuracy=1e-9)
+def correlation_within_limits(correlation: FloatArray, sd: FloatArray) -> FloatArray:
+    """-mean SD² / ((k - 1) · mean of s_i·s_j) ≤ r ≤ 1."""
     return correlation
 
 

@@ -12,12 +12,11 @@ from extractor.commands import options
 @click.command(
     context_settings=options.SETTINGS, short_help="Ask whether the printed numbers of a sheet can be true."
 )
-@options.sheet
-@options.codebook
+@options.coded
 @options.output
 @options.fail_on
 def command(
-    sheet: str, codebook: str | None, out: Path | None, force: bool, csv_raw: bool, fail_on: str | None
+    coded: options.Coded, out: Path | None, force: bool, csv_raw: bool, fail_on: str | None
 ) -> int:
     """Ask of every row of SHEET whether its printed numbers can all be true.
 
@@ -32,19 +31,18 @@ def command(
       extractor audit coded.xlsx --fail-on inconsistent
     """
     from extractor import cautions
-    from extractor.audit.run import audit_evidence
     from extractor.commands import running
     from extractor.output import files, package, terminal
 
     if out is not None:
         files.refuse_existing(out, force=force)
-    evidence = running.read(sheet, codebook)
-    rows = evidence.table.rows
+    reading = running.read(coded)
+    rows = reading.table.rows
     with running.stage(f"auditing {rows} rows", rows):
-        found = audit_evidence(evidence, None)
+        found = reading.audit()
     if out is not None:
-        request = package.Request(sheet=sheet, codebook=codebook, raw=csv_raw)
-        package.write_audit(out, found, evidence.table, request, force=force)
+        request = package.Request(sheet=coded.sheet, codebook=coded.codebook, raw=csv_raw)
+        package.write_audit(out, found, reading.table, request, force=force)
         click.echo(f"written to {out}", err=True)
     page = terminal.console()
     terminal.show_findings(page, found)

@@ -17,9 +17,8 @@ _TO_STDOUT = ("csv", "json")
     context_settings=options.SETTINGS,
     short_help="Turn a sheet into effects of one metric, with variances and routes.",
 )
-@options.sheet
+@options.coded
 @options.wanted
-@options.codebook
 @options.output
 @click.option(
     "--format",
@@ -37,9 +36,8 @@ _TO_STDOUT = ("csv", "json")
 )
 @options.fail_on
 def command(
-    sheet: str,
+    coded: options.Coded,
     wanted: options.Wanted,
-    codebook: str | None,
     out: Path | None,
     force: bool,
     csv_raw: bool,
@@ -71,12 +69,12 @@ def command(
         tables.require(kind)
     if out is not None:
         files.refuse_existing(out, force=force)
-    result = running.convert(sheet, codebook, wanted)
+    result = running.convert(coded, wanted)
     said = (*cautions.EFFECTS, *(cautions.FINDINGS if result.audit.findings else ()))
     if out is not None:
         request = package.Request(
-            sheet=sheet,
-            codebook=codebook,
+            sheet=coded.sheet,
+            codebook=coded.codebook,
             metric=wanted.metric,
             variance=wanted.variance,
             level=wanted.level,

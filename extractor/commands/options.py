@@ -38,19 +38,46 @@ def _proportion(ctx: click.Context, param: click.Parameter, value: float) -> flo
     return value
 
 
-def sheet(command: Command) -> Command:
-    """The argument SHEET."""
-    return click.argument("sheet")(command)
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Coded:
+    """What a coder hands over: the sheet, what its headings mean, and sheets that may stand in files of their own."""
+
+    sheet: str
+    codebook: str | None
+    groups: str | None
+    decisions: str | None
 
 
-def codebook(command: Command) -> Command:
-    """--codebook."""
-    return click.option(
-        "--codebook",
-        metavar="NAME|FILE",
-        help="What the headings mean: a ready codebook (one-way, two-group, p-with-n) or a .toml file. "
-        "Without it headings are quantity names.",
-    )(command)
+def coded(command: Callable[..., Any]) -> Callable[..., Any]:
+    """The argument SHEET, --codebook, --groups and --decisions, handed to the command as ``coded``."""
+
+    @wraps(command)
+    def gathered(
+        sheet: str, codebook: str | None, groups: str | None, decisions: str | None, **others: object
+    ) -> object:
+        return command(coded=Coded(sheet=sheet, codebook=codebook, groups=groups, decisions=decisions), **others)
+
+    for option in (
+        click.option(
+            "--decisions",
+            metavar="FILE",
+            help="What coders decided about findings, where it is not a sheet of that name in the workbook.",
+        ),
+        click.option(
+            "--groups",
+            metavar="FILE",
+            help="One line per group or cell, joined by analysis, where it is not a sheet of that name in the workbook.",
+        ),
+        click.option(
+            "--codebook",
+            metavar="NAME|FILE",
+            help="What the headings mean: a ready codebook (see codebooks/README.md) or a .toml file. "
+            "Without it headings are quantity names.",
+        ),
+        click.argument("sheet"),
+    ):
+        gathered = option(gathered)
+    return gathered
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)

@@ -97,9 +97,9 @@ def _evidence(text: str, design: str | None, columns: dict[str, str]) -> tuple[E
         read_as = f"{design}{which}, unless --design says otherwise"
     import pandas as pd
 
-    from extractor.api import read_evidence
+    from extractor.api import read
 
-    evidence = read_evidence(pd.DataFrame([{"reported": text, "design": design, **columns}]))
+    evidence = read(pd.DataFrame([{"reported": text, "design": design, **columns}])).evidence
     table = evidence.table
     problems = [message for _, _, message in table.settings["problems"]]
     problems += [

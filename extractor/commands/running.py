@@ -8,9 +8,10 @@ from contextlib import contextmanager
 
 import click
 
-from extractor.api import Result, read_evidence
-from extractor.audit.run import Audit, audit_evidence
-from extractor.commands.options import Wanted
+from extractor.api import Reading, Result
+from extractor.api import read as read_sheet
+from extractor.audit.run import Audit
+from extractor.commands.options import Coded, Wanted
 from extractor.conversion import (
     Conversion,
     check_method,
@@ -28,11 +29,11 @@ LONG = 20_000
 _MOST_NOTES = 20
 
 
-def read(sheet: str, codebook: str | None) -> Evidence:
+def read(coded: Coded) -> Reading:
     """Read a sheet and say on standard error how it was read, where that was not plain."""
-    evidence = read_evidence(sheet, codebook)
-    mention(reading_notes(evidence.table))
-    return evidence
+    reading = read_sheet(coded.sheet, coded.codebook, groups=coded.groups, decisions=coded.decisions)
+    mention([*reading_notes(reading.table), *reading.notes])
+    return reading
 
 
 def mention(notes: list[str]) -> None:
@@ -43,15 +44,15 @@ def mention(notes: list[str]) -> None:
         click.echo(f"note: and {len(notes) - _MOST_NOTES} more like these", err=True)
 
 
-def convert(sheet: str, codebook: str | None, wanted: Wanted) -> Result:
+def convert(coded: Coded, wanted: Wanted) -> Result:
     """Convert and audit a sheet; raises as ``extractor.convert`` does."""
     check(wanted)
-    evidence = read(sheet, codebook)
-    rows = evidence.table.rows
+    reading = read(coded)
+    rows = reading.table.rows
     with stage(f"converting {rows} rows", rows):
-        conversion = converted(evidence, wanted.metric, wanted)
+        conversion = converted(reading.evidence, wanted.metric, wanted)
     with stage(f"auditing {rows} rows", rows):
-        return Result(conversion, audit_evidence(evidence, conversion))
+        return Result(conversion, reading.audit(conversion))
 
 
 def check(wanted: Wanted) -> None:

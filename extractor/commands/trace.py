@@ -9,11 +9,10 @@ from extractor.errors import UsageError
 
 
 @click.command(context_settings=options.SETTINGS, short_help="Show how the effect of one row came about.")
-@options.sheet
+@options.coded
 @click.argument("row", type=int)
 @options.wanted
-@options.codebook
-def command(sheet: str, row: int, wanted: options.Wanted, codebook: str | None) -> None:
+def command(coded: options.Coded, row: int, wanted: options.Wanted) -> None:
     """Show how the effect of one ROW of SHEET came about, from the estimate down to the cells.
 
     ROW is the number the spreadsheet gives the row. Every step is shown with its value, the interval that
@@ -28,7 +27,7 @@ def command(sheet: str, row: int, wanted: options.Wanted, codebook: str | None) 
     from extractor.commands import running
     from extractor.output import terminal, tracing
 
-    result = running.convert(sheet, codebook, wanted)
+    result = running.convert(coded, wanted)
     rows = result.effects["row"]
     found = (rows == row).to_numpy().nonzero()[0]
     if not len(found):

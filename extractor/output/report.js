@@ -19,7 +19,7 @@
       const data = article.dataset;
       const fits = data.study.includes(wanted.study)
         && (!wanted.status || data.status === wanted.status)
-        && (!wanted.severity || data.severity === wanted.severity)
+        && (!wanted.severity || data.severity.split(" ").includes(wanted.severity))
         && (!wanted.grade || data.grade === wanted.grade);
       article.hidden = !fits;
       lines.get(data.row).hidden = !fits;

@@ -99,7 +99,7 @@ def _context(result: Result, request: Request) -> dict[str, Any]:
     rows = Rows(result, request.level)
     glances = _glances(result, request.level)
     log = conversion_log(result)
-    numeric = ("estimate", "standard_error")
+    fractions = ("estimate", "standard_error")
     return {
         "version": __version__,
         "title": f"Effects in {symbol}",
@@ -121,10 +121,10 @@ def _context(result: Result, request: Request) -> dict[str, Any]:
         "shapes": rows.shapes(),
         "methods": methods(result, request),
         "log_headings": [name.replace("_", " ") for name in log.columns],
-        "log_numbers": [at for at, name in enumerate(log.columns) if name in numeric],
+        "log_numbers": [at for at, name in enumerate(log.columns) if name in ("row", *fractions)],
         "log": [
             [
-                shown(value) if name in numeric else str(value)
+                shown(value) if name in fractions else str(value)
                 for name, value in zip(log.columns, line, strict=True)
             ]
             for line in log.itertuples(index=False)

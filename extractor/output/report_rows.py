@@ -125,13 +125,14 @@ class Rows:
 
     def _flag(self, line: Line) -> dict[str, Any]:
         """What a row is filtered by."""
-        found = self.findings.get(int(line["row"]))
+        found = self.findings.get(int(line["row"]), [])
         worst = max(f.severity for f in found) if found else None
         return {
             "row": int(line["row"]),
             "status": line["status"],
             "grade": line["grade"],
             "severity": worst.word if worst is not None else "",
+            "severities": " ".join(sorted({f.severity.word for f in found})) if found else "none",
             "sign": SIGNS[worst] if worst is not None else "",
         }
 

@@ -378,6 +378,21 @@ enter_variance("r", LARGE, "large sample: (1 - r²)² / (N - 1) (Borenstein et a
 enter_limits("r", f"{_FISHER}, transformed back", TWO_GROUP, r_limits)
 enter_variance("fisher_z", LARGE, "large sample: 1 / (N - 3) (Fisher 1921)", TWO_GROUP, z_large)
 enter_limits("fisher_z", _FISHER, TWO_GROUP, z_limits)
+
+
+def printed_log_odds_variance(estimate: FloatArray, se_log_odds_ratio: FloatArray) -> FloatArray:
+    """Variance of a log odds ratio whose standard error is known."""
+    return np.where(np.isnan(estimate), np.nan, se_log_odds_ratio**2)
+
+
+def printed_log_odds_limits(estimate: FloatArray, se_log_odds_ratio: FloatArray, level: float) -> Interval:
+    """Normal limits of the same."""
+    return _normal(estimate, se_log_odds_ratio**2, level)
+
+
+_SQUARED = "squared standard error of the log odds ratio (Woolf 1955 where it comes from counts)"
+enter_variance("log_odds_ratio", LARGE, _SQUARED, TWO_GROUP, printed_log_odds_variance)
+enter_limits("log_odds_ratio", "normal limits of the log odds ratio", TWO_GROUP, printed_log_odds_limits)
 _LOGISTIC_NAME = "large-sample variance of d times π²/3 (Hasselblad & Hedges 1995)"
 enter_variance("log_odds_ratio", LARGE, _LOGISTIC_NAME, TWO_GROUP, log_odds_large)
 enter_limits("log_odds_ratio", "limits of d (noncentral t) times π/sqrt(3)", TWO_GROUP, log_odds_limits)

@@ -98,18 +98,18 @@ def standardizer_of(route_standardizer: str, design: str) -> str:
     return route_standardizer or DEFAULT.get(design, "pooled")
 
 
-def variance_of(metric: str, method: str | None, design: str, standardizer: str) -> Precision | None:
-    """The variance of a case by a method, or by the only method there is."""
+def variances_of(metric: str, method: str | None, design: str, standardizer: str) -> list[Precision]:
+    """The variances of a case, the wanted method first; several where they rest on different evidence."""
     load()
-    fitting = [p for p in VARIANCES if p.serves(metric, design, standardizer)]
     wanted = method or PREFERRED[metric]
-    return next((p for p in fitting if p.method == wanted), next(iter(fitting), None))
+    fitting = [p for p in VARIANCES if p.serves(metric, design, standardizer)]
+    return sorted(fitting, key=lambda p: p.method != wanted)
 
 
-def limits_of(metric: str, design: str, standardizer: str) -> Precision | None:
-    """The confidence limits of a case."""
+def limits_of(metric: str, design: str, standardizer: str) -> list[Precision]:
+    """The confidence limits of a case; several where they rest on different evidence."""
     load()
-    return next((p for p in LIMITS if p.serves(metric, design, standardizer)), None)
+    return [p for p in LIMITS if p.serves(metric, design, standardizer)]
 
 
 def methods_of(metric: str) -> list[str]:

@@ -15,6 +15,7 @@ from extractor.catalogue.multiple_comparisons import (
     mean_square_from_lsd,
     two_sided_p_from_bonferroni,
 )
+from extractor.catalogue.relation import Relation
 from extractor.intervals import image
 from extractor.planner import Start, search
 from tests.catalogue.families import check_family, relations_in
@@ -38,7 +39,10 @@ def world(seed: int, rows: int = 60) -> World:
     alpha, error = rng.choice([0.01, 0.05], size=rows), np.exp(rng.normal(size=rows))
     comparisons = rng.integers(1, 10, size=rows).astype(float)
     p = rng.uniform(1e-6, 0.99, size=rows) / comparisons
-    quantile = [stats.studentized_range.ppf(1 - a, groups, v) for a, v in zip(alpha, df, strict=True)]
+    cases = {
+        (a, v): stats.studentized_range.ppf(1 - a, groups, v) for a, v in set(zip(alpha, df, strict=True))
+    }
+    quantile = [cases[case] for case in zip(alpha, df, strict=True)]
     return {
         "n": sizes,
         "k_groups": np.full(rows, float(groups)),
@@ -58,7 +62,7 @@ WORLD = world(1)
 
 
 @pytest.mark.parametrize("relation", relations_in(multiple_comparisons), ids=lambda r: r.name)
-def test_formulas_give_what_the_definitions_give(relation: object) -> None:
+def test_formulas_give_what_the_definitions_give(relation: Relation) -> None:
     found = relation.formula(*(WORLD[need] for need in relation.needs))
     np.testing.assert_allclose(found, WORLD[relation.gives], rtol=1e-9)
 

@@ -9,7 +9,7 @@ from statsmodels.stats.contingency_tables import Table2x2
 
 from extractor.catalogue import proportions
 from extractor.catalogue.odds import d_from_log_odds_ratio, log_odds_ratio_from_odds_ratio
-from extractor.catalogue.relation import Grade
+from extractor.catalogue.relation import Grade, Relation
 from extractor.planner import Start, search
 from tests.catalogue.families import check_family, evaluate, relations_in
 from tests.catalogue.worlds import World
@@ -29,7 +29,7 @@ def value(name: str, world: World) -> float:
     return float(evaluate(next(r for r in relations_in(proportions) if r.name == name), world)[0])
 
 
-def world(seed: int, rows: int = 300) -> World:
+def world(seed: int, rows: int = 150) -> World:
     """Random tables; every statistic from scipy, statsmodels or raw binary scores."""
     rng = np.random.default_rng(seed)
     found: list[dict[str, object]] = []
@@ -67,7 +67,7 @@ REFERENCED = [r for r in relations_in(proportions) if r.gives in WORLD]
 
 
 @pytest.mark.parametrize("relation", REFERENCED, ids=lambda r: r.name)
-def test_formulas_give_what_the_references_give(relation: object) -> None:
+def test_formulas_give_what_the_references_give(relation: Relation) -> None:
     """chi-square: scipy; odds ratio, its SE and limits: statsmodels; phi: correlation of the raw scores."""
     found = evaluate(relation, WORLD)
     np.testing.assert_allclose(found, WORLD[relation.gives], rtol=1e-9, atol=1e-12)

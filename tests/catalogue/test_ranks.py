@@ -12,7 +12,7 @@ from extractor.planner import Start, search
 from tests.catalogue.families import check_family, relations_in
 from tests.catalogue.worlds import World
 
-ROWS = 300
+ROWS = 150
 
 
 def two_groups(seed: int, *, ties: bool) -> World:

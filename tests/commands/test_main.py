@@ -100,10 +100,10 @@ def test_version(run: Run) -> None:
 
 
 def test_interrupt_is_one_line(run: Run, monkeypatch: pytest.MonkeyPatch) -> None:
-    def interrupted(*_: object) -> None:
+    def interrupted(*_: object, **__: object) -> None:
         raise KeyboardInterrupt
 
-    monkeypatch.setattr(running, "read_evidence", interrupted)
+    monkeypatch.setattr(running, "read_sheet", interrupted)
     result = run("convert", "coded.csv", *TO)
     assert result.exit_code == 1
     assert result.stderr.strip() == "extractor: interrupted"
