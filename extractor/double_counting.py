@@ -31,6 +31,8 @@ ARM, CONTRASTS, SAMPLE, TEST = (
 _WHY = "possible double counting; effects of one sample are not independent evidence"
 _ONE_FACTOR = ("one-way", "two-group")
 _MOST_NAMED = 3
+_LARGEST = 50
+"""Rows of a cluster that are looked at one by one; larger ones come from sheets that repeat themselves throughout."""
 _DIGITS = 3
 """A test statistic with fewer significant digits is the same in two studies by chance."""
 
@@ -63,12 +65,14 @@ class _Labels:
 
 
 def _clusters(keys: pd.DataFrame, rows: NDArray[np.intp]) -> Iterator[list[int]]:
-    """Rows with equal keys, two or more distinct ones at a time, in the order of the sheet."""
-    codes = pd.factorize(pd.MultiIndex.from_frame(keys))[0] if len(keys) else np.zeros(0, dtype=np.intp)
-    for _, members in pd.Series(rows).groupby(codes):
+    """Rows with equal keys, two or more distinct ones at a time, in the order of the sheet; the first of very many."""
+    again = keys.duplicated(keep=False).to_numpy()
+    for _, members in pd.Series(rows[again]).groupby(
+        keys[again].groupby(list(keys), sort=False).ngroup().to_numpy()
+    ):
         distinct = sorted(set(members.tolist()))
         if len(distinct) > 1:
-            yield distinct
+            yield distinct[:_LARGEST]
 
 
 def _named(table: ReportedTable, rows: Sequence[int]) -> str:
@@ -102,8 +106,9 @@ def _shared_arms(table: ReportedTable, labels: _Labels) -> dict[int, Finding]:
     lines = _arms(table, labels)
     found: dict[int, list[tuple[int, list[tuple[int, int]]]]] = {}
     keys = [name for name in lines.columns if name not in ("row", "group")]
-    for _, same in lines.groupby(keys, sort=False) if keys else ():
-        pairs = list(zip(same["row"].tolist(), same["group"].tolist(), strict=True))
+    again = lines[lines.duplicated(keys, keep=False)] if keys else lines.iloc[:0]
+    for _, same in again.groupby(keys, sort=False) if len(again) else ():
+        pairs = list(zip(same["row"].tolist(), same["group"].tolist(), strict=True))[:_LARGEST]
         for row, group in pairs:
             others = [(r, g) for r, g in pairs if r in labels.others([r], row)]
             if others:
@@ -119,10 +124,9 @@ def _arm_note(
     partners = sorted({r for _, others in arms for r, _ in others})
     everywhere = [r for r in partners if all(any(r == other for other, _ in others) for _, others in arms)]
     if coded > 1 and len(arms) == coded and everywhere:
-        said = (
-            f"all {coded} groups also stand in {_named(table, everywhere)} of this study and outcome: "
-            "look whether one comparison was coded twice"
-        )
+        every = "both groups" if coded == 2 else f"all {coded} groups"
+        where = f"{_named(table, everywhere)} of this study and outcome"
+        said = f"{every} also stand in {where}: look whether one comparison was coded twice"
         return _note(table, row, ARM, cells, said)
     parts = []
     for group, others in arms:
@@ -188,21 +192,16 @@ def _same_sizes(table: ReportedTable, labels: _Labels, said: BoolArray) -> Itera
             others = [r for r in labels.others(cluster, row) if not (said[r] and said[row])]
             if not others:
                 continue
-            cells: list[Variable] = [
-                ("n", g) for g, size in zip(groups, n[row], strict=True) if np.isfinite(size)
-            ]
-            what = f"group sizes {listed([f'{size:g}' for size in n[row] if np.isfinite(size)])}"
+            sizes_of = [(g, f"{size:g}") for g, size in zip(groups, n[row], strict=True) if np.isfinite(size)]
+            cells: list[Variable] = [("n", g) for g, _ in sizes_of]
+            what = f"group sizes {listed([size for _, size in sizes_of])} stand"
             if not sized[row]:
-                cells = [(name, None) for name in ("n_total", "df_error", "df") if _has(table, name, row)][:1]
-                what = f"number of participants, {total[row]:g},"
+                printed = [name for name in ("n_total", "df_error", "df") if _has(table, name, row)]
+                cells = [(printed[0], None)]
+                what = f"{total[row]:g} participants stand"
             asked = "if they are the same people, these effects are not independent"
-            yield _note(
-                table,
-                row,
-                SAMPLE,
-                cells,
-                f"{_named(table, others)} of this study have the same {what}: {asked}",
-            )
+            message = f"{what} in {_named(table, others)} of this study, too: {asked}"
+            yield _note(table, row, SAMPLE, cells, message)
 
 
 def _total(table: ReportedTable) -> FloatArray:

@@ -17,11 +17,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 from extractor.catalogue.relation import Grade, Relation, catalogue
-from extractor.choice import NOTHING, STANDARDIZED, Chosen, grade_of
+from extractor.choice import NOTHING, Chosen, grade_of
 from extractor.conversion import Conversion
 from extractor.evidence import Block, fractional_df
-from extractor.sampling.precision import limits_of, standardizer_of, variances_of
-from extractor.situation import GROUPED, Situation, Wanted, World, askable_in, worlds
+from extractor.situation import GROUPED, Situation, Wanted, World, askable_in, uncertain_counts, worlds
 from extractor.study.terms import factors_of, terms_per_row
 from extractor.table import BoolArray, ReportedTable
 from extractor.typical import width_left
@@ -90,8 +89,8 @@ def questions(
     found: list[Asked] = []
     for chosen in conversion.chosen:
         for rows, index in _same_route(chosen):
-            for aim, needs in _aims(chosen, index, method):
-                wanted = Wanted(conversion.metric, standardizer, needs)
+            for aim in _aims(chosen, index):
+                wanted = Wanted(conversion.metric, standardizer, method)
                 for part in said.alike(chosen.block, rows):
                     situation = said.situation(chosen, part, index)
                     offers = _offers(situation, wanted, aim, most)
@@ -108,26 +107,18 @@ def _same_route(chosen: Chosen) -> Iterator[tuple[NDArray[np.intp], int]]:
                 yield rows, int(index)
 
 
-def _aims(chosen: Chosen, index: int, method: str | None) -> Iterator[tuple[Aim, frozenset[str]]]:
-    """What the rows of one route lack, and what their variance needs."""
+def _aims(chosen: Chosen, index: int) -> Iterator[Aim]:
+    """What the rows of one route lack."""
     if index == NOTHING:
-        yield Aim.OPENS, frozenset()
-        return
-    route, supported = chosen.routes[index], chosen.precisions.get(index)
-    if supported is None:
-        yield Aim.TIGHTENS, frozenset()
-        return
-    needs = _variance_needs(chosen.metric, chosen.block.design, route.standardizer, method)
-    if grade_of((route, *supported.further)) is Grade.ASSUMPTION:
-        yield Aim.FREES, needs - frozenset(supported.missing)
-    if supported.missing:
-        yield Aim.COMPLETES, needs
-
-
-def _variance_needs(metric: str, design: str, standardizer: str, method: str | None) -> frozenset[str]:
-    named = standardizer_of(standardizer, design) if metric in STANDARDIZED else "pooled"
-    ways = variances_of(metric, method, design, named)[:1] + limits_of(metric, design, named)[:1]
-    return frozenset(need for way in ways for need in way.needs) - {metric}
+        yield Aim.OPENS
+    elif index not in chosen.precisions:
+        yield Aim.TIGHTENS
+    else:
+        supported = chosen.precisions[index]
+        if grade_of((chosen.routes[index], *supported.further)) is Grade.ASSUMPTION:
+            yield Aim.FREES
+        if supported.missing:
+            yield Aim.COMPLETES
 
 
 class _Said:
@@ -163,7 +154,7 @@ class _Said:
         """What rows that are alike know."""
         block, first = chosen.block, rows[0]
         at = block.positions[first]
-        askable = askable_in(block.design)
+        askable = askable_in(block.design, block.start.known)
         if self.ungrouped[at]:
             askable -= GROUPED
         if self.fractional[at]:
@@ -239,13 +230,13 @@ def _sets(situation: Situation, wanted: Wanted, aim: Aim) -> list[frozenset[str]
 def _does(world: World, wanted: Wanted, aim: Aim, surely: bool) -> bool:
     if aim in (Aim.OPENS, Aim.TIGHTENS):
         return wanted.pointed(world, surely=surely)
-    return wanted.free(world) if aim is Aim.FREES else wanted.complete(world)
+    return (wanted.free if aim is Aim.FREES else wanted.complete)(world, surely=surely)
 
 
 def _candidates(situation: Situation, wanted: Wanted, aim: Aim) -> list[frozenset[str]]:
     """Smallest sets in each way the rows may turn out, the easiest first."""
     start, askable = situation.start, situation.askable
-    goals = frozenset([wanted.metric]) | (wanted.needs if aim in (Aim.FREES, Aim.COMPLETES) else frozenset())
+    without = situation.without | uncertain_counts()
     ways: dict[tuple[tuple[Relation, ...], frozenset[str]], None] = {}
     for design in {world.design: None for world in worlds(situation, askable & GROUPED | {"df_effect"})}:
         for assuming in _ASSUMING[aim] if not start.bounds or aim is Aim.FREES else (True, False):
@@ -255,9 +246,29 @@ def _candidates(situation: Situation, wanted: Wanted, aim: Aim) -> list[frozense
             # k comes with the groups, so that sets are sought with and without it
             for given in (known, known | {"k_groups"}) if not situation.counted else (known,):
                 for standardizer in (wanted.standardizer,) if wanted.standardizer else ("", None):
-                    ways[graph(design, allowed, situation.without, standardizer), given] = None
-    sets = {s: None for way, given in ways for s in smallest_sets(given, askable, way, goals, _CANDIDATES)}
+                    ways[graph(design, allowed, without, standardizer), given] = None
+    sets = {
+        found: None
+        for way, given in ways
+        for goals in _goals(situation, wanted, aim)
+        for found in smallest_sets(given, askable, way, goals, _CANDIDATES)
+    }
     return sorted(sets, key=lambda s: (max(EASE[q] for q in s), len(s), sorted(s)))
+
+
+def _goals(situation: Situation, wanted: Wanted, aim: Aim) -> list[frozenset[str]]:
+    """What must follow: the metric, and where the variance matters what some way to it needs."""
+    metric = frozenset([wanted.metric])
+    if aim in (Aim.OPENS, Aim.TIGHTENS):
+        return [metric]
+    here = next(worlds(situation, frozenset()))
+    found = {metric: None} if aim is Aim.FREES else {}
+    for way in wanted.precisions(here):
+        for variance in way.variances:
+            for limits in way.limits or (frozenset(),):
+                found |= {metric | variance | limits: None}
+        found |= {metric | variance: None for variance in way.variances} if aim is Aim.FREES else {}
+    return list(found)
 
 
 _ASSUMING = {
@@ -270,9 +281,8 @@ _ASSUMING = {
 
 
 def _assuming(situation: Situation, wanted: Wanted, asked: frozenset[str]) -> bool:
-    """Whether the estimate may still rest on an assumption."""
-    estimate = Wanted(wanted.metric, wanted.standardizer)
-    return not all(estimate.free(world) for world in worlds(situation, asked))
+    """Whether the effect may still rest on an assumption."""
+    return not all(wanted.free(world, surely=True) for world in worlds(situation, asked))
 
 
 def _left(situation: Situation, wanted: Wanted, asked: frozenset[str]) -> tuple[float, frozenset[str]]:
@@ -283,6 +293,7 @@ def _left(situation: Situation, wanted: Wanted, asked: frozenset[str]) -> tuple[
     for name in sorted(used - asked):
         if wanted.metric in follows(used - {name}, relations):
             used -= {name}
-    needs = wanted.needs or _variance_needs(wanted.metric, after.design, wanted.standardizer, None)
-    more = smallest_sets(after.points, situation.askable, relations, needs | {wanted.metric}, 1)
+    needs = [way.used(frozenset()) for way in wanted.precisions(after)]
+    goals = frozenset([wanted.metric]).union(*needs[:1])
+    more = smallest_sets(after.points, situation.askable, relations, goals, 1)
     return width_left(situation.design, used, wanted.metric), more[0] if more else frozenset()

@@ -11,8 +11,11 @@ from collections.abc import Iterator
 from dataclasses import dataclass, replace
 from functools import lru_cache
 
+from extractor.catalogue.relation import catalogue
+from extractor.choice import STANDARDIZED
 from extractor.planner import Start
-from extractor.quantities import VOCABULARY, Shape
+from extractor.quantities import STANDARDIZERS, VOCABULARY, Shape
+from extractor.sampling.precision import limits_of, standardizer_of, variances_of
 from extractor.unlock import EASE, any_point, follows, graph, no_assumption
 
 GROUPED = frozenset(name for name, quantity in VOCABULARY.items() if quantity.shape is Shape.GROUP)
@@ -28,6 +31,7 @@ _OF_TERMS = frozenset(
 )
 """Sums over the other rows of a model, which may exist as soon as the row itself is filled."""
 _OWN_TERM = frozenset({"f_value", "df_effect", "ss_effect", "ss_error", "ss_subjects"})
+_SIGN_OF_F = "t_of_one_df"
 _ONE_DF = frozenset({"factorial", "mixed", "ancova", "pre-post-control"})
 """Designs in which a direction makes F a t only where F has one numerator df."""
 
@@ -75,20 +79,31 @@ def worlds(situation: Situation, asked: frozenset[str]) -> Iterator[World]:
     coded = situation.groups >= 2 or bool(asked & GROUPED)
     if coded and situation.compared:
         known |= {"contrast_weight"}
-    unknown_df = situation.one_df is None and "df_effect" in asked and situation.design in _ONE_DF
+    signless = {_SIGN_OF_F} if situation.design in _ONE_DF and not situation.one_df else set()
+    sure = {_SIGN_OF_F} if situation.one_df is False and situation.design in _ONE_DF else set()
     for design in _designs(situation, asked):
         mine = _read(design, known, bounds)
         if design in ("two-group", "paired", "pre-post-control") or (
             coded and design in ("one-way", "within", "ancova")
         ):
             mine |= {"k_groups"}
-        signless = situation.one_df is False and design in _ONE_DF
-        for direction in (False, True) if unknown_df else (not signless,):
-            have = mine if direction else mine - {"direction"}
-            world = World(design, replace(start, known=have, bounds=bounds - have), situation.without)
+        for without in (uncertain_counts() | signless, frozenset(sure)):
+            world = World(
+                design, replace(start, known=mine, bounds=bounds - mine), situation.without | without
+            )
             yield world
             if situation.modelled and asked & _OWN_TERM:
-                yield replace(world, start=replace(world.start, known=have | _OF_TERMS))
+                yield replace(world, start=replace(world.start, known=mine | _OF_TERMS))
+
+
+@lru_cache(maxsize=1)
+def uncertain_counts() -> frozenset[str]:
+    """Relations that give a count from rounded numbers, which often leave more than one whole number possible."""
+    return frozenset(
+        name
+        for name, relation in catalogue().items()
+        if VOCABULARY[relation.gives].integer and not all(VOCABULARY[n].integer for n in relation.needs)
+    )
 
 
 def _designs(situation: Situation, asked: frozenset[str]) -> tuple[str, ...]:
@@ -134,21 +149,58 @@ def _bounded(world: World, assuming: bool, standardizer: str | None) -> frozense
 
 
 @dataclass(frozen=True, slots=True)
+class Precise:
+    """What sampling variance and limits need beside the estimate: one set for each way to compute them."""
+
+    variances: tuple[frozenset[str], ...]
+    limits: tuple[frozenset[str], ...]
+
+    def used(self, known: frozenset[str]) -> frozenset[str]:
+        """What the ways that will be taken need: the first that are served, else the first."""
+        both = (self.variances, self.limits)
+        taken = [next((way for way in ways if way <= known), ways[0]) for ways in both if ways]
+        return frozenset().union(*taken)
+
+    def served(self, known: frozenset[str]) -> bool:
+        """Whether both can be had, where limits exist."""
+        return bool(self.variances) and self.used(known) <= known
+
+
+@lru_cache(maxsize=1024)
+def precise(metric: str, design: str, standardizer: str, method: str | None) -> Precise:
+    """The ways to the precision of a case; none where no variance is known."""
+    both = variances_of(metric, method, design, standardizer), limits_of(metric, design, standardizer)
+    found = (tuple(frozenset(way.needs) - {metric} for way in ways) for ways in both)
+    return Precise(*found)
+
+
+@dataclass(frozen=True, slots=True)
 class Wanted:
     """What the rows are to give: a metric, over a named standardizer or ("") the design's usual one first.
 
-    needs : quantities that the sampling variance needs as well.
+    method : of the sampling variance; None for the metric's preferred one.
     """
 
     metric: str
     standardizer: str = ""
-    needs: frozenset[str] = frozenset()
+    method: str | None = None
 
     def preferred(self, world: World) -> str | None:
         """The standardizer of the route that will be chosen; None for whichever can be had."""
         if self.standardizer:
             return self.standardizer
         return "" if self.metric in _bounded(world, True, "") else None
+
+    def precisions(self, world: World) -> list[Precise]:
+        """The ways to the precision, one for each standardizer that the chosen route may have."""
+        preferred = self.preferred(world)
+        if self.metric not in STANDARDIZED:
+            named = ["pooled"]
+        elif preferred is not None:
+            named = [standardizer_of(preferred, world.design)]
+        else:
+            named = [s for s in STANDARDIZERS if self.metric in _derived(world, True, s)]
+        return [precise(self.metric, world.design, s, self.method) for s in named]
 
     def pointed(self, world: World, *, surely: bool) -> bool:
         """Whether the metric gets a point: a route without assumptions wins, a bound without them comes next."""
@@ -159,23 +211,40 @@ class Wanted:
             return False
         return not world.start.bounds if surely else self.metric not in _bounded(world, False, preferred)
 
-    def free(self, world: World) -> bool:
-        """Whether metric and variance rest on nothing that nobody reported."""
-        derived = _derived(world, False, self.preferred(world))
-        return self.metric in derived and self.needs <= _derived(world, False, None) | derived
+    def free(self, world: World, *, surely: bool) -> bool:
+        """Whether the metric, and of what its variance needs all that can be had, rest on nothing unreported."""
+        preferred = self.preferred(world)
+        sound = _derived(world, False, preferred)
+        if self.metric not in sound:
+            return False
+        had = _derived(world, True, None)
+        doubtful = had - _derived(world, False, None) - sound
+        each = (not way.used(had) & doubtful for way in self.precisions(world))
+        return all(each) if surely else any(each) or not doubtful
 
-    def complete(self, world: World) -> bool:
+    def complete(self, world: World, *, surely: bool) -> bool:
         """Whether metric and variance can be had."""
         derived = _derived(world, True, self.preferred(world))
-        return self.metric in derived and self.needs <= _derived(world, True, None) | derived
+        if self.metric not in derived:
+            return False
+        had = _derived(world, True, None) | derived
+        each = (way.served(had) for way in self.precisions(world))
+        return all(each) if surely else any(each)
 
 
-def askable_in(design: str) -> frozenset[str]:
-    """What can be asked about a row of a design; a number that stands for several is asked once."""
-    none = set() if design == "two-group" else {"count_a", "count_b", "count_c", "count_d"}
+def askable_in(design: str, known: frozenset[str]) -> frozenset[str]:
+    """What can be asked about a row of a design; a number that stands for several is asked once.
+
+    Counts are asked for where something else of the row speaks of a 2 x 2 table already.
+    """
+    none = frozenset() if design == "two-group" and known & _OF_PROPORTIONS else _COUNTS
     if design in ("paired", "within"):
         # every condition has all participants
         none |= {"n"}
     if design != "paired":
         none |= {"sd_difference"}
     return frozenset(EASE) - none
+
+
+_COUNTS = frozenset({"count_a", "count_b", "count_c", "count_d"})
+_OF_PROPORTIONS = _COUNTS | {"odds_ratio", "log_odds_ratio", "chi_squared", "chi_squared_corrected", "phi"}

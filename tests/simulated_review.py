@@ -175,7 +175,9 @@ def written(name: str, value: float) -> str:
     """A number as an author who has all digits would send it."""
     if name == "direction":
         return "+" if value > 0 else "-"
-    return str(value) if isinstance(value, int) else f"{value:.9f}"
+    if isinstance(value, int):
+        return str(value)
+    return f"{value:.20f}" if name == "p_value" else f"{value:.9f}"
 
 
 def review(seed: int, rows: int) -> tuple[pd.DataFrame, list[Truth]]:

@@ -16,6 +16,7 @@ from openpyxl.worksheet.worksheet import Worksheet
 
 from extractor import cautions
 from extractor.api import Result
+from extractor.errors import UsageError
 from extractor.findings import Finding
 from extractor.output.chart import write_chart
 from extractor.output.marks import COMPANION, FILLS, SIGNS, address_of, marks_of, show, unmark
@@ -35,6 +36,9 @@ from extractor.output.sheets import (
 from extractor.output.workbook import _canonical
 from extractor.source.reader import read_grid
 from extractor.table import ReportedTable
+
+MOST = 20_000
+"""Rows above which a workbook with every step of every route is of no use."""
 
 _OURS = ("effects", "chart", "findings", "routes", "routes not taken", "settings")
 _SHADE_OF_STATUS = {"bounded": "FFFBEBB5", "blocked": "FFE9E9E4"}
@@ -61,7 +65,16 @@ def write_annotated(result: Result, request: Request, path: Path) -> list[str]:
     Returns
     -------
     What the workbook could not hold as it was, in words.
+
+    Raises
+    ------
+    UsageError
+        with more rows than a spreadsheet program shows with ease.
     """
+    if len(result.effects) > MOST:
+        raise UsageError(
+            f"an annotated workbook holds at most {MOST} rows, these are {len(result.effects)}: split the sheet"
+        )
     table = result.conversion.evidence.table
     book, coded, results, notes = _copy(request, table)
     if coded is not None:

@@ -132,11 +132,8 @@ def read_consensus(found: Reconciliation, path: str | Path) -> Settled:
     UnreadableInput : it is no such workbook, a line does not belong to these sheets as they now are, or an agreed
         value cannot be read; the message names the cell.
     """
-    for title in (CELLS, ROWS):
-        if not has_sheet(Path(path), title):
-            raise UnreadableInput(
-                f"{quoted(path, 200)} has no sheet {quoted(title)}; it is no consensus workbook"
-            )
+    if not any(has_sheet(Path(path), title) for title in (CELLS, ROWS, _ABOUT)):
+        raise UnreadableInput(f"{quoted(path, 200)} has no sheet {quoted(CELLS)}; it is no consensus workbook")
     return Settled(_settled_cells(found, Path(path)), _settled_rows(found, Path(path)))
 
 

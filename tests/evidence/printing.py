@@ -48,7 +48,7 @@ def numbers(variable: Variable, printed: Printed) -> Numbers:
     quantity = VOCABULARY[variable[0]]
     rows = len(printed.value)
     value = printed.value.astype(float)
-    if quantity.exact and printed.decimals == 0:
+    if quantity.exact and np.all(np.asarray(printed.decimals) == 0):
         unit = np.zeros(rows)
         low = high = value
     else:
