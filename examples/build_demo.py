@@ -13,10 +13,10 @@ from pathlib import Path
 
 import numpy as np
 from openpyxl import Workbook
+from other_reports import Row, p_text, rows_other_reports
 from scipy import stats
 
 HERE = Path(__file__).parent
-Row = dict[str, str]
 RNG = np.random.default_rng(20261201)
 
 GROUPS = 4
@@ -30,7 +30,12 @@ COLUMNS = [
     *(f"{name}_{g}" for g in (1, 2) for name in ("mean_pre", "sd_pre", "mean_post", "sd_post")),
     "mean_difference", "se_difference", "ci_low_difference", "ci_high_difference",
     "eta_squared", "partial_eta_squared", "omega_squared", "epsilon_squared", "cohens_f", "cohens_d", "hedges_g",
-    "r", "correlation", "covariate_r", "n_covariates", "measured_factors", "school", "note",
+    "r", "correlation", "covariate_r", "n_covariates", "measured_factors",
+    "welch_f", "welch_df_error", "adjusted_p", "comparisons", "lsd_value", "significance_level",
+    *(f"{name}_{g}" for g in (1, 2) for name in ("median", "q1", "q3", "mean_change", "sd_change")),
+    "u_value", "h_value", "z_value", "chi_squared", "count_a", "count_b", "count_c", "count_d", "odds_ratio",
+    "effect_ci_low", "effect_ci_high", "scale_min", "scale_max", "scale_items", "responses", "icc", "cluster_size",
+    "standardizer", "school", "note",
 ]  # fmt: skip
 
 
@@ -67,9 +72,8 @@ def group_cells(s: dict, *names: str, mean_places: int = 1, sd_places: int = 1) 
     return row
 
 
-def p_text(p: float) -> str:
-    """A p value as journals print it."""
-    return "< .001" if p < 0.001 else f"{p:.3f}".lstrip("0")
+# fmt: off
+# one line for each study reads best
 
 
 def rows_one_way() -> list[Row]:
@@ -88,7 +92,8 @@ def rows_one_way() -> list[Row]:
     full = {"f_value": f"{s['f']:.2f}", "df_effect": "3", "df_error": str(s["v2"]), "p_value": p_text(s["p"])}
     add("Birchmere", "one-way", group_cells(s, "n", "mean", "sd") | full, "four groups, printed twice over")
     s = three()
-    add("Cobble Bay", "one-way", group_cells(s, "n", "mean", mean_places=2) | {"f_value": f"{s['f']:.2f}"}, "no SDs: MS_error from F")
+    add("Cobble Bay", "one-way", group_cells(s, "n", "mean", mean_places=2) | {"f_value": f"{s['f']:.2f}"},
+         "no SDs: MS_error from F")
     s = three()
     add("Dunmoor", "one-way", group_cells(s, "n", "mean") | {"ms_error": f"{s['mse']:.1f}"}, "means and MS_error")
     s = three()
@@ -96,58 +101,75 @@ def rows_one_way() -> list[Row]:
     s = three()
     add("Fernhill", "one-way", {"f_value": f"{s['f']:.2f}", "df_effect": "2", "df_error": str(s["v2"])}, "F with dfs")
     s = three()
-    add("Gorse Point", "one-way", {"f_value": f"{s['f']:.1f}", "n_total": str(s["n"].sum()), "k_groups": "3"}, "F with N and k")
+    add("Gorse Point", "one-way", {"f_value": f"{s['f']:.1f}", "n_total": str(s["n"].sum()), "k_groups": "3"},
+         "F with N and k")
     s = three(0.5)
-    add("Harrow Dyke", "one-way", {"p_value": p_text(max(s["p"], 0.0012)), "df_effect": "2", "df_error": str(s["v2"])}, "exact p with dfs")
+    add("Harrow Dyke", "one-way", {"p_value": p_text(max(s["p"], 0.0012)), "df_effect": "2",
+         "df_error": str(s["v2"])}, "exact p with dfs")
     s = three(0.5)
-    add("Ivy Cross", "one-way", {"p_value": "< .05", "n_total": str(s["n"].sum()), "k_groups": "3"}, "a bound: p < .05")
+    add("Ivy Cross", "one-way", {"p_value": "< .05", "n_total": str(s["n"].sum()), "k_groups": "3"},
+         "a bound: p < .05")
     add("Juniper Flats", "one-way", {"p_value": "ns", "n_total": "66", "k_groups": "3"}, "a bound: not significant")
     s = three()
     table = {"ss_effect": f"{s['ss']:.1f}", "ss_error": f"{s['sse']:.1f}", "df_effect": "2", "df_error": str(s["v2"])}
     add("Kestrel Edge", "one-way", table, "source table")
     s = three()
-    total = {"ss_effect": f"{s['ss']:.1f}", "ss_total": f"{s['ss'] + s['sse']:.1f}", "n_total": str(s["n"].sum()), "k_groups": "3"}
+    total = {"ss_effect": f"{s['ss']:.1f}", "ss_total": f"{s['ss'] + s['sse']:.1f}", "n_total": str(s["n"].sum()),
+         "k_groups": "3"}
     add("Larch Fold", "one-way", total, "source table with one line missing")
     s = three()
-    squares = {"ms_effect": f"{s['ss'] / 2:.1f}", "ms_error": f"{s['mse']:.1f}", "df_effect": "2", "df_error": str(s["v2"])}
+    squares = {"ms_effect": f"{s['ss'] / 2:.1f}", "ms_error": f"{s['mse']:.1f}", "df_effect": "2",
+         "df_error": str(s["v2"])}
     add("Mallow Green", "one-way", squares, "mean squares")
     s = three()
     eta = s["ss"] / (s["ss"] + s["sse"])
-    add("Nettle Hythe", "one-way", {"eta_squared": f"{eta:.3f}".lstrip("0"), "df_effect": "2", "df_error": str(s["v2"])}, "eta squared with dfs")
+    add("Nettle Hythe", "one-way", {"eta_squared": f"{eta:.3f}".lstrip("0"), "df_effect": "2",
+         "df_error": str(s["v2"])}, "eta squared with dfs")
     s = three(0.6)
     omega = 2 * (s["f"] - 1) / (2 * (s["f"] - 1) + s["n"].sum())
-    add("Oakham Reach", "one-way", {"omega_squared": f"{omega:.2f}".lstrip("0"), "n_total": str(s["n"].sum()), "k_groups": "3"}, "omega squared")
+    add("Oakham Reach", "one-way", {"omega_squared": f"{omega:.2f}".lstrip("0"), "n_total": str(s["n"].sum()),
+         "k_groups": "3"}, "omega squared")
     s = three(0.6)
     epsilon = 2 * (s["f"] - 1) / (2 * s["f"] + s["v2"])
-    add("Pine Sound", "one-way", {"epsilon_squared": f"{epsilon:.3f}", "df_effect": "2", "df_error": str(s["v2"])}, "epsilon squared")
+    add("Pine Sound", "one-way", {"epsilon_squared": f"{epsilon:.3f}", "df_effect": "2", "df_error": str(s["v2"])},
+         "epsilon squared")
     s = three()
-    add("Quarry Lane", "one-way", {"cohens_f": f"{np.sqrt(s['ss'] / s['sse']):.2f}", "df_effect": "2", "df_error": str(s["v2"])}, "Cohen's f")
+    add("Quarry Lane", "one-way", {"cohens_f": f"{np.sqrt(s['ss'] / s['sse']):.2f}", "df_effect": "2",
+         "df_error": str(s["v2"])}, "Cohen's f")
     s = three(0.5)
     eta = s["ss"] / (s["ss"] + s["sse"])
-    text = f"F(2, {s['v2']}) = {s['f']:.2f}, p = {p_text(s['p']).removeprefix('< ')}, η² = {eta:.2f}".replace("= .001,", "< .001,")
+    p_printed = p_text(s["p"]).removeprefix("< ")
+    text = f"F(2, {s['v2']}) = {s['f']:.2f}, p = {p_printed}, η² = {eta:.2f}".replace("= .001,", "< .001,")
     add("Rowan Weir", "one-way", {"reported": text}, "free text")
     s = three()
     slip = f"{s['f'] * 10:.1f}"
     wrong = {"f_value": slip, "df_effect": "2", "df_error": str(s["v2"])}
-    add("Sedge Moor", "one-way", group_cells(s, "n", "mean", "sd", mean_places=2, sd_places=2) | wrong, "planted: decimal point of F slipped")
+    add("Sedge Moor", "one-way", group_cells(s, "n", "mean", "sd", mean_places=2, sd_places=2) | wrong,
+         "planted: decimal point of F slipped")
     s = three(0.5)
     wrong = {f"sd_{j + 1}": f"{s['sd'][j] / np.sqrt(s['n'][j]):.2f}" for j in range(3)}
     printed = {"f_value": f"{s['f']:.2f}", "df_effect": "2", "df_error": str(s["v2"])}
-    add("Thistle Bank", "one-way", group_cells(s, "n", "mean", mean_places=2) | wrong | printed, "planted: standard errors in the SD columns")
+    add("Thistle Bank", "one-way", group_cells(s, "n", "mean", mean_places=2) | wrong | printed,
+         "planted: standard errors in the SD columns")
 
     s = two()
-    add("Upper Vetch", "two-group", {"t_value": f"{s['t']:.2f}", "df": str(s["v2"]), "n_1": str(s["n"][0]), "n_2": str(s["n"][1])}, "t with df and ns")
+    add("Upper Vetch", "two-group", {"t_value": f"{s['t']:.2f}", "df": str(s["v2"]), "n_1": str(s["n"][0]),
+         "n_2": str(s["n"][1])}, "t with df and ns")
     s = two()
-    add("Vale of Wick", "two-group", {"t_value": f"{s['t']:.2f}", "n_total": str(s["n"].sum())}, "t with N only: equal groups assumed for d")
+    add("Vale of Wick", "two-group", {"t_value": f"{s['t']:.2f}", "n_total": str(s["n"].sum())},
+         "t with N only: equal groups assumed for d")
     s = two()
     add("Willow Ford", "two-group", group_cells(s, "n", "mean", "sd"), "two groups")
     s = two(0.5)
-    f_row = {"f_value": f"{s['f']:.2f}", "df_effect": "1", "n_total": str(s["n"].sum()), "n_1": str(s["n"][0]), "n_2": str(s["n"][1]), "direction": "+"}
+    f_row = {"f_value": f"{s['f']:.2f}", "df_effect": "1", "n_total": str(s["n"].sum()), "n_1": str(s["n"][0]),
+         "n_2": str(s["n"][1]), "direction": "+"}
     add("Yarrow Hill", "two-group", f_row, "F with one df; the sign from the text")
     s = two()
-    add("Zinnia Court", "two-group", {"f_value": f"{s['f']:.2f}", "df_effect": "1", "df_error": str(s["v2"])}, "F with one df, no sign")
+    add("Zinnia Court", "two-group", {"f_value": f"{s['f']:.2f}", "df_effect": "1", "df_error": str(s["v2"])},
+         "F with one df, no sign")
     s = two(0.5)
-    add("Ashby East", "two-group", {"cohens_d": f"{s['d']:.2f}", "n_1": str(s["n"][0]), "n_2": str(s["n"][1])}, "printed d")
+    add("Ashby East", "two-group", {"cohens_d": f"{s['d']:.2f}", "n_1": str(s["n"][0]), "n_2": str(s["n"][1])},
+         "printed d")
     s = two(0.5)
     g = s["d"] * (1 - 3 / (4 * s["v2"] - 1))
     add("Ashby West", "two-group", {"hedges_g": f"{g:.2f}", "n_1": str(s["n"][0]), "n_2": str(s["n"][1])}, "printed g")
@@ -159,14 +181,18 @@ def rows_one_way() -> list[Row]:
     for j in range(2):
         half = stats.t.ppf(0.975, s["n"][j] - 1) * s["sd"][j] / np.sqrt(s["n"][j])
         limits |= {f"ci_low_{j + 1}": f"{s['mean'][j] - half:.2f}", f"ci_high_{j + 1}": f"{s['mean'][j] + half:.2f}"}
-    add("Clover Hatch", "two-group", group_cells(s, "n", "mean", mean_places=2) | limits, "confidence limits of the means")
+    add("Clover Hatch", "two-group", group_cells(s, "n", "mean", mean_places=2) | limits,
+         "confidence limits of the means")
     s = two(0.5)
     difference = s["mean"][0] - s["mean"][1]
     half = stats.t.ppf(0.975, s["v2"]) * np.sqrt(s["mse"] * (1 / s["n"]).sum())
-    limits = {"mean_difference": f"{difference:.2f}", "ci_low_difference": f"{difference - half:.2f}", "ci_high_difference": f"{difference + half:.2f}"}
-    add("Daisy Holm", "two-group", limits | {"n_1": str(s["n"][0]), "n_2": str(s["n"][1])}, "difference with confidence limits")
+    limits = {"mean_difference": f"{difference:.2f}", "ci_low_difference": f"{difference - half:.2f}",
+         "ci_high_difference": f"{difference + half:.2f}"}
+    add("Daisy Holm", "two-group", limits | {"n_1": str(s["n"][0]), "n_2": str(s["n"][1])},
+         "difference with confidence limits")
     s = one_way([22, 20, 25], 0.5)
-    add("Elder Strand", "one-way", group_cells(s, "n", "mean", "sd") | {"contrast": "1 - 3"}, "a contrast of two of three groups")
+    add("Elder Strand", "one-way", group_cells(s, "n", "mean", "sd") | {"contrast": "1 - 3"},
+         "a contrast of two of three groups")
     return rows
 
 
@@ -192,7 +218,8 @@ def rows_other_designs() -> list[Row]:
     corrected = {"f_value": f"{f:.2f}", "df_effect": "1.62", "df_error": "30.78", "k_groups": "3"}
     rows = [
         {"study": "Fallow Gate", "design": "paired", "note": "pairs: r follows from t and both SDs"} | paired,
-        {"study": "Glen Saltings", "design": "paired", "t_value": "2.61", "df": "27", "direction": "+", "note": "paired t only"},
+        {"study": "Glen Saltings", "design": "paired", "t_value": "2.61", "df": "27", "direction": "+",
+        "note": "paired t only"},
         {"study": "Heath Barrow", "design": "within", "note": "repeated-measures F"} | within,
         {"study": "Inch Meadow", "design": "within", "note": "all sums of squares"} | within | sums,
         {"study": "Jasmine Row", "design": "within", "note": "sphericity-corrected df"} | corrected,
@@ -229,9 +256,18 @@ def rows_other_designs() -> list[Row]:
     return [base | row for row in rows]
 
 
+# fmt: on
+
 CELLS = [
-    ("yes", "younger", "12", "53.1", "7.4"), ("yes", "older", "14", "55.6", "8.0"),
-    ("no", "younger", "13", "48.2", "7.9"), ("no", "older", "11", "52.9", "7.1"),
+    ("Poplar Stile 1", "", "yes", "younger", "12", "53.1", "7.4"), ("Poplar Stile 1", "", "yes", "older", "14",
+         "55.6", "8.0"),
+    ("Poplar Stile 1", "", "no", "younger", "13", "48.2", "7.9"), ("Poplar Stile 1", "", "no", "older", "11", "52.9",
+         "7.1"),
+    ("Ulex Head 1", "daily", "", "", "25", "53.9", "8.2"), ("Ulex Head 1", "weekly", "", "", "25", "51.6", "7.7"),
+    ("Ulex Head 1", "none", "", "", "25", "49.3", "8.0"),
+    ("Clary Moor 1", "garden, girls", "", "", "18", "54.2", "7.6"),
+    ("Clary Moor 1", "garden, boys", "", "", "20", "51.9", "8.3"), ("Clary Moor 1", "none", "", "", "37", "49.5",
+         "7.9"),
 ]  # fmt: skip
 
 
@@ -265,10 +301,10 @@ def write_workbook(path: Path, columns: list[str], rows: list[Row], cells: list[
 
 def main() -> None:
     """Write all demo sheets beside this file."""
-    names = ("analysis", "garden", "age", "n", "mean", "sd")
-    cells = [dict(zip(names, ("Poplar Stile 1", *cell), strict=True)) for cell in CELLS]
+    names = ("analysis", "group", "garden", "age", "n", "mean", "sd")
+    cells = [dict(zip(names, cell, strict=True)) for cell in CELLS]
     between = rows_one_way()
-    everything = between + rows_other_designs()
+    everything = between + rows_other_designs() + rows_other_reports()
     used = [c for c in COLUMNS if any(row.get(c) for row in between)]
     write_csv(HERE / "gardens.csv", used, between)
     used = [c for c in COLUMNS if any(row.get(c) for row in everything)]

@@ -52,6 +52,7 @@ _FOREIGN = re.compile(
     r"|hedges'?|robust|median|change)[ -]$",
     re.IGNORECASE,
 )
+_FOREIGN_LONGEST = 20
 _OTHER_TESTS = (
     (
         "a multivariate test",
@@ -136,6 +137,7 @@ class _Reader:
         self.mark, self.rounding, self.alpha = decimal_mark, rounding, alpha
         self.found: list[tuple[int, Statistic]] = []
         self.taken: list[tuple[int, int]] = []
+        self.used = bytearray(len(self.text))
 
     def number(self, raw: str, name: str) -> Reading:
         """A number of the text as a value of quantity ``name``."""
@@ -143,11 +145,12 @@ class _Reader:
 
     def free(self, span: tuple[int, int]) -> bool:
         """Whether nothing has been read from this part of the text."""
-        return all(span[1] <= start or end <= span[0] for start, end in self.taken)
+        return not any(self.used[span[0] : span[1]])
 
     def keep(self, span: tuple[int, int], *statistics: Statistic) -> None:
         """Record what a part of the text says."""
         self.taken.append(span)
+        self.used[span[0] : span[1]] = b"\x01" * (span[1] - span[0])
         self.found += [(span[0], statistic) for statistic in statistics]
 
     def read(self) -> None:
@@ -179,7 +182,7 @@ class _Reader:
     def statistic(self, match: re.Match[str]) -> None:
         """A name, its degrees of freedom, a relation sign and a number."""
         name, text = quantity_of(match["name"]), match.group()
-        if name is None or not self.free(match.span()) or _FOREIGN.search(self.text[: match.start()]):
+        if name is None or not self.free(match.span()) or _FOREIGN.search(self.text[max(match.start() - _FOREIGN_LONGEST, 0) : match.start()]):
             return
         inside = match["round"] or match["square"] or match["flat"] or ""
         dfs: tuple[Reading, ...] = ()

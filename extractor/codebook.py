@@ -134,6 +134,15 @@ class Codebook:
     responses: str = ""
     rename: Mapping[str, str] = field(default_factory=dict)
     path: str = ""
+    folded: Mapping[str, frozenset[Meaning]] = field(init=False, repr=False, compare=False)
+    """What ``columns`` may mean without regard to case, by ``normalised`` heading."""
+
+    def __post_init__(self) -> None:
+        folded: dict[str, frozenset[Meaning]] = {}
+        for heading, meaning in self.columns.items():
+            name = normalised(heading)
+            folded[name] = folded.get(name, frozenset()) | {meaning}
+        object.__setattr__(self, "folded", folded)
 
     def meaning(self, heading: str) -> Meaning | None:
         """What a heading of a sheet stands for; None where nobody knows it.
@@ -144,10 +153,9 @@ class Codebook:
         exact = _spaced(heading)
         if exact in self.columns:
             return self.columns[exact]
-        folded = normalised(heading)
-        alike = {meaning for known, meaning in self.columns.items() if normalised(known) == folded}
+        alike = self.folded.get(normalised(heading), frozenset())
         if len(alike) == 1 and len(exact) > 1:
-            return alike.pop()
+            return next(iter(alike))
         for pattern, quantity in self.patterns:
             if (found := pattern.fullmatch(exact)) is not None:
                 return (quantity, int(found["group"]))

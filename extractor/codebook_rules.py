@@ -10,6 +10,8 @@ from extractor.errors import InvalidCodebook
 from extractor.quantities import close_matches
 from extractor.reading import quoted
 
+MOST_WORDS = 200
+"""Headings of one key; each is compared with every column of a sheet."""
 Key = tuple[str, ...]
 """Where a value stands: its tables and its own key, such as ("assume", "correlation", "by")."""
 
@@ -68,6 +70,8 @@ class Checker:
     def words(self, key: Key, value: object) -> list[str]:
         """A text or a list of texts."""
         listed = value if isinstance(value, list) else [value]
+        if len(listed) > MOST_WORDS:
+            raise self.fail(key, f"lists {len(listed)} headings; the most is {MOST_WORDS}")
         return [
             self.word(key, word, "must be a text or a list of texts, none of them empty") for word in listed
         ]

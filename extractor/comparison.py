@@ -177,20 +177,25 @@ def _one_name(
     return named.astype(np.str_), notes
 
 
-def _extras(given: Stack, matching: Matching, tolerance: float) -> tuple[list[Column], list[str]]:
-    """Columns that the program does not know and at least two coders have."""
+def extra_headings(given: Stack) -> list[tuple[str, list[str | None]]]:
+    """Columns that the program does not know: their name, and the heading each coder gave them, None without one."""
     spelled: dict[str, list[str | None]] = {}
     for coder, table in enumerate(given.tables):
         for heading in table.extras.columns:
             found = spelled.setdefault(plain_label(heading), [None] * len(given.tables))
             found[coder] = found[coder] or heading
+    return [(next(h for h in headings if h is not None), headings) for headings in spelled.values()]
+
+
+def _extras(given: Stack, matching: Matching, tolerance: float) -> tuple[list[Column], list[str]]:
+    """Unknown columns that at least two coders have."""
     columns, notes = [], []
-    for headings in spelled.values():
-        name = next(heading for heading in headings if heading is not None)
-        if sum(heading is not None for heading in headings) < 2:
+    for name, headings in extra_headings(given):
+        having = [coder for coder, heading in enumerate(headings) if heading is not None]
+        if len(having) < 2:
             continue
         texts = extra_texts(given, headings)
-        if _is_free_text(texts[given.coder == int(np.flatnonzero([h is not None for h in headings])[0])]):
+        if _is_free_text(texts[given.coder == having[0]]):
             notes.append(f"column '{name}' holds running text and is not compared")
             continue
         numbers = _as_numbers(texts, given.tables[0])

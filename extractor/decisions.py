@@ -8,14 +8,11 @@ from __future__ import annotations
 
 import datetime
 import re
-import warnings
 import zipfile
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, fields, replace
-from itertools import islice
 from pathlib import Path
 
-import openpyxl
 from openpyxl.utils import get_column_letter
 
 from extractor.codebook import Codebook, normalised
@@ -24,9 +21,9 @@ from extractor.findings import Finding, Severity
 from extractor.quantities import VOCABULARY
 from extractor.reading import Reading, quoted
 from extractor.reported import read_number
-from extractor.source.grid import Grid, heading_text, is_blank
+from extractor.source.grid import Grid, NoRows, heading_text, is_blank
 from extractor.source.reader import read_grid
-from extractor.source.workbook import has_sheet
+from extractor.source.workbook import sheet_names
 from extractor.table import Numbers, ReportedTable, Variable
 from extractor.words import listed, printed_text
 
@@ -34,7 +31,7 @@ SHEET = "decisions"
 COLUMNS = ("row", "cell", "decision", "value", "source", "by", "on", "why")
 KEEP, CORRECT, WAIVE = WORDS = ("keep", "correct", "waive")
 _NEEDED = {KEEP: ("by",), CORRECT: ("cell", "value", "source", "by"), WAIVE: ("by", "why")}
-_ADDRESS = re.compile(r"\$?(?P<column>[A-Za-z]{1,3})\$?(?P<row>[1-9][0-9]*)|row (?P<only>[1-9][0-9]*)")
+_ADDRESS = re.compile(r"\$?(?P<column>[A-Za-z]{1,3})\$?(?P<row>[1-9][0-9]{0,9})|row (?P<only>[1-9][0-9]{0,9})")
 _NAMED = re.compile(r"(?P<heading>.*?)\s*\[(?P<address>[^\[\]]*)\]")
 _NO_FINDING = "decision without a finding"
 _DONE = {KEEP: "kept", CORRECT: "corrected", WAIVE: "waived"}
@@ -85,9 +82,15 @@ def read_decisions(path: str | Path) -> list[Decision]:
     ------
     UnreadableInput : the file cannot be read, or a column or line is not valid; the message names the cell.
     """
-    if zipfile.is_zipfile(path) and not _has_lines(Path(path)):
+    workbook = Path(path).is_file() and zipfile.is_zipfile(path)
+    if workbook and SHEET not in sheet_names(Path(path)):
         return []
-    grid = read_grid(path, lambda heading: normalised(heading) in COLUMNS, (SHEET,))
+    try:
+        grid = read_grid(path, lambda heading: normalised(heading) in COLUMNS, (SHEET,))
+    except NoRows:
+        if workbook:
+            return []
+        raise
     at: dict[str, int] = {}
     for index, heading in enumerate(grid.headings):
         name = normalised(heading)
@@ -107,26 +110,11 @@ def read_decisions(path: str | Path) -> list[Decision]:
     return [_decision(grid, at, line) for line in range(len(grid.row_numbers))]
 
 
-def _has_lines(path: Path) -> bool:
-    """Whether a workbook has a sheet of decisions with more than its headings."""
-    if not has_sheet(path, SHEET):
-        return False
-    with warnings.catch_warnings():
-        # openpyxl warns about extensions it drops
-        warnings.simplefilter("ignore")
-        book = openpyxl.load_workbook(path, read_only=True, keep_links=False)
-        sheet = next(sheet for sheet in book.worksheets if sheet.title.strip().casefold() == SHEET)
-        filled = (row for row in sheet.iter_rows(values_only=True) if not all(map(is_blank, row)))
-        more = len(list(islice(filled, 2))) > 1
-        book.close()
-    return more
-
-
 def _decision(grid: Grid, at: Mapping[str, int], line: int) -> Decision:
     raw = {name: grid.columns[index][line] for name, index in at.items()}
     texts = {name: _text(raw.get(name)) for name in COLUMNS}
     formats = grid.formats[at["value"]] if "value" in at else None
-    row = re.fullmatch(r"[1-9][0-9]*", texts["row"])
+    row = re.fullmatch(r"[1-9][0-9]{0,9}", texts["row"])
     found = Decision(
         row=int(row[0]) if row else 0,
         cell=texts["cell"],

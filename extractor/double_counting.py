@@ -131,9 +131,9 @@ def _arm_note(
     parts = []
     for group, others in arms:
         size, mean = (shown(table, (name, group), row) for name in ("n", "mean"))
-        where = [f"group {g} of row {table.row_numbers[r]}" for r, g in others[:_MOST_NAMED]]
+        there = [f"group {g} of row {table.row_numbers[r]}" for r, g in others[:_MOST_NAMED]]
         parts.append(
-            f"group {group} ({size}, {mean}) also is {listed(where)}".replace(f" of group {group}", "")
+            f"group {group} ({size}, {mean}) also is {listed(there)}".replace(f" of group {group}", "")
         )
     said = f"{'; '.join(parts)}: look whether one arm is compared several times"
     return _note(table, row, ARM, cells, said)

@@ -42,6 +42,9 @@ GENERAL = Shown(Display.GENERAL)
 UNDECIDED = Shown(Display.UNDECIDED)
 DATE = Shown(Display.DATE)
 
+_LONGEST = 255
+"""Longer codes are not what a spreadsheet program lets anyone type (common practice, no source)."""
+
 # One alternative per kind of token; the order matters, literals first.
 _TOKEN = re.compile(
     r'(?P<literal>"[^"]*"?|\\.|[_*].)'
@@ -110,6 +113,8 @@ def shown_by(code: str | None, value: float) -> Shown:
     """
     if not code:
         return GENERAL
+    if len(code) > _LONGEST:
+        return UNDECIDED
     sections, conditional = _parse(code)
     numeric = sections[:3]
     if conditional:

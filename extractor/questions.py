@@ -16,17 +16,30 @@ from itertools import combinations
 import numpy as np
 from numpy.typing import NDArray
 
-from extractor.catalogue.relation import Grade, Relation, catalogue
+from extractor.catalogue.relation import Grade, Relation
 from extractor.choice import NOTHING, Chosen, grade_of
+from extractor.coding import NO_CONTRAST
 from extractor.conversion import Conversion
+from extractor.engine import Engine, Estimate
 from extractor.evidence import Block, fractional_df
-from extractor.situation import GROUPED, Situation, Wanted, World, askable_in, uncertain_counts, worlds
+from extractor.planner import Route
+from extractor.quantities import is_signed
+from extractor.situation import (
+    GROUPED,
+    Situation,
+    Wanted,
+    World,
+    askable_in,
+    planned,
+    uncertain_counts,
+    worlds,
+)
 from extractor.study.terms import factors_of, terms_per_row
 from extractor.table import BoolArray, ReportedTable
 from extractor.typical import width_left
 from extractor.unlock import EASE, Ease, any_point, follows, graph, no_assumption, smallest_sets
 
-_CANDIDATES = 16
+_CANDIDATES = 10
 _CLASSICAL = frozenset({"f_value", "t_value", "p_value", "df_effect", "df_error"})
 
 
@@ -132,7 +145,7 @@ class _Said:
         self.modelled: BoolArray = several
         self.ungrouped: BoolArray = (design == "within") & (several | joint)
         self.fractional = fractional_df(table)
-        self.compared: BoolArray = np.asarray(table.fact("contrast") != "none")
+        self.compared: BoolArray = np.asarray(table.fact("contrast") != NO_CONTRAST)
 
     def alike(self, block: Block, rows: NDArray[np.intp]) -> Iterator[NDArray[np.intp]]:
         """The rows of a block, split by these facts."""
@@ -160,6 +173,9 @@ class _Said:
         if self.fractional[at]:
             corrected = block.design in ("within", "mixed")
             askable -= {"df_effect", "df_error"} if corrected else _CLASSICAL
+        if is_signed(chosen.metric) and not self.compared[at]:
+            # the row compares more than two levels, and no answer makes it a difference of two
+            askable = frozenset()
         one = int(_one_df(block)[first])
         return Situation(
             design=block.design,
@@ -184,13 +200,22 @@ def _one_df(block: Block) -> NDArray[np.int64]:
 
 def _sterile(chosen: Chosen, rows: NDArray[np.intp]) -> frozenset[str]:
     """Relations that give these rows no value although all their inputs have one."""
+    block = chosen.block
+    known: dict[str, Estimate] = {}
+    for name, leaf in block.leaves.items():
+        if np.isfinite(leaf.value[rows]).all():
+            known[name] = Estimate(leaf.value[rows], leaf.low[rows], leaf.high[rows])
+    left = list(graph(block.design, any_point, frozenset(), None))
     found: set[str] = set()
-    for route in chosen.routes:
-        steps = chosen.engine.all_steps(route)
-        valued = {name: np.isfinite(e.value[rows]).all() for name, e in steps.items()}
-        for quantity, relation in route.steps.items():
-            if not valued[quantity] and all(valued[need] for need in catalogue()[relation].needs):
-                found.add(relation)
+    while due := [r for r in left if known.keys() >= set(r.needs)]:
+        left = [r for r in left if r not in due]
+        for relation in due:
+            step = Route(relation.gives, frozenset(relation.needs), {relation.gives: relation.name})
+            given = Engine(known).run(step)
+            if not np.isfinite(given.value).all():
+                found.add(relation.name)
+            else:
+                known.setdefault(relation.gives, given)
     return frozenset(found)
 
 
@@ -215,6 +240,11 @@ def _sets(situation: Situation, wanted: Wanted, aim: Aim) -> list[frozenset[str]
         each = (_does(world, wanted, aim, surely) for world in worlds(situation, asked))
         return all(each) if surely else any(each)
 
+    def routed(asked: frozenset[str]) -> bool:
+        free = aim is Aim.FREES
+        each = worlds(situation, asked)
+        return all(planned(world, wanted.metric, wanted.standardizer, free=free) for world in each)
+
     if does(frozenset(), False):
         return []
     kept = []
@@ -222,7 +252,7 @@ def _sets(situation: Situation, wanted: Wanted, aim: Aim) -> list[frozenset[str]
         parts = (
             frozenset(p) for size in range(len(asked) - 1, 0, -1) for p in combinations(sorted(asked), size)
         )
-        if does(asked, True) and not any(does(part, False) for part in parts):
+        if does(asked, True) and not any(does(part, False) for part in parts) and routed(asked):
             kept.append(asked)
     return kept
 

@@ -128,7 +128,7 @@ _RELATION = re.compile(r"<=|>=|=<|=>|[<>=≤≥≦≧⩽⩾]")
 _NOT_SIGNIFICANT = re.compile(r"n\. ?s\.?|ns|not significant|non-? ?significant|insignificant", re.IGNORECASE)
 _MARKS = re.compile(
     r"(?P<number>.*[0-9%⁰¹²³⁴⁵⁶⁷⁸⁹])"
-    r"(?P<marks>(?: ?(?:[*†‡§¶#‖]+|\^[a-z0-9]{1,2}|[ᵃᵇᶜᵈᵉᶠᵍʰ]+))+"
+    r"(?P<marks>(?: ?(?:[*†‡§¶#‖]|\^[a-z0-9]{1,2}|[ᵃᵇᶜᵈᵉᶠᵍʰ]))+"
     r"|(?<=[0-9])[⁰¹²³⁴⁵⁶⁷⁸⁹]+| ?[a-d](?:, ?[a-d])*|[.,;])"
 )
 _TAILS = re.compile(r"(one|two|1|2)[- ]?(?:tailed|sided|tails?)?", re.IGNORECASE)

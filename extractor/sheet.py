@@ -36,6 +36,10 @@ _SIGNS = {"+": "+", "-": "-", "1": "+", "+1": "+", "-1": "-"}
 _WORDS: dict[str, tuple[str, ...]] = {"design": tuple(DESIGNS), "responses": RESPONSES}
 _NEARLY = 0.85
 """How alike a heading must be to a known one to be pointed out as a misspelling."""
+_LONGEST_NAME = 60
+"""Longer headings are sentences."""
+_MOST_COMPARED = 500
+"""So many columns nobody knows were not headed by hand."""
 
 
 def read_table(source: str | Path | pd.DataFrame, codebook: Codebook) -> ReportedTable:
@@ -79,6 +83,7 @@ class _Assembly:
         self.facts: dict[str, ObjectArray] = {}
         self.extras: dict[str, ObjectArray] = {}
         self.notes = list(grid.notes)
+        self.known = [*canonical_names(), *codebook.folded]
         self.problems: list[Remark] = []
         self.conflicts: list[Remark] = []
         self.understood: list[Remark] = []
@@ -222,7 +227,7 @@ class _Assembly:
         else:
             heading = f"column {self.letters[index]}"
             self.notes.append(f"{heading} has no heading; its cells are carried along unread")
-        if heading in self.extras:
+        while heading in self.extras:
             heading = f"{heading} [{self.letters[index]}]"
         texts = (raw if isinstance(raw, str) else "" if raw is None else heading_text(raw) for raw in column)
         self.extras[heading] = np.fromiter(texts, dtype=object, count=self.rows)
@@ -230,8 +235,9 @@ class _Assembly:
     def point_out(self, heading: str) -> None:
         """Note a heading that looks like one that would have been read."""
         name = normalised(heading)
-        known = [*canonical_names(), *map(normalised, self.codebook.columns)]
-        near = difflib.get_close_matches(name, known, n=1, cutoff=_NEARLY)
+        if len(name) > _LONGEST_NAME or len(self.extras) > _MOST_COMPARED:
+            return
+        near = difflib.get_close_matches(name, self.known, n=1, cutoff=_NEARLY)
         found = re.fullmatch(r"(?P<name>[a-z_0-9]*[a-z])_?(?P<group>[0-9]*)", name)
         quantity = VOCABULARY.get(found["name"]) if found is not None else None
         if found is not None and quantity is not None and quantity.shape is Shape.GROUP:

@@ -11,9 +11,9 @@ from collections.abc import Iterator
 from dataclasses import dataclass, replace
 from functools import lru_cache
 
-from extractor.catalogue.relation import catalogue
+from extractor.catalogue.relation import Grade, catalogue
 from extractor.choice import STANDARDIZED
-from extractor.planner import Start
+from extractor.planner import Start, search
 from extractor.quantities import STANDARDIZERS, VOCABULARY, Shape
 from extractor.sampling.precision import limits_of, standardizer_of, variances_of
 from extractor.unlock import EASE, any_point, follows, graph, no_assumption
@@ -146,6 +146,29 @@ def _bounded(world: World, assuming: bool, standardizer: str | None) -> frozense
     relations = graph(world.design, any_point if assuming else no_assumption, world.without, standardizer)
     known = world.points if assuming else world.start.known
     return frozenset(follows(known | world.start.bounds, relations))
+
+
+def planned(world: World, metric: str, standardizer: str, *, free: bool) -> bool:
+    """Whether the planner keeps a route that surely gives a value; of routes from one evidence it keeps a single one.
+
+    ``free`` : the route must suppose nothing that nobody reported.
+    """
+    doubtful = uncertain_counts() | world.without
+    if _all_sure(world, doubtful):
+        return True
+    routes = search(world.start, world.design, standardizer).get(metric, ())
+    return any(
+        route.grade < (Grade.ASSUMPTION if free else Grade.BOUND) and not doubtful & set(route.steps.values())
+        for route in routes
+    )
+
+
+@lru_cache(maxsize=1 << 12)
+def _all_sure(world: World, doubtful: frozenset[str]) -> bool:
+    """Whether no relation that may give no value has all it needs."""
+    every = graph(world.design, any_point, frozenset(), None)
+    have = follows(world.points | world.start.bounds, every)
+    return not any(r.name in doubtful and have.issuperset(r.needs) for r in every)
 
 
 @dataclass(frozen=True, slots=True)

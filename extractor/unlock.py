@@ -20,7 +20,7 @@ from extractor.quantities import VOCABULARY, Shape
 
 _LARGEST = 4
 """Quantities in a set: with more, nobody answers."""
-_KEPT = 32
+_KEPT = 24
 """Sets kept per quantity while they are combined."""
 
 
@@ -49,12 +49,12 @@ _EASE = {
 
 EASE: dict[str, Ease] = {
     **dict.fromkeys(("direction", "tails", "confidence_level"), Ease.ARTICLE),
-    **dict.fromkeys(("n", "mean", "sd", "n_total", "k_groups", "mean_difference"), Ease.SUMMARY),
+    **dict.fromkeys(("n", "mean", "sd", "n_total", "k_groups"), Ease.SUMMARY),
     **dict.fromkeys(("mean_pre", "sd_pre", "mean_post", "sd_post"), Ease.SUMMARY),
     **dict.fromkeys(("mean_change", "sd_change", "sd_difference", "adjusted_mean"), Ease.SUMMARY),
     **dict.fromkeys(("count_a", "count_b", "count_c", "count_d", "cluster_size"), Ease.SUMMARY),
     **dict.fromkeys(("f_value", "t_value", "p_value", "df_effect", "df_error"), Ease.TEST),
-    **dict.fromkeys(("se_difference", "n_covariates"), Ease.TEST),
+    **dict.fromkeys(("mean_difference", "se_difference", "n_covariates"), Ease.TEST),
     **dict.fromkeys(("ms_error", "ss_effect", "ss_error", "ss_total", "ss_subjects"), Ease.TABLE),
     **dict.fromkeys(("correlation", "covariate_r", "icc"), Ease.SCORES),
 }
@@ -207,12 +207,16 @@ class _Labels:
         """The smallest of the sets, the easiest first."""
         kept: list[int] = []
         for mask in sorted(masks, key=self._cost):
-            if mask.bit_count() > _LARGEST or any(mask & other == other for other in kept):
+            if mask.bit_count() > _LARGEST:
                 continue
-            kept = [other for other in kept if mask & other != mask]
-            kept.append(mask)
-            if len(kept) == _KEPT:
-                break
+            for other in kept:
+                if mask & other == other:
+                    break
+            else:
+                kept = [other for other in kept if mask & other != mask]
+                kept.append(mask)
+                if len(kept) == _KEPT:
+                    break
         return kept
 
     def sets(self, goals: frozenset[str]) -> list[frozenset[str]]:

@@ -98,7 +98,9 @@ def within(rng: np.random.Generator) -> Truth:
 def pre_post(rng: np.random.Generator) -> Truth:
     sizes = rng.integers(10, 40, 2)
     before = [rng.normal(5, 2, n) for n in sizes]
-    after = [0.6 * b + rng.normal(2 + s, 1.5, len(b)) for b, s in zip(before, rng.normal(0.5, 1, 2), strict=True)]
+    after = [
+        0.6 * b + rng.normal(2 + s, 1.5, len(b)) for b, s in zip(before, rng.normal(0.5, 1, 2), strict=True)
+    ]
     change = [a - b for a, b in zip(after, before, strict=True)]
     n = int(sizes.sum())
     error = float(sum(((c - c.mean()) ** 2).sum() for c in change) / (n - 2))
@@ -118,7 +120,9 @@ def pre_post(rng: np.random.Generator) -> Truth:
 def ancova(rng: np.random.Generator) -> Truth:
     sizes = rng.integers(12, 40, 2)
     covariate = [rng.normal(10, 2, n) for n in sizes]
-    scores = [0.6 * x + rng.normal(s, 1.5, len(x)) for x, s in zip(covariate, rng.normal(0, 1, 2), strict=True)]
+    scores = [
+        0.6 * x + rng.normal(s, 1.5, len(x)) for x, s in zip(covariate, rng.normal(0, 1, 2), strict=True)
+    ]
     n = int(sizes.sum())
     x_within = np.concatenate([x - x.mean() for x in covariate])
     y_within = np.concatenate([y - y.mean() for y in scores])
@@ -135,9 +139,7 @@ def ancova(rng: np.random.Generator) -> Truth:
     for i in (1, 2):
         found[f"n_{i}"] = int(sizes[i - 1])
         found[f"sd_{i}"] = float(scores[i - 1].std(ddof=1))
-        found[f"adjusted_mean_{i}"] = float(
-            scores[i - 1].mean() - slope * (covariate[i - 1].mean() - centre)
-        )
+        found[f"adjusted_mean_{i}"] = float(scores[i - 1].mean() - slope * (covariate[i - 1].mean() - centre))
     return found
 
 
@@ -192,7 +194,11 @@ def review(seed: int, rows: int) -> tuple[pd.DataFrame, list[Truth]]:
     for at in range(rows):
         design, make = kinds[at % len(kinds)]
         truth = make(rng)
-        line: dict[str, str] = {"study": f"Study {at // 2 + 1}", "outcome": f"outcome {at % 5}", "design": design}
+        line: dict[str, str] = {
+            "study": f"Study {at // 2 + 1}",
+            "outcome": f"outcome {at % 5}",
+            "design": design,
+        }
         shown = float(rng.choice([0.15, 0.3, 0.5]))
         stems = sorted({_stem(name) for name in truth})
         for stem in (s for s in stems if rng.random() < shown):

@@ -4,10 +4,12 @@ from __future__ import annotations
 
 from pathlib import Path
 
+import pandas as pd
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
 
+from extractor.api import convert
 from extractor.codebook import (
     EFFECT_COLUMNS,
     Codebook,
@@ -20,6 +22,21 @@ from extractor.codebook import (
 from extractor.errors import InvalidCodebook
 from extractor.quantities import DESIGNS, FACTS, VOCABULARY, Role, Shape
 from extractor.table import Assumption
+
+READY = [
+    "one-way",
+    "two-group",
+    "p-with-n",
+    "factorial",
+    "within",
+    "paired",
+    "mixed",
+    "pre-post-control",
+    "ancova",
+    "rank-tests",
+    "two-by-two",
+]
+"""In the order of codebooks/README.md."""
 
 FULL = """\
 title = "Our review"
@@ -223,7 +240,7 @@ def test_swapping_two_names_is_no_clash() -> None:
     assert set(book.rename) <= set(EFFECT_COLUMNS)
 
 
-@pytest.mark.parametrize("name", ["one-way", "two-group", "p-with-n"])
+@pytest.mark.parametrize("name", READY)
 def test_ready_codebooks(name: str) -> None:
     assert name in ready_codebooks()
     book = load_codebook(name)
@@ -236,16 +253,59 @@ def test_ready_codebooks(name: str) -> None:
     assert book.meaning("f_value") == ("f_value", None)
 
 
+def test_all_ready_codebooks_are_listed() -> None:
+    assert ready_codebooks() == sorted(READY)
+
+
+def _sections() -> dict[str, str]:
+    """The sections of codebooks/README.md about ready codebooks, by name."""
+    folder = Path(__file__).resolve().parent.parent / "codebooks"
+    parts = (folder / "README.md").read_text(encoding="utf-8").partition("## How cells are read")[0]
+    return {part.partition("`")[0]: part for part in parts.split("### `")[1:]}
+
+
+def _example(section: str) -> pd.DataFrame:
+    """The example rows of a section, as a sheet."""
+    lines = [
+        [cell.strip() for cell in line.strip("|").split("|")]
+        for line in section.splitlines()
+        if line[:1] == "|"
+    ]
+    width = len(lines[0])
+    return pd.DataFrame([line for line in lines[2:] if len(line) == width], columns=lines[0])
+
+
 def test_ready_codebooks_know_their_readme() -> None:
     """The tables of codebooks/README.md show headings the ready codebooks take."""
-    folder = Path(__file__).resolve().parent.parent / "codebooks"
-    sections = (folder / "README.md").read_text(encoding="utf-8").split("### `")[1:]
-    assert [section.partition("`")[0] for section in sections] == ["one-way", "two-group", "p-with-n"]
-    for section in sections:
-        book = load_codebook(section.partition("`")[0])
-        header = next(line for line in section.splitlines() if line.startswith("| Study"))
-        for heading in header.strip("| ").split(" | "):
+    assert list(_sections()) == READY
+    for name, section in _sections().items():
+        book = load_codebook(name)
+        for heading in _example(section).columns:
             assert book.meaning(heading) is not None, heading
+
+
+@pytest.mark.parametrize(
+    ("name", "metric"),
+    [
+        ("one-way", "omega_squared"),
+        ("two-group", "hedges_g"),
+        ("p-with-n", "omega_squared"),
+        ("factorial", "eta_squared"),
+        ("within", "partial_eta_squared"),
+        ("paired", "hedges_g"),
+        ("mixed", "hedges_g"),
+        ("pre-post-control", "hedges_g"),
+        ("ancova", "cohens_d"),
+        ("rank-tests", "hedges_g"),
+        ("two-by-two", "log_odds_ratio"),
+    ],
+)
+def test_examples_of_the_readme_convert(name: str, metric: str) -> None:
+    rows = _example(_sections()[name])
+    result = convert(rows, metric, name)
+    assert set(result.effects["status"]) == {"converted"}
+    assert result.effects["variance"].notna().all()
+    assert not set(result.findings["severity"]) & {"inconsistent", "impossible"}
 
 
 def test_the_readme_shows_a_valid_codebook() -> None:

@@ -4,33 +4,20 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterator
-from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
 from extractor.audit.constraints import Cell, Constraints, constraints_of
-from extractor.audit.diagnosis import Suspect, attempt, pairs, slack, suspects
-from extractor.audit.explanations import Repair, chance, gauge, repairs
+from extractor.audit.diagnosis import Suspect, pairs, slack, suspects
+from extractor.audit.fits import LIKELY, Fit, fits_of
 from extractor.audit.propagation import judges_of, propagate
 from extractor.evidence import Block
 from extractor.findings import Finding, Severity
 from extractor.planner import Start, search
 from extractor.quantities import VOCABULARY
-from extractor.table import BoolArray, FloatArray, ReportedTable
+from extractor.table import ReportedTable
 from extractor.words import listed, plain, printed_text
-
-_LIKELY = 0.5
-"""Repairs that a random wrong value would fit more often than this explain nothing."""
-
-
-@dataclass(frozen=True, slots=True)
-class Fit:
-    """A repair after which a row is consistent, and how often it would have fitted by chance."""
-
-    repair: Repair
-    value: float
-    chance: float
 
 
 def contradictions(block: Block, table: ReportedTable) -> Iterator[Finding]:
@@ -66,8 +53,8 @@ def _diagnosed(
     constraints: Constraints, positions: NDArray[np.intp], table: ReportedTable
 ) -> Iterator[Finding]:
     stretch = slack(constraints)
-    single = suspects(constraints)
-    fits = _fits(constraints, single)
+    single, without = suspects(constraints)
+    fits = fits_of(constraints, single, without)
     freed = np.zeros(constraints.rows, dtype=bool)
     for suspect in single:
         freed |= suspect.frees
@@ -81,61 +68,6 @@ def _diagnosed(
         )
 
 
-def _fits(constraints: Constraints, single: list[Suspect]) -> list[list[Fit]]:
-    """Repairs that make each row consistent, the least likely to fit by chance first."""
-    frees = {suspect.cell: suspect for suspect in single}
-    tried: list[tuple[NDArray[np.intp], Repair]] = []
-    for repair in repairs(constraints):
-        where = repair.applies
-        if len(repair.cells) == 1:
-            suspect = frees.get(repair.cells[0])
-            where = where & suspect.frees if suspect else np.zeros_like(where)
-        rows = np.flatnonzero(where)
-        if len(rows):
-            tried.append((rows, repair))
-    found: list[list[Fit]] = [[] for _ in range(constraints.rows)]
-    fitting: list[tuple[NDArray[np.intp], Repair]] = []
-    for (_, repair), trial in zip(
-        tried, attempt(constraints.design, ((r, p.domain) for r, p in tried)), strict=True
-    ):
-        if trial.consistent.any():
-            fitting.append((trial.rows[trial.consistent], repair))
-    gauges = attempt(
-        constraints.design, ((rows, constraints.freed(repair.cells)) for rows, repair in fitting)
-    )
-    for (rows, repair), trial in zip(fitting, gauges, strict=True):
-        low, high = _gauged(trial.narrowed.low, repair), _gauged(trial.narrowed.high, repair)
-        share = chance(repair, low, high, _printed_gauge(constraints, repair, rows, low, high))
-        for row, value, by_chance in zip(rows, repair.value[rows], share, strict=True):
-            found[row].append(Fit(repair, float(value), float(by_chance)))
-    return [_ranked(f) for f in found]
-
-
-def _gauged(ends: dict[str, FloatArray], repair: Repair) -> FloatArray:
-    name = gauge(repair)
-    if name not in ends:
-        return np.full(len(next(iter(ends.values()))), np.nan)
-    column = repair.cells[0].column
-    return ends[name] if column is None or ends[name].ndim == 1 else ends[name][:, column]
-
-
-def _printed_gauge(
-    constraints: Constraints, repair: Repair, rows: NDArray[np.intp], low: FloatArray, high: FloatArray
-) -> FloatArray:
-    if gauge(repair) != repair.cells[0].quantity:
-        return (low + high) / 2
-    ends = constraints.interval(repair.cells[0])
-    return ((ends[0] + ends[1]) / 2)[rows]
-
-
-def _ranked(fits: list[Fit]) -> list[Fit]:
-    """One fit per wording and cells, those a random value would hardly meet first."""
-    best: dict[tuple[str, tuple[Cell, ...]], Fit] = {}
-    for fit in sorted(fits, key=lambda f: f.chance):
-        best.setdefault((fit.repair.words, fit.repair.cells), fit)
-    return [fit for fit in best.values() if fit.chance <= _LIKELY]
-
-
 def _finding(
     constraints: Constraints,
     row: int,
@@ -146,24 +78,25 @@ def _finding(
     fits: list[Fit],
     couples: list[tuple[Cell, Cell]],
 ) -> Finding:
-    order = {cell: rank for rank, cell in enumerate(c for fit in fits for c in fit.repair.cells)}
+    weak = [fit for fit in fits if fit.chance > LIKELY]
+    # where no cell alone accounts for the row, a weak explanation is better than none
+    fits = [fit for fit in fits if fit.chance <= LIKELY or not single]
+    order = {cell: rank for rank, cell in reversed(list(enumerate(c for fit in fits for c in fit.cells)))}
     single = sorted(single, key=lambda s: (order.get(s.cell, math.inf), _displacement(constraints, s, row)))
-    named = list(dict.fromkeys([*(fits[0].repair.cells if fits else ()), *(s.cell for s in single)]))
+    # a cell that only a repair of several cells could put right is under suspicion too, after the others
+    also = (cell for fit in [*fits, *weak] for cell in fit.cells)
+    named = list(dict.fromkeys([*(fits[0].cells if fits else ()), *(s.cell for s in single), *also]))
     if not named:
         named = list(dict.fromkeys(c for couple in couples for c in couple)) or list(constraints.cells)
     number = int(table.row_numbers[position])
     first = next((s for s in single if s.cell == named[0]), None)
-    message = _message(
-        constraints.design,
-        frozenset(constraints.domain.low),
-        table,
-        position,
-        named,
-        first,
-        row,
-        bool(couples),
-    )
-    repair = _repair_words(fits, row) if fits else "no single-cell explanation among the usual slips"
+    if fits and len(fits[0].cells) > 1:
+        message = _together(fits[0].cells, bool(single))
+    elif first is not None:
+        message = _apart(constraints, table, position, first, row, {c.quantity for c in named})
+    else:
+        message = _stuck(named, bool(couples))
+    repair = _repair_words(fits[0]) if fits else "no single-cell explanation among the usual slips"
     severity = Severity.DOUBTFUL if stretch <= 1 else Severity.INCONSISTENT
     if stretch <= 1:
         message += f"; widening every printed value by {stretch:.2g} units in its last place reconciles them"
@@ -189,31 +122,35 @@ def _displacement(constraints: Constraints, suspect: Suspect, row: int) -> float
     return float(gap / max(abs(low), abs(high), 1e-300))
 
 
-def _message(
-    design: str,
-    known: frozenset[str],
-    table: ReportedTable,
-    position: int,
-    named: list[Cell],
-    first: Suspect | None,
-    row: int,
-    coupled: bool,
-) -> str:
-    if first is None:
-        cells = listed(sorted({_symbol(c) for c in named}))
-        why = (
-            "no single cell accounts for it, two together could"
-            if coupled
-            else "no one or two cells account for it"
-        )
-        return f"the printed {cells} cannot hold together; {why}"
-    evidence = _evidence(design, known, first.cell, {c.quantity for c in named})
-    low, high = float(first.low[row]), float(first.high[row])
-    symbol = _symbol(first.cell) + (
-        f" of group {first.cell.column + 1}" if first.cell.column is not None else ""
+def _together(cells: tuple[Cell, ...], alone: bool) -> str:
+    """What a repair of several cells puts right, in words."""
+    words = listed(list(dict.fromkeys(_SAID.get(c.quantity) or _symbol(c) for c in cells)))
+    why = "" if alone else "; no single cell accounts for it"
+    return f"the printed {words} and the other numbers cannot hold together{why}"
+
+
+def _stuck(named: list[Cell], coupled: bool) -> str:
+    """A row that no single cell and no repair puts right, in words."""
+    cells = listed(sorted({_symbol(c) for c in named}))
+    why = (
+        "no single cell accounts for it, two together could"
+        if coupled
+        else "no one or two cells account for it"
     )
+    return f"the printed {cells} cannot hold together; {why}"
+
+
+def _apart(
+    constraints: Constraints, table: ReportedTable, position: int, first: Suspect, row: int, named: set[str]
+) -> str:
+    """What the first suspect says, and what the others allow it to say, in words."""
+    evidence = _evidence(constraints.design, frozenset(constraints.domain.low), first.cell, named)
+    symbol, column = _symbol(first.cell), first.cell.column
+    symbol += f" of group {column + 1}" if column is not None else ""
     verb = "allow" if evidence.endswith("s") or " and " in evidence else "allows"
-    return f"{evidence} {verb} {symbol} {_range(low, high)}; printed is {printed_text(table, first.cell.variable, position)}"
+    allowed = _range(float(first.low[row]), float(first.high[row]))
+    printed = printed_text(table, first.cell.variable, position)
+    return f"{evidence} {verb} {symbol} {allowed}; printed is {printed}"
 
 
 _SAID = {"n": "ns", "mean": "means", "sd": "SDs", "se": "SEs", "df_effect": "dfs", "df_error": "dfs"}
@@ -226,7 +163,7 @@ def _evidence(design: str, known: frozenset[str], cell: Cell, named: set[str]) -
     route = max(routes, key=lambda r: len(r.leaves & named), default=None)
     if route is None:
         leaves = sorted(named - {cell.quantity}) if len(named) > 1 else []
-        words = ["other groups" if cell.column is not None else "other numbers"] if not leaves else leaves
+        words = leaves or ["other groups" if cell.column is not None else "other numbers"]
     else:
         words = sorted(route.leaves - _UNSAID)
     return f"the {listed(list(dict.fromkeys(_SAID.get(w) or _symbol_of(w) for w in words)))}"
@@ -248,15 +185,15 @@ def _symbol(cell: Cell) -> str:
     return VOCABULARY[cell.quantity].symbol
 
 
-def _repair_words(fits: list[Fit], row: int) -> str:
-    best = fits[0]
-    value = f", {plain(best.value)}," if len(best.repair.cells) == 1 and np.isfinite(best.value) else ""
-    return f"{best.repair.words}{value} would fit"
+def _repair_words(best: Fit) -> str:
+    value = f", {plain(best.value)}," if len(best.cells) == 1 and np.isfinite(best.value) else ""
+    by_chance = "" if best.chance <= LIKELY else ", as by chance it often would"
+    return f"{best.repair.words}{value} would fit{by_chance}"
 
 
 def _explanation(fits: list[Fit]) -> str:
     said = []
     for fit in fits[:3]:
-        where = ", ".join(dict.fromkeys(_symbol(c) for c in fit.repair.cells))
+        where = ", ".join(dict.fromkeys(_symbol(c) for c in fit.cells))
         said.append(f"{fit.repair.words} ({where}; fits a random wrong value {fit.chance:.1%} of the time)")
     return "; ".join(said) if said else "no single-cell explanation"

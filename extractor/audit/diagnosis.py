@@ -2,14 +2,15 @@
 
 Freeing a cell lets its interval become its support. If the row is then consistent, that cell alone could be the
 fault, and the interval it gets is what the others imply (minimal diagnoses: Reiter 1987; de Kleer & Williams 1987).
-The true values survive every narrowing, so with one fault its cell is always among the suspects.
+The true values survive every narrowing, so with one fault its cell is always among the suspects. Freeing more leaves
+more room, so cells of one quantity are freed together first, and one by one only where that helped.
 """
 
 from __future__ import annotations
 
 from collections.abc import Iterable, Iterator
 from dataclasses import dataclass
-from itertools import combinations
+from itertools import combinations_with_replacement
 
 import numpy as np
 from numpy.typing import NDArray
@@ -24,6 +25,8 @@ SLACK_LIMIT = 4096.0
 """Widening by more units in the last place than this is not looked for: the slack is infinite."""
 
 _BATCH = 40_000
+_REACHES = 2.0 ** np.arange(-3, 13)
+_BETWEEN = np.arange(1, 8) / 8
 
 
 @dataclass(frozen=True, slots=True)
@@ -85,18 +88,35 @@ def _unknown(quantity: str, like: Domain, side: int) -> FloatArray:
     return np.full(len(next(iter(like.low.values()))), support.low if side < 0 else support.high)
 
 
-def suspects(constraints: Constraints) -> list[Suspect]:
-    """Every cell that could alone be at fault in some row, with the interval the others imply."""
+def suspects(constraints: Constraints) -> tuple[list[Suspect], dict[str, BoolArray]]:
+    """Every cell that could alone be at fault in some row, with the interval the others imply.
+
+    Also, for each printed quantity, the rows that are consistent once all its cells are freed.
+    """
     everywhere = np.arange(constraints.rows)
-    trials = attempt(
-        constraints.design, ((everywhere, constraints.freed([cell])) for cell in constraints.cells)
-    )
-    found = []
-    for cell, trial in zip(constraints.cells, trials, strict=True):
+    names = list(dict.fromkeys(cell.quantity for cell in constraints.cells))
+    together = [[cell for cell in constraints.cells if cell.quantity == name] for name in names]
+    trials = attempt(constraints.design, ((everywhere, constraints.freed(cells)) for cells in together))
+    found: dict[Cell, Suspect] = {}
+    without: dict[str, BoolArray] = {}
+    single: list[tuple[Cell, NDArray[np.intp]]] = []
+    for name, cells, trial in zip(names, together, trials, strict=True):
+        without[name] = trial.consistent
+        if not trial.consistent.any():
+            continue
+        if len(cells) == 1:
+            found[cells[0]] = Suspect(cells[0], trial.consistent, *interval_of(trial.narrowed, cells[0]))
+        else:
+            single.extend((cell, np.flatnonzero(trial.consistent)) for cell in cells)
+    apart = attempt(constraints.design, ((rows, constraints.freed([cell])) for cell, rows in single))
+    for (cell, rows), trial in zip(single, apart, strict=True):
         if trial.consistent.any():
-            low, high = interval_of(trial.narrowed, cell)
-            found.append(Suspect(cell, trial.consistent, low, high))
-    return found
+            frees = np.zeros(constraints.rows, dtype=bool)
+            frees[rows] = trial.consistent
+            low, high = np.full(constraints.rows, np.nan), np.full(constraints.rows, np.nan)
+            low[rows], high[rows] = interval_of(trial.narrowed, cell)
+            found[cell] = Suspect(cell, frees, low, high)
+    return [found[cell] for cell in constraints.cells if cell in found], without
 
 
 def interval_of(domain: Domain, cell: Cell) -> Interval:
@@ -107,11 +127,27 @@ def interval_of(domain: Domain, cell: Cell) -> Interval:
 
 def pairs(constraints: Constraints, rows: NDArray[np.intp]) -> list[tuple[Cell, Cell, NDArray[np.intp]]]:
     """Pairs of cells that together could be at fault, and in which of ``rows``; for rows no single cell frees."""
-    couples = list(combinations(constraints.cells, 2))
-    trials = attempt(constraints.design, ((rows, constraints.freed(couple)) for couple in couples))
+    by_name: dict[str, list[Cell]] = {}
+    for cell in constraints.cells:
+        by_name.setdefault(cell.quantity, []).append(cell)
+    coarse = [
+        (one, other)
+        for one, other in combinations_with_replacement(by_name, 2)
+        if one != other or len(by_name[one]) > 1
+    ]
+    trials = attempt(
+        constraints.design, ((rows, constraints.freed(by_name[a] + by_name[b])) for a, b in coarse)
+    )
+    couples: list[tuple[Cell, Cell, NDArray[np.intp]]] = []
+    for (one, other), trial in zip(coarse, trials, strict=True):
+        left = rows[trial.consistent]
+        for i, first in enumerate(by_name[one]) if len(left) else ():
+            rest = by_name[other] if one != other else by_name[one][i + 1 :]
+            couples.extend((first, second, left) for second in rest)
+    fine = attempt(constraints.design, ((left, constraints.freed([a, b])) for a, b, left in couples))
     return [
-        (*couple, rows[trial.consistent])
-        for couple, trial in zip(couples, trials, strict=True)
+        (first, second, left[trial.consistent])
+        for (first, second, left), trial in zip(couples, fine, strict=True)
         if trial.consistent.any()
     ]
 
@@ -119,31 +155,32 @@ def pairs(constraints: Constraints, rows: NDArray[np.intp]) -> list[tuple[Cell, 
 def slack(constraints: Constraints) -> FloatArray:
     """Units in the last place by which all printed values must be widened before they agree, shape (rows,).
 
-    Found to about 5 %, from above; infinite where ``SLACK_LIMIT`` is not enough, as where only counts disagree.
+    Found to an eighth of a power of two, from above; infinite where ``SLACK_LIMIT`` is not enough, as where only
+    counts disagree.
     """
     rows = constraints.rows
     low, high = np.zeros(rows), np.full(rows, np.inf)
-    reach = 1.0
-    while reach <= SLACK_LIMIT:
-        open_rows = np.flatnonzero(np.isinf(high))
-        if not len(open_rows):
-            break
-        fits = _fits(constraints, open_rows, np.full(len(open_rows), reach))
-        high[open_rows[fits]] = reach
-        low[open_rows[~fits]] = reach
-        reach *= 4.0
-    while True:
-        wide = np.flatnonzero(np.isfinite(high) & (high - low > np.maximum(0.05 * high, 0.02)))
-        if not len(wide):
-            return high
-        middle = np.where(
-            low[wide] >= 1, np.sqrt(np.maximum(low[wide], 1) * high[wide]), (low[wide] + high[wide]) / 2
-        )
-        fits = _fits(constraints, wide, middle)
-        high[wide[fits]] = middle[fits]
-        low[wide[~fits]] = middle[~fits]
+    _narrow(
+        constraints, low, high, np.arange(rows), np.broadcast_to(_REACHES[:, None], (len(_REACHES), rows))
+    )
+    some = np.flatnonzero(np.isfinite(high))
+    if len(some):
+        least, most = low[some], high[some]
+        apart = least + (most - least) * _BETWEEN[:, None]
+        _narrow(constraints, low, high, some, apart)
+    return high
 
 
-def _fits(constraints: Constraints, rows: NDArray[np.intp], by: FloatArray) -> BoolArray:
+def _narrow(
+    constraints: Constraints, low: FloatArray, high: FloatArray, rows: NDArray[np.intp], reaches: FloatArray
+) -> None:
+    """Try rising ``reaches``, shape (tries, rows), in some rows, and move ``low`` and ``high`` to them in place."""
     some = constraints.take(rows)
-    return ~propagate(some.design, some.widened(by))
+    every = np.arange(len(rows))
+    trials = attempt(constraints.design, ((every, some.widened(reach)) for reach in reaches))
+    fits = np.array([trial.consistent for trial in trials])
+    for reach, fit in zip(reaches[::-1], fits[::-1], strict=True):
+        high[rows[fit]] = reach[fit]
+    for reach, fit in zip(reaches, fits, strict=True):
+        below = ~fit & (reach < high[rows])
+        low[rows[below]] = reach[below]

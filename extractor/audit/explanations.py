@@ -1,22 +1,28 @@
 """Repairs: what a contradictory row would say if one usual slip were undone.
 
-Each kind of slip is a function that yields repaired domains. A repair is tested by propagating it: it explains the
-row when nothing contradicts any more. A kind that can repair a number in many ways fits by chance more often, and so
-does one whose cell the other numbers hardly pin down; both enter the chance figure (see ``chance``).
+Each kind of slip is a function that yields repaired domains. A repair is tested by propagating it (see ``fits``): it
+explains the row when nothing contradicts any more. A kind that can repair a number in many ways fits by chance more
+often, and so does one whose cell the other numbers hardly pin down; a repair says what is needed to tell how often.
 """
 
 from __future__ import annotations
 
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass
+from itertools import combinations
 
 import numpy as np
 
 from extractor.audit.constraints import Cell, Constraints
-from extractor.audit.propagation import Domain
+from extractor.audit.propagation import Domain, judges_of
+from extractor.audit.welch import welch_marks
 from extractor.catalogue.branches import square_image
+from extractor.catalogue.relation import ONE_FACTOR, Interval, Relation
 from extractor.quantities import VOCABULARY
 from extractor.table import BoolArray, FloatArray
+from extractor.words import listed
+
+Changes = dict[Cell, Interval]
 
 
 @dataclass(frozen=True, slots=True)
@@ -25,7 +31,9 @@ class Repair:
 
     cells : the cells it changes. domain : the repaired intervals. value : what the first cell would say, shape
     (rows,), NaN where there is no single number. applies : rows in which the repair is another reading at all.
-    variants : how many readings of this kind are tried on these cells.
+    gauge : the quantity in whose interval, once the cells are freed, a chance match is measured.
+    readings : how many readings of this kind are tried on these cells, shape (rows,).
+    share : how often a random wrong value would fit, where the gauge does not tell; shape (rows,) or None.
     """
 
     kind: str
@@ -34,14 +42,15 @@ class Repair:
     domain: Domain
     value: FloatArray
     applies: BoolArray
-    variants: int
+    gauge: str
+    readings: FloatArray
+    share: FloatArray | None = None
 
 
 Kind = Callable[[Constraints], Iterator[Repair]]
 KINDS: list[Kind] = []
 
-_EXPLAINED = ("eta_squared", "omega_squared", "epsilon_squared", "cohens_f", "generalized_eta_squared")
-_EXPLAINED_WORDS = {
+_WORDS = {
     "eta_squared": "eta squared",
     "partial_eta_squared": "partial eta squared",
     "generalized_eta_squared": "generalized eta squared",
@@ -50,9 +59,18 @@ _EXPLAINED_WORDS = {
     "epsilon_squared": "epsilon squared",
     "cohens_f": "Cohen's f",
 }
+_ONE_NAME = ("eta_squared", "omega_squared", "epsilon_squared", "cohens_f")
+"""Indices that differ where one factor is the whole model."""
+
 _ROOTED = frozenset(
     {"eta_squared", "omega_squared", "epsilon_squared", "partial_eta_squared", "partial_omega_squared"}
 )
+_TOTAL_DF = ONE_FACTOR | {"factorial", "ancova"}
+"""Designs in which N - 1 are the total df."""
+
+_SWAPS = 9
+_ODD_DECIMALS = 0.1
+"""How often a wrong number has, by chance, other decimals than its neighbours in exactly the way a slip would make."""
 
 
 def _kind(function: Kind) -> Kind:
@@ -77,20 +95,24 @@ def _repair(
     constraints: Constraints,
     kind: str,
     words: str,
-    changes: dict[Cell, tuple[FloatArray, FloatArray]],
+    changes: Changes,
     *,
-    variants: int = 1,
+    readings: float | FloatArray = 1.0,
     applies: BoolArray | None = None,
+    gauge: str = "",
+    share: FloatArray | None = None,
 ) -> Repair:
     domain = constraints.domain.copy()
     for cell, (low, high) in changes.items():
         constraints.put(domain, cell, low, high)
     first = next(iter(changes))
     low, high = changes[first]
-    value = _middle(low, high)
+    # a bound repaired is still a bound, not a number
+    value = np.where(_is_bound(constraints, first), np.nan, _middle(low, high))
     if applies is None:
         applies = np.ones(len(value), dtype=bool)
-    return Repair(kind, words, tuple(changes), domain, value, applies, variants)
+    tried = np.broadcast_to(np.asarray(readings, dtype=float), value.shape)
+    return Repair(kind, words, tuple(changes), domain, value, applies, gauge or first.quantity, tried, share)
 
 
 def _cells(constraints: Constraints, quantity: str) -> list[Cell]:
@@ -101,28 +123,48 @@ def _is_count(cell: Cell) -> bool:
     return VOCABULARY[cell.quantity].exact
 
 
+def _is_bound(constraints: Constraints, cell: Cell) -> BoolArray:
+    """Rows in which the cell is printed as an inequality."""
+    low, high = constraints.interval(cell)
+    return np.asarray(high - low > 1.5 * constraints.units[cell])
+
+
+def _free(like: FloatArray) -> Interval:
+    return np.full_like(like, -np.inf), np.full_like(like, np.inf)
+
+
+def _relation(design: str, gives: str, *needs: str) -> Relation | None:
+    """The relation of a design that gives a quantity from exactly these."""
+    return next((r for r in judges_of(design) if r.gives == gives and set(r.needs) == set(needs)), None)
+
+
 @_kind
 def decimal_slip(constraints: Constraints) -> Iterator[Repair]:
     """The decimal point moved by one or two places."""
     for cell in constraints.cells:
         low, high = constraints.interval(cell)
-        for places in (-1, 1, -2, 2):
+        usual = _usual_unit(constraints, cell)
+        for places in (-1, 1) if _is_count(cell) else (-1, 1, -2, 2):
             factor = 10.0**places
             new = low * factor, high * factor
-            whole = np.ones(len(low), dtype=bool)
-            if _is_count(cell):
-                if places in (-2, 2):
-                    continue
-                whole = new[0] == np.round(new[0])
+            applies = new[0] == np.round(new[0]) if _is_count(cell) else ~_is_bound(constraints, cell)
             moved = "one place" if abs(places) == 1 else "two places"
+            # the digits stay when a point moves, so the number of decimals tells on it
+            unit = constraints.units[cell]
+            odd = ~np.isclose(unit, usual) & np.isclose(unit * factor, usual)
+            readings = np.where(odd, 4 * _ODD_DECIMALS, 4.0)
+            words = f"a decimal point moved {moved}"
             yield _repair(
-                constraints,
-                "decimal point",
-                f"a decimal point moved {moved}",
-                {cell: new},
-                variants=4,
-                applies=whole,
+                constraints, "decimal point", words, {cell: new}, readings=readings, applies=applies
             )
+
+
+def _usual_unit(constraints: Constraints, cell: Cell) -> FloatArray:
+    """One unit in the last place of most other groups' cells of the quantity; NaN where there are none."""
+    others = [constraints.units[c] for c in _cells(constraints, cell.quantity) if c != cell]
+    if not others:
+        return np.full_like(constraints.units[cell], np.nan)
+    return np.asarray(np.median(np.column_stack(others), axis=1))
 
 
 @_kind
@@ -132,25 +174,29 @@ def swapped_digits(constraints: Constraints) -> Iterator[Repair]:
         low, high = constraints.interval(cell)
         unit = np.where(constraints.units[cell] > 0, constraints.units[cell], 1.0)
         digits = np.round(np.abs(_middle(low, high)) / unit)
-        digits = np.where(np.isfinite(digits) & (digits < 1e15), digits, 0.0)
+        plain = np.isfinite(digits) & (digits < 10.0**_SWAPS) & ~_is_bound(constraints, cell)
+        digits = np.where(plain, digits, 0.0)
         sign = np.where(_middle(low, high) < 0, -1.0, 1.0)
         half = (high - low) / 2
-        for place in range(5):
+        swaps = []
+        for place in range(_SWAPS):
             scale = 10.0**place
             right = np.floor(digits / scale) % 10
             left = np.floor(digits / (10 * scale)) % 10
             swapped = digits + (right - left) * 10 * scale + (left - right) * scale
             # a leading zero in front of the point may take part ("0.43" for "4.03"), not beyond it
-            applies = (left != right) & (digits >= scale)
-            value = sign * swapped * unit
-            yield _repair(
-                constraints,
-                "swapped digits",
-                "two adjacent digits swapped",
-                {cell: (value - half, value + half)},
-                variants=3,
-                applies=applies,
-            )
+            swaps.append((sign * swapped * unit, (left != right) & (digits >= scale)))
+        readings = np.sum([applies for _, applies in swaps], axis=0)
+        for value, applies in swaps:
+            if applies.any():
+                yield _repair(
+                    constraints,
+                    "swapped digits",
+                    "two adjacent digits swapped",
+                    {cell: (value - half, value + half)},
+                    readings=readings,
+                    applies=applies,
+                )
 
 
 @_kind
@@ -174,55 +220,61 @@ def one_tailed(constraints: Constraints) -> Iterator[Repair]:
 @_kind
 def mislabelled_index(constraints: Constraints) -> Iterator[Repair]:
     """One index of explained variance printed under the name of another."""
-    for name in _EXPLAINED_WORDS:
+    one_factor = constraints.design in ONE_FACTOR
+    implied = {relation.gives for relation in judges_of(constraints.design)}
+    known = {cell.quantity for cell in constraints.cells}
+    for name in _WORDS:
         for cell in _cells(constraints, name):
             low, high = constraints.interval(cell)
-            others = [other for other in _EXPLAINED if other != name and not _cells(constraints, other)]
+            unrelated = known | {_classical(name)} if one_factor else known
+            others = [other for other in (_ONE_NAME if one_factor else _WORDS) if other not in unrelated]
             for other in others:
-                if other == "generalized_eta_squared" or {name, other} == {
-                    "eta_squared",
-                    "partial_eta_squared",
-                }:
+                if other not in implied:
                     continue
                 repair = _repair(
                     constraints,
                     "index label",
-                    f"{_EXPLAINED_WORDS[other]} labelled {_EXPLAINED_WORDS[name]}",
-                    {cell: (np.full_like(low, -np.inf), np.full_like(high, np.inf))},
-                    variants=len(others) + 1,
+                    f"{_WORDS[other]} labelled {_WORDS[name]}",
+                    {cell: _free(low)},
+                    readings=len(others) + 1,
+                    gauge=other,
                 )
                 support = VOCABULARY[other]
                 repair.domain.low[other] = np.maximum(low, support.low)
                 repair.domain.high[other] = np.minimum(high, support.high)
                 yield repair
             if name in _ROOTED:
-                positive = np.maximum(low, 0)
-                yield _repair(
-                    constraints,
-                    "index label",
-                    f"an unsquared index labelled {_EXPLAINED_WORDS[name]}",
-                    {cell: (positive**2, high**2)},
-                    variants=len(others) + 1,
-                )
+                squared = np.maximum(low, 0) ** 2, high**2
+                words = f"an unsquared index labelled {_WORDS[name]}"
+                yield _repair(constraints, "index label", words, {cell: squared}, readings=len(others) + 1)
+
+
+def _classical(name: str) -> str:
+    """The index that a name stands for where one factor is the whole model."""
+    return name.removeprefix("partial_").removeprefix("generalized_")
 
 
 @_kind
 def t_and_f(constraints: Constraints) -> Iterator[Repair]:
-    """t printed as F, or F printed as t."""
+    """t printed as F, or F printed as t, where the effect has one df."""
+    if _relation(constraints.design, "f_value", "t_value") is None:
+        return
     for cell in _cells(constraints, "f_value"):
-        low, high = constraints.interval(cell)
-        yield _repair(constraints, "t as F", "t printed as F", {cell: (np.maximum(low, 0) ** 2, high**2)})
+        yield _repair(
+            constraints, "t as F", "t printed as F", {cell: square_image(constraints.interval(cell))}
+        )
     for cell in _cells(constraints, "t_value"):
         low, high = constraints.interval(cell)
         root = np.sqrt(np.maximum(low, 0)), np.sqrt(np.maximum(high, 0))
-        positive = low >= 0
-        yield _repair(constraints, "F as t", "F printed as t", {cell: root}, applies=positive)
-        yield _repair(constraints, "F as t", "F printed as t", {cell: (-root[1], -root[0])}, applies=positive)
+        for change in (root, (-root[1], -root[0])):
+            yield _repair(
+                constraints, "F as t", "F printed as t", {cell: change}, readings=2, applies=high >= 0
+            )
 
 
 def _all_groups(
     constraints: Constraints, name: str, change: Callable[[FloatArray, FloatArray], FloatArray]
-) -> dict[Cell, tuple[FloatArray, FloatArray]]:
+) -> Changes:
     """The same change to a quantity in every group; it may use the group sizes."""
     changes = {}
     for cell in _cells(constraints, name):
@@ -235,7 +287,7 @@ def _all_groups(
     return changes
 
 
-def _known(changes: dict[Cell, tuple[FloatArray, FloatArray]]) -> BoolArray:
+def _known(changes: Changes) -> BoolArray:
     return np.asarray(
         np.logical_and.reduce([np.isfinite(low) & np.isfinite(high) for low, high in changes.values()])
     )
@@ -252,26 +304,24 @@ def spread_labels(constraints: Constraints) -> Iterator[Repair]:
     if _cells(constraints, "sd"):
         for kind, words, change in labels:
             changes = _all_groups(constraints, "sd", change)
-            yield _repair(constraints, kind, words, changes, applies=_known(changes))
+            yield _repair(constraints, kind, words, changes, applies=_known(changes), gauge="ms_error")
     if _cells(constraints, "se"):
         changes = _all_groups(constraints, "se", lambda s, n: s / np.sqrt(n))
-        yield _repair(constraints, "SD for SE", "SDs labelled SE", changes, applies=_known(changes))
+        yield _repair(
+            constraints, "SD for SE", "SDs labelled SE", changes, applies=_known(changes), gauge="ms_error"
+        )
 
 
 @_kind
 def error_df(constraints: Constraints) -> Iterator[Repair]:
     """The total df, or N itself, printed as error df."""
+    if constraints.design not in _TOTAL_DF:
+        return
     for name in ("df_error", "df"):
         for cell in _cells(constraints, name):
-            low, high = constraints.interval(cell)
+            low, _ = constraints.interval(cell)
             for words, added in (("N - 1 printed as error df", 1.0), ("N printed as error df", 0.0)):
-                repair = _repair(
-                    constraints,
-                    "total df",
-                    words,
-                    {cell: (np.zeros_like(low), np.full_like(high, np.inf))},
-                    variants=2,
-                )
+                repair = _repair(constraints, "total df", words, {cell: _free(low)}, readings=2)
                 total = low + added
                 ends = repair.domain.low.get("n_total", total), repair.domain.high.get("n_total", total)
                 repair.domain.low["n_total"] = np.maximum(ends[0], total)
@@ -294,20 +344,17 @@ def before_exclusions(constraints: Constraints) -> Iterator[Repair]:
     """N of those recruited in the place of N analysed: up to half of them lost."""
     for cell in _cells(constraints, "n_total"):
         low, _ = constraints.interval(cell)
-        yield _repair(
-            constraints,
-            "N before exclusions",
-            "N counted before exclusions",
-            {cell: (np.ceil(low / 2), low - 1)},
-            variants=1,
-        )
+        analysed = np.ceil(low / 2), low - 1
+        # every N in that range would be explained
+        readings = np.maximum(analysed[1] - analysed[0] + 1, 1)
+        words = "N counted before exclusions"
+        yield _repair(constraints, "N before exclusions", words, {cell: analysed}, readings=readings)
 
 
 @_kind
 def swapped_sizes(constraints: Constraints) -> Iterator[Repair]:
     """Two groups' ns changed places."""
-    cells = _cells(constraints, "n")
-    couples = [(a, b) for i, a in enumerate(cells) for b in cells[i + 1 :]]
+    couples = list(combinations(_cells(constraints, "n"), 2))
     for first, second in couples:
         one, two = constraints.interval(first), constraints.interval(second)
         yield _repair(
@@ -315,59 +362,36 @@ def swapped_sizes(constraints: Constraints) -> Iterator[Repair]:
             "swapped ns",
             "the ns of two groups swapped",
             {first: two, second: one},
-            variants=len(couples),
+            readings=len(couples),
             applies=one[0] != two[0],
         )
 
 
 @_kind
 def welch_test(constraints: Constraints) -> Iterator[Repair]:
-    """F, df and p of a Welch test in the place of the classical ones."""
-    if not {"n", "mean", "sd"} <= constraints.domain.low.keys():
+    """F, p or error df of a Welch test, or several of them, in the place of the classical ones."""
+    welch_f = _relation(constraints.design, "welch_f", "n", "mean", "sd")
+    welch_df = _relation(constraints.design, "welch_df_error", "n", "sd")
+    if welch_f is None or welch_df is None:
         return
-    for name in ("f_value", "t_value"):
-        for cell in _cells(constraints, name):
-            low, high = constraints.interval(cell)
-            low, high = (low, high) if name == "f_value" else square_image((low, high))
-            companions = [c for c in constraints.cells if c.quantity in ("p_value", "df_error", "df")]
-            free = np.full_like(low, -np.inf), np.full_like(high, np.inf)
-            repair = _repair(
-                constraints,
-                "Welch test",
-                "F, df or p of a Welch test",
-                {c: free for c in (cell, *companions)},
-            )
-            repair.domain.low["welch_f"], repair.domain.high["welch_f"] = low, high
-            yield repair
-
-
-def chance(repair: Repair, low: FloatArray, high: FloatArray, printed: FloatArray) -> FloatArray:
-    """How often a random wrong value would also have been explained by this kind of slip, shape (rows,).
-
-    Parameters
-    ----------
-    low, high : what the numbers the repair does not touch imply for its gauge (see ``gauge``).
-    printed : what the gauge says as printed.
-
-    A random wrong value of a positive quantity is taken as uniform on a log scale within a factor of ten of the
-    printed one; of a proportion, as uniform on its range; of any other, as uniform within twice its size. The share
-    of such values that one reading would put into [low, high] is multiplied by the number of readings tried.
-    """
-    quantity = VOCABULARY[gauge(repair)]
-    with np.errstate(all="ignore"):
-        if quantity.exact:
-            share = (np.floor(high) - np.ceil(low) + 1) / np.maximum(1.5 * np.abs(printed), 1)
-        elif np.isfinite(quantity.low) and np.isfinite(quantity.high):
-            share = (high - low) / (quantity.high - quantity.low)
-        elif quantity.low == 0:
-            share = np.log(high / low) / np.log(100)
-        else:
-            share = (high - low) / np.maximum(4 * np.abs(printed), high - low)
-    share = np.where(np.isfinite(share), share, 1.0)
-    return np.clip(repair.variants * share, 0.0, 1.0)
-
-
-def gauge(repair: Repair) -> str:
-    """The quantity in whose interval the repair is measured: what its cells feed where there are several."""
-    first = repair.cells[0].quantity
-    return "ms_error" if len(repair.cells) > 1 and first in ("sd", "se") else first
+    marks = welch_marks(constraints, welch_f, welch_df)
+    tests = [c for c in constraints.cells if c.quantity in ("f_value", "t_value")]
+    p = [c for c in constraints.cells if c.quantity == "p_value"]
+    dfs = [c for c in constraints.cells if c.quantity in ("df_error", "df")]
+    for cells in (tests, tests + p, p, dfs, tests + dfs, tests + dfs + p, dfs + p):
+        if not cells or not marks:
+            continue
+        fits = np.logical_and.reduce([marks[c.quantity].fits for c in cells])
+        # F and t are one statistic, and so are two columns of df
+        measured = {
+            ("df" if c in dfs else "F" if c in tests else "p"): marks[c.quantity].share for c in cells
+        }
+        said = list(dict.fromkeys("df" if c in dfs else VOCABULARY[c.quantity].symbol for c in cells))
+        yield _repair(
+            constraints,
+            "Welch test",
+            f"{listed(said)} of a Welch test",
+            dict.fromkeys(cells, _free(constraints.interval(cells[0])[0])),
+            applies=fits,
+            share=np.prod(list(measured.values()), axis=0),
+        )

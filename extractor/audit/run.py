@@ -15,6 +15,7 @@ from extractor.audit.models import shares_of_the_total, sums_of_squares_types
 from extractor.audit.plausibility import implausible, outlying
 from extractor.audit.support import unsupported
 from extractor.conversion import Conversion
+from extractor.double_counting import double_counted
 from extractor.evidence import Evidence
 from extractor.findings import Finding, Severity, frame
 
@@ -26,6 +27,7 @@ CHECKS: tuple[Check, ...] = (
     implausible,
     sums_of_squares_types,
     shares_of_the_total,
+    double_counted,
 )
 
 
@@ -53,7 +55,9 @@ class Audit:
 
 
 def audit_evidence(
-    evidence: Evidence, conversion: Conversion | None, review: Callable[[list[Finding]], list[Finding]] | None = None
+    evidence: Evidence,
+    conversion: Conversion | None,
+    review: Callable[[list[Finding]], list[Finding]] | None = None,
 ) -> Audit:
     """Run every check; where a conversion is given, its effect table gets a summary of each row's findings.
 

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from functools import cache
 from importlib import import_module
 
 FAMILIES = (
@@ -29,7 +30,8 @@ FAMILIES = (
 )
 
 
+@cache
 def load() -> None:
-    """Import every family, which enters its relations into the catalogue."""
+    """Import every family, which enters its relations into the catalogue; once."""
     for family in FAMILIES:
         import_module(f"extractor.catalogue.{family}")

@@ -1,8 +1,14 @@
-"""Why some conversions do not exist, in the words a reviewer can put into a table of exclusions."""
+"""Why some conversions do not exist, in the words a reviewer can put into a table of exclusions.
+
+The reasons are tried in order, from what the metric is to what the row reports; the first that fits is given. They
+are read only where no relation leads from the row to the metric, so a reason never bars a way that exists.
+"""
 
 from __future__ import annotations
 
-from extractor.catalogue.relation import PARTIAL, TERMS
+from dataclasses import dataclass
+
+from extractor.catalogue.relation import PARTIAL, PRE_POST, SEVERAL_GROUPS, TERMS
 from extractor.quantities import VOCABULARY, is_signed
 
 _OMNIBUS = (
@@ -11,20 +17,64 @@ _OMNIBUS = (
 )
 _TWO_ONLY = "it is defined for two independent groups"
 _UNSIGNED = "F, p, η² and their kin have no sign"
+_SIZES_ALONE = "sizes and degrees of freedom alone say nothing of an effect"
 _PARTIAL_ONLY = (
     "F and its df speak of the effect and its own error term only; "
     "what the other sources took from the total is not said"
 )
-_STRATA = "it needs the sums of squares of participants and of every measured factor"
-_RAW_SD = "the error term of repeated measurements is not the SD of scores"
-_COVARIATES = "the error term lacks what the covariates took out; without their correlation R the SD of scores is unknown"
-_FACTORS = (
-    "the error term lacks what the other factors took out, "
-    "and their F or sums of squares are not all there"
+_STRATA = (
+    "it needs the sums of squares of participants and of every measured factor; "
+    "code all terms of the model as rows of one analysis"
 )
+_NO_SPREAD = (
+    "means, or letters of significance, without a standard deviation, standard error, confidence limits or test "
+    "statistic say nothing of the spread"
+)
+_CHANGE = "change scores do not say the SD of scores; raw and change metrics are never mixed"
+_RAW_SD = "the error term of repeated measurements is not the SD of scores"
+_COVARIATES = (
+    "the error term lacks what the covariates took out; "
+    "without their correlation R the SD of scores is unknown"
+)
+_FACTORS = (
+    "the error term lacks what the other factors took out, and their F or sums of squares are not all there; "
+    "code all terms of the model as rows of one analysis"
+)
+_BY_DESIGN = {
+    "within": _RAW_SD,
+    "paired": _RAW_SD,
+    "mixed": _RAW_SD,
+    "ancova": _COVARIATES,
+    "factorial": _FACTORS,
+}
 _TWO_GROUP_METRICS = ("r", "fisher_z", "log_odds_ratio")
 _WHOLE = ("eta_squared", "omega_squared", "epsilon_squared")
 _STANDARDIZED = ("cohens_d", "hedges_g")
+_SIZES = frozenset(
+    {"n", "n_total", "k_groups", "df", "df_effect", "df_error", "n_covariates", "icc", "cluster_size"}
+)
+_LEADS_NOWHERE = (
+    (frozenset({"welch_f", "welch_df_error"}), "Welch's F weighs the groups by their own variances; no index follows"),
+    (frozenset({"h_value", "rank_eta_squared", "rank_epsilon_squared"}),
+     "Kruskal-Wallis H is about ranks: H/(N - 1) is the η² of the ranks, not of the scores"),
+    (frozenset({"u_value", "rank_sum", "signed_rank_sum", "rank_biserial", "rank_r"}),
+     "a rank test is not about means and standard deviations"),
+    (frozenset({"z_value"}), "a z is no t: behind it stand ranks, proportions or a mixed model, not the SD of scores"),
+    (frozenset({"chi_squared_corrected"}), "a chi-square with Yates's correction does not say the uncorrected one"),
+    (frozenset({"adjusted_p"}),
+     "an adjusted p leads back to its test only where Bonferroni's number of comparisons is known"),
+)  # fmt: skip
+"""Statistics of other tests, and why nothing follows from them where no relation takes them."""
+
+
+@dataclass(frozen=True, slots=True)
+class _Case:
+    """What a refusal is about; ``known`` are the reported quantities, ``opened_by`` what would open a route."""
+
+    metric: str
+    design: str
+    known: frozenset[str]
+    opened_by: list[frozenset[str]]
 
 
 def why_no_route(metric: str, design: str, reported: frozenset[str], opened_by: list[frozenset[str]]) -> str:
@@ -35,34 +85,58 @@ def why_no_route(metric: str, design: str, reported: frozenset[str], opened_by: 
     opened_by : sets of quantities each of which would open a route, the cheapest first.
     """
     symbol = VOCABULARY[metric].symbol
-    known = [
-        name for name in sorted(reported) if name in VOCABULARY and VOCABULARY[name].role.value == "reported"
-    ]
+    known = frozenset(
+        name for name in reported if name in VOCABULARY and VOCABULARY[name].role.value == "reported"
+    )
     if not known:
         return f"nothing usable is reported for {symbol}"
-    why = _reason(metric, design, reported, opened_by)
+    case = _Case(metric, design, known, opened_by)
+    why = _of_the_metric(case) or _of_the_evidence(case) or _of_the_design(case)
     if why:
         return f"{symbol} is refused: {why}"
-    return f"no relation leads from {', '.join(known)} to {symbol}"
+    return f"no relation leads from {', '.join(sorted(known))} to {symbol}"
 
 
-def _reason(metric: str, design: str, reported: frozenset[str], opened_by: list[frozenset[str]]) -> str:
-    if metric in _TWO_GROUP_METRICS and design != "two-group":
+def _of_the_metric(case: _Case) -> str:
+    """The metric is not defined there, or wants a sign that nothing gives."""
+    if case.metric in _TWO_GROUP_METRICS and case.design != "two-group":
         return _TWO_ONLY
-    if frozenset(["direction"]) in opened_by:
+    if frozenset(["direction"]) in case.opened_by or _bound_without_sign(case):
         return f"{_UNSIGNED}; fill the column direction"
-    if is_signed(metric) and design == "one-way" and "mean" not in reported:
+    return ""
+
+
+def _bound_without_sign(case: _Case) -> bool:
+    """Whether a direction would give a bound, which the search for what opens a point does not see."""
+    if not is_signed(case.metric) or case.design != "two-group" or "p_value" not in case.known:
+        return False
+    asked = frozenset[str]().union(*case.opened_by)
+    return bool(case.known & {"n_total", "df", "df_error"}) or ("n" in case.known and "n" not in asked)
+
+
+def _of_the_evidence(case: _Case) -> str:
+    """What is reported belongs to another test, or is not enough for any."""
+    if case.known <= _SIZES:
+        return _SIZES_ALONE
+    for statistics, why in _LEADS_NOWHERE:
+        if case.known & statistics and case.known <= statistics | _SIZES:
+            return why
+    standardized = case.metric in _STANDARDIZED
+    if standardized and case.design in PRE_POST and "sd_change" in case.known:
+        return _CHANGE
+    if standardized and "mean" in case.known and case.known <= {"mean"} | _SIZES:
+        return _NO_SPREAD
+    if is_signed(case.metric) and case.design in SEVERAL_GROUPS and "mean" not in case.known:
         return _OMNIBUS
-    if metric in _WHOLE and design in PARTIAL:
+    return ""
+
+
+def _of_the_design(case: _Case) -> str:
+    """The design's error term does not say what the metric needs."""
+    if case.metric in _WHOLE and case.design in PARTIAL:
         return _PARTIAL_ONLY
-    if metric == "generalized_eta_squared" and design in TERMS:
+    if case.metric == "generalized_eta_squared" and case.design in TERMS:
         return _STRATA
-    if metric in _STANDARDIZED:
-        return {
-            "within": _RAW_SD,
-            "paired": _RAW_SD,
-            "mixed": _RAW_SD,
-            "ancova": _COVARIATES,
-            "factorial": _FACTORS,
-        }.get(design, "")
+    if case.metric in _STANDARDIZED:
+        return _BY_DESIGN.get(case.design, "")
     return ""

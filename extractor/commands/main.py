@@ -16,7 +16,18 @@ from extractor.errors import ExtractorError, UsageError
 from extractor.quantities import close_matches
 from extractor.reading import quoted
 
-COMMANDS = ("convert", "audit", "trace", "relations", "quick")
+COMMANDS = (
+    "convert",
+    "audit",
+    "trace",
+    "unlock",
+    "reconcile",
+    "changes",
+    "sheet",
+    "codebook",
+    "relations",
+    "quick",
+)
 """Subcommands, each in the module of its name, in the order a user meets them."""
 
 

@@ -10,6 +10,7 @@ import pandas as pd
 from rich.console import Console
 from rich.text import Text
 
+from extractor.comparison import EFFECT
 from extractor.displacement import DECIDES, MOVES_IN_WORDS, NOTHING
 from extractor.errors import UsageError
 from extractor.output.consensus import Settled, has_agreed, write_consensus
@@ -79,7 +80,8 @@ def _show_agreement(to: Console, found: Reconciliation) -> None:
     lines = []
     for row in found.agreement.to_dict("records"):
         coefficients = [_with_limits(row, name) for name in ("kappa", "ac1", "icc")]
-        counts = [str(row["variable"]), str(row["rows"]), str(row["all_agree"]), _two(row["raw_agreement"])]
+        name = f"effect in {row['variable']}" if row["kind"] == EFFECT else str(row["variable"])
+        counts = [name, str(row["rows"]), str(row["all_agree"]), _two(row["raw_agreement"])]
         lines.append([*counts, *coefficients, _two(row["alpha"])])
     widths = [max(len(line[at]) for line in (list(_HEADINGS), *lines)) for at in range(len(_HEADINGS))]
     for at, line in enumerate([list(_HEADINGS), *lines]):

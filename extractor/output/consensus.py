@@ -28,6 +28,8 @@ CELLS, ROWS, _ABOUT = "consensus", "rows", "how to"
 AGREED, KEEP, DROP = "agreed", "keep", "drop"
 BLANK = "blank"
 """What is written where the coders agree that the cell holds nothing."""
+_SIGNED = ("direction", "orientation")
+"""Words of which a dash is one."""
 _MOVED = "rows were moved or corrected since, so compare again"
 _OPEN_FILL = PatternFill("solid", fgColor="FFFBEBB5")
 _CODES = {**dict.fromkeys(("estimate", "changed", "shift", "shift_in_se"), "0.0000")}
@@ -67,7 +69,7 @@ def write_consensus(found: Reconciliation, path: Path) -> list[str]:
         (CELLS, _cells(found), _CODES),
         (ROWS, _rows(found), {}),
         ("agreement", found.agreement, _AGREEMENT_CODES | dict.fromkeys(_FRACTIONS, PLAIN)),
-        (_ABOUT, pd.DataFrame({"how to settle disputes": [*_HOW, _tolerance(found)]}), {}),
+        (_ABOUT, pd.DataFrame({"how to settle disputes": [*_whose(found), *_HOW, _tolerance(found)]}), {}),
     ):
         if not len(frame):
             continue
@@ -92,6 +94,12 @@ _FRACTIONS = (
     "icc_high",
     "alpha",
 )
+
+
+def _whose(found: Reconciliation) -> list[str]:
+    """Which sheet is whose; files without the folders they were in."""
+    sources = [Path(sheet.table.source.strip("'")).name for sheet in found.sheets]
+    return [f"{coder} is {source}." for coder, source in zip(found.coders, sources, strict=True)]
 
 
 def _tolerance(found: Reconciliation) -> str:
@@ -133,7 +141,9 @@ def read_consensus(found: Reconciliation, path: str | Path) -> Settled:
         value cannot be read; the message names the cell.
     """
     if not any(has_sheet(Path(path), title) for title in (CELLS, ROWS, _ABOUT)):
-        raise UnreadableInput(f"{quoted(path, 200)} has no sheet {quoted(CELLS)}; it is no consensus workbook")
+        raise UnreadableInput(
+            f"{quoted(path, 200)} has no sheet {quoted(CELLS)}; it is no consensus workbook"
+        )
     return Settled(_settled_cells(found, Path(path)), _settled_rows(found, Path(path)))
 
 
@@ -196,9 +206,7 @@ def _settled_cells(found: Reconciliation, path: Path) -> dict[tuple[int, int], s
             lines.text(name, line) for name in ("variable", *(f"row {coder}" for coder in found.coders))
         )
         if key not in known:
-            raise lines.fault(
-                "variable", line, "these sheets have no such dispute; were rows moved or corrected since?"
-            )
+            raise lines.fault("variable", line, f"there is no such dispute between these sheets; {_MOVED}")
         effect, column, said = known[key]
         for coder, text in zip(found.coders, said, strict=True):
             if tidy(lines.text(coder, line)) != tidy(text):
@@ -230,7 +238,7 @@ def _agreed_text(found: Reconciliation, lines: _Lines, line: int, at: int) -> st
                 AGREED, line, reading.problem or f"write {BLANK} where the cell is to hold nothing"
             )
         return reading_text(reading, mark)
-    if is_missing(tidy(text), frozenset()):
+    if column.variable not in _SIGNED and is_missing(tidy(text), frozenset()):
         raise lines.fault(AGREED, line, f"write {BLANK} where the cell is to hold nothing")
     if column.variable == "design" and text not in DESIGNS:
         near = close_matches(text, DESIGNS)
@@ -252,9 +260,7 @@ def _settled_rows(found: Reconciliation, path: Path) -> dict[int, bool]:
             raise lines.fault(AGREED, line, f"{quoted(word)} is neither {KEEP} nor {DROP}")
         key = tuple(lines.text(f"row {coder}", line) for coder in found.coders)
         if key not in known:
-            raise lines.fault(
-                AGREED, line, "these sheets have no such single row; were rows moved or corrected since?"
-            )
+            raise lines.fault(AGREED, line, f"there is no such single row in these sheets; {_MOVED}")
         settled[known[key]] = word == KEEP
     return settled
 

@@ -9,7 +9,7 @@ import pandas as pd
 from openpyxl import Workbook
 
 from extractor.agreement import MISSING
-from extractor.comparison import Column, from_groups_sheet
+from extractor.comparison import Column, extra_headings, extra_texts, from_groups_sheet
 from extractor.groups_sheet import SHEET
 from extractor.matching import ABSENT
 from extractor.output.consensus import Settled
@@ -25,7 +25,7 @@ _OF_CELLS = ("n", "mean", "sd")
 
 
 def write_merged(found: Reconciliation, settled: Settled, path: Path) -> list[str]:
-    """Write the merged sheet as a workbook that is read without a codebook; notes say what is still open.
+    """Write the merged sheet as a workbook under canonical headings; notes say what is still open.
 
     Numbers are texts, so that no printed decimal is lost. A cell in dispute that was not settled is left blank, a row
     that not every coder has is left out unless it was settled to keep it.
@@ -48,12 +48,15 @@ def merged(found: Reconciliation, settled: Settled) -> tuple[pd.DataFrame, list[
     single[found.single["of_effect"].to_numpy(dtype=int)] = True
     kept = ~single
     kept[[effect for effect, keep in settled.rows.items() if keep]] = True
-    columns: dict[str, ObjectArray] = {"study": _first_word(found, "study")}
+    columns: dict[str, ObjectArray] = {"study": _first_word(found, found.stack.word("study"))}
     for at, column in enumerate(found.columns):
         columns[column.name] = _agreed_cells(found, settled, at, column)
     for name in found.stack.table.facts:
         if name not in columns and name not in _LEFT_OUT:
-            columns[name] = _first_word(found, name)
+            columns[name] = _first_word(found, found.stack.word(name))
+    for name, headings in extra_headings(found.stack):
+        if name not in columns:
+            columns[name] = _first_word(found, extra_texts(found.stack, headings))
     order = [*(name for name in FACTS if name in columns), *(name for name in columns if name not in FACTS)]
     frame = pd.DataFrame({name: columns[name][kept] for name in order})
     return frame, _still_open(found, settled, kept, single)
@@ -75,10 +78,9 @@ def _still_open(found: Reconciliation, settled: Settled, kept: np.ndarray, singl
     return notes
 
 
-def _first_word(found: Reconciliation, name: str) -> ObjectArray:
-    """What the first coder who wrote anything says."""
-    words = np.append(found.stack.word(name), "")
-    said = np.where(found.matching.rows == ABSENT, "", words[found.matching.rows])
+def _first_word(found: Reconciliation, words: ObjectArray) -> ObjectArray:
+    """What the first coder who wrote anything says, by effect; ``words`` are those of the stack."""
+    said = np.where(found.matching.rows == ABSENT, "", np.append(words, "")[found.matching.rows])
     return np.asarray(said[np.arange(len(said)), (said != "").argmax(axis=1)], dtype=object)
 
 
@@ -87,7 +89,7 @@ def _agreed_cells(found: Reconciliation, settled: Settled, at: int, column: Colu
     rows = found.matching.rows
     disputed = column.apart.any(axis=1)
     if isinstance(column.variable, str):
-        texts = np.where(disputed, "", _first_word(found, column.variable))
+        texts = np.where(disputed, "", _first_word(found, found.stack.word(column.variable)))
         if column.variable == "analysis" and column.codes is not None:
             texts = _one_name(np.where(column.blank, MISSING, column.codes).max(axis=1), texts)
     else:

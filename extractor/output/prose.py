@@ -40,7 +40,9 @@ def _made(result: Result) -> str:
     )
     grades = effects.loc[effects["grade"] != "", "grade"].value_counts()
     if len(grades):
-        named = [f"{_GRADES[grade]} ({counted(int(grades[grade]), 'row')})" for grade in _GRADES if grade in grades]
+        named = [
+            f"{_GRADES[grade]} ({counted(int(grades[grade]), 'row')})" for grade in _GRADES if grade in grades
+        ]
         text += f"Effects rest on {listed(named)}. "
     assumptions = result.conversion.evidence.table.assumptions
     if assumptions:

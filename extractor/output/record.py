@@ -47,6 +47,7 @@ def settings(result: Result, request: Request) -> list[tuple[str, str]]:
     ]
     said += [
         ("metric", result.conversion.metric),
+        ("standardizer asked for", request.standardizer or "each design's usual one"),
         ("sampling variance", request.variance or "each design's preferred one, see variance_method"),
         ("confidence level", f"{request.level:g}"),
         ("checks made by the audit", str(result.audit.checks)),

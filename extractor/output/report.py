@@ -161,7 +161,7 @@ def _summary(result: Result) -> dict[str, Any]:
     questioned = len({f.row for f in audit.findings if f.severity >= Severity.DOUBTFUL})
     return {
         "rows_words": counted(len(effects), "row"),
-        "headline": f"{listed(by_status)}; {questioned or 'none'} with a finding.",
+        "headline": f"{listed(by_status)}; {questioned or 'none'} with a finding beyond a note.",
         "grades": grades,
         "counts": counts,
         "severities": severities,

@@ -11,6 +11,7 @@ from markupsafe import Markup
 
 from extractor.api import Result
 from extractor.findings import Finding
+from extractor.output.labels import short_labels
 from extractor.output.marks import SIGNS
 from extractor.output.route_graph import (
     Record,
@@ -69,6 +70,7 @@ class Rows:
         self.lines: Sequence[Line] = result.effects.to_dict("records")
         self.scale = scale_of(result.effects)
         self.sides = sides(result.effects)
+        self.labels = short_labels(result.effects)
         self.page = [str(word) for word in result.conversion.evidence.table.fact("page")]
         self.findings: dict[int, list[Finding]] = {}
         for finding in result.audit.findings:
@@ -104,11 +106,11 @@ class Rows:
     def by_outcome(self) -> list[dict[str, Any]]:
         """The lines of the forest plot, grouped by outcome."""
         groups: dict[str, list[dict[str, Any]]] = {}
-        for line, side in zip(self.lines, self.sides, strict=True):
+        for line, side, label in zip(self.lines, self.sides, self.labels, strict=True):
             groups.setdefault(str(line["outcome"]), []).append(
                 {
                     **self._flag(line),
-                    "short": self._short(line),
+                    "short": label,
                     "strip": Markup(strip(line, self.scale, side)),
                     "numbers": self._numbers(line),
                 }
@@ -135,10 +137,6 @@ class Rows:
             "severities": " ".join(sorted({f.severity.word for f in found})) if found else "none",
             "sign": SIGNS[worst] if worst is not None else "",
         }
-
-    def _short(self, line: Line) -> str:
-        words = [str(line[name]) for name in ("study", "effect") if line[name]]
-        return ", ".join(words) or f"row {line['row']}"
 
     def _numbers(self, line: Line) -> str:
         if line["status"] == "blocked":

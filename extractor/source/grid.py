@@ -13,6 +13,13 @@ from extractor.reported import CellError, UncachedFormula
 
 ObjectArray = NDArray[np.object_]
 
+MOST_COLUMNS = 16_384
+"""Columns of a spreadsheet (common to the programs in use); addresses end there."""
+
+
+class NoRows(UnreadableInput):
+    """A sheet without a row below its headings."""
+
 
 @dataclass(slots=True)
 class Grid:
@@ -75,6 +82,9 @@ class Rows:
             texts = ["" if is_blank(value) else heading_text(value) for value in values]
             while not texts[-1]:
                 texts.pop()
+            if len(texts) > MOST_COLUMNS:
+                where = f"{self.source}, row {number}"
+                raise UnreadableInput(f"{where}: more than {MOST_COLUMNS} headings; no spreadsheet has so many")
             self.header, self.header_row = texts, number
             return
         width = len(self.header)
@@ -90,9 +100,9 @@ class Rows:
         """The finished grid."""
         where = f"{self.source}, sheet {quoted(self.sheet)}" if self.sheet else self.source
         if self.header is None:
-            raise UnreadableInput(f"{where} is empty; the first row must hold the headings")
+            raise NoRows(f"{where} is empty; the first row must hold the headings")
         if not self.records:
-            raise UnreadableInput(f"{where} has headings in row {self.header_row} and no rows below them")
+            raise NoRows(f"{where} has headings in row {self.header_row} and no rows below them")
         count, width = len(self.records), len(self.header)
         columns = [object_array(list(column), count) for column in zip(*self.records, strict=True)]
         formats: list[ObjectArray | None] = [None] * width

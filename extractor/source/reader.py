@@ -2,8 +2,10 @@
 
 from __future__ import annotations
 
+import stat
 import sys
 from pathlib import Path
+from typing import IO
 
 import numpy as np
 import pandas as pd
@@ -11,9 +13,12 @@ import pandas as pd
 from extractor.errors import UnreadableInput
 from extractor.reading import quoted
 from extractor.source.delimited import Known, from_text
-from extractor.source.grid import Grid, ObjectArray, is_blank, object_array
+from extractor.source.grid import MOST_COLUMNS, Grid, ObjectArray, is_blank, object_array
 from extractor.source.workbook import from_workbook
 
+MOST_TEXT = 1 << 30
+"""Bytes of delimited text above which it is taken for endless."""
+_CHUNK = 1 << 20
 _ZIP = b"PK\x03\x04"
 _OLD = b"\xd0\xcf\x11\xe0"
 
@@ -34,20 +39,24 @@ def read_grid(source: str | Path | pd.DataFrame, known: Known, sheets: tuple[str
     if isinstance(source, pd.DataFrame):
         return _from_frame(source)
     if str(source) == "-":
-        return from_text(sys.stdin.buffer.read(), "standard input", "", known)
+        return from_text(_standard_input(), "standard input", "", known)
     path, name = Path(source), quoted(source, 200)
-    if path.is_dir():
-        raise UnreadableInput(f"{name} is a folder; name the sheet in it")
     try:
+        kind = path.stat().st_mode
+        if stat.S_ISDIR(kind):
+            raise UnreadableInput(f"{name} is a folder; name the sheet in it")
+        if stat.S_ISCHR(kind) or stat.S_ISBLK(kind):
+            raise UnreadableInput(f"{name} is a device, not a sheet; pipe its text and name - as the sheet")
         with path.open("rb") as stream:
             head = stream.read(8)
-            content = b"" if head.startswith(_ZIP) else head + stream.read()
+            zipped = head.startswith(_ZIP) and stat.S_ISREG(kind)
+            content = b"" if zipped else head + _all(stream, name)
     except FileNotFoundError as fault:
         raise UnreadableInput(f"{name}: no such file") from fault
     except (OSError, ValueError) as fault:
         reason = getattr(fault, "strerror", None) or str(fault)
         raise UnreadableInput(f"{name} cannot be opened: {reason}") from fault
-    if head.startswith(_ZIP):
+    if zipped:
         return from_workbook(path, name, sheets)
     if head.startswith(_OLD):
         raise UnreadableInput(
@@ -56,6 +65,29 @@ def read_grid(source: str | Path | pd.DataFrame, known: Known, sheets: tuple[str
     if path.suffix.lower() in (".xlsx", ".xlsm", ".xls", ".ods") and content:
         raise UnreadableInput(f"{name} is no workbook, whatever its name says; open it and save it as .xlsx")
     return from_text(content, name, path.suffix.lower(), known)
+
+
+def _standard_input() -> bytes:
+    """All of standard input."""
+    if sys.stdin is None:
+        raise UnreadableInput("standard input is closed; pipe the text of the sheet into the command")
+    try:
+        return _all(sys.stdin.buffer, "standard input")
+    except OSError as fault:
+        raise UnreadableInput(f"standard input cannot be read: {fault.strerror}") from fault
+
+
+def _all(stream: IO[bytes], name: str) -> bytes:
+    """Everything in a stream that may have no end."""
+    chunks, size = list[bytes](), 0
+    while chunk := stream.read(_CHUNK):
+        chunks.append(chunk)
+        size += len(chunk)
+        if size > MOST_TEXT:
+            raise UnreadableInput(
+                f"{name} has more than {MOST_TEXT >> 30} GiB of text; divide it into several sheets"
+            )
+    return b"".join(chunks)
 
 
 def _from_frame(frame: pd.DataFrame) -> Grid:
@@ -71,6 +103,8 @@ def _from_frame(frame: pd.DataFrame) -> Grid:
         filled |= np.fromiter((not is_blank(value) for value in column), dtype=bool, count=len(frame))
     if not filled.any():
         raise UnreadableInput("the data frame has no rows with a value")
+    if len(columns) > MOST_COLUMNS:
+        raise UnreadableInput(f"the data frame has more than {MOST_COLUMNS} columns; no spreadsheet has so many")
     kept = np.flatnonzero(filled)
     return Grid(
         source="data frame",

@@ -13,6 +13,7 @@ import sys
 import time
 from collections.abc import Iterator
 from dataclasses import dataclass, field, fields
+from itertools import permutations
 from multiprocessing import get_context
 
 import numpy as np
@@ -20,12 +21,15 @@ import numpy as np
 from extractor.audit.contradictions import contradictions
 from extractor.evidence import gather
 from extractor.findings import Finding, Severity
+from extractor.quantities import VOCABULARY
 from extractor.table import Variable
+from extractor.words import listed
 from tests.evidence.oracle import feasible, feasible_without, row_of
 from tests.evidence.planted import KINDS, Planted, plant
 from tests.evidence.printing import Sheet, table
 
 ROWS_PER_SHEET = 250
+SHEETS = 40
 ORACLE_ROWS = 300
 CAUGHT, NAMED, FIRST, EXPLAINED = 0.98, 0.999, 0.95, 0.80
 INDEX_WORDS = {
@@ -46,7 +50,6 @@ WORDS = {
     "dfs swapped": "the two df swapped",
     "N before exclusions": "N counted before exclusions",
     "ns swapped": "the ns of two groups swapped",
-    "Welch F": "F, df or p of a Welch test",
     "t as F": "t printed as F",
     "F as t": "F printed as t",
 }
@@ -61,12 +64,21 @@ RECOGNISABLE = (
 )
 
 
+LEGEND = """caught: a contradiction of any severity; incons.: called inconsistent; catchable: share of a subsample that
+the oracle calls impossible; of these: share of the catchable that is caught; named: every planted cell is among the
+suspects; unique: share of the caught subsample in which no single cell but the planted can be at fault; first: a
+planted cell stands first there; explained: the right explanation and a planted cell stand first; suspects: cells
+named on average. A slip that rounding hides leaves a possible row, which nobody could catch.
+* no target for the explanation: such a slip often cannot be told from others that repair the row as well."""
+
+
 @dataclass
 class Tally:
     """Counts of one kind. The subsample's counts begin with ``sampled``.
 
     catchable : rows the oracle calls impossible. both : of these, caught. wrongly : caught though the oracle finds
-    the row possible. unique : caught rows in which only the planted cells can be at fault. first : of these, named first.
+    the row possible. unique : of both, rows in which no other single cell can be at fault. first : of these, a
+    planted cell is named first.
     """
 
     rows: int = 0
@@ -90,7 +102,7 @@ class Tally:
 
 @dataclass(frozen=True)
 class Task:
-    """Rows of one kind from one seed, the first ``oracle`` of each sheet put to the oracle."""
+    """Rows of one kind from one seed, the first ``oracle`` of them put to the oracle."""
 
     kind: str
     seed: int
@@ -103,7 +115,7 @@ def examine(task: Task) -> tuple[str, Tally]:
     rng = np.random.default_rng(task.seed)
     tally = Tally()
     while tally.rows < task.rows:
-        planted = plant(task.kind, rng, ROWS_PER_SHEET)
+        planted = plant(task.kind, rng, 2 * (task.rows - tally.rows))
         if planted.sheet.rows:
             _count(task, planted, min(planted.sheet.rows, task.rows - tally.rows), tally)
     return task.kind, tally
@@ -167,6 +179,9 @@ def _right_words(planted: Planted, position: int, cells: list[Variable]) -> tupl
     """How the right explanation may begin."""
     if planted.kind in WORDS:
         return (WORDS[planted.kind],)
+    if planted.kind == "Welch F":
+        symbols = [VOCABULARY[v[0]].symbol for v in planted.sheet.columns if v in cells]
+        return tuple(f"{listed(some)} of a Welch test" for some in permutations(symbols))
     if planted.kind == "df of N - 1 or N":
         total = planted.truth["n_total"][position]
         now = planted.sheet.columns[cells[0]].value[position]
@@ -193,7 +208,9 @@ def _note(
         decimals = int(np.broadcast_to(printed.decimals, printed.value.shape)[position])
         bound = "<" if printed.below is not None and printed.below[position] else "="
         bound = ">" if printed.above is not None and printed.above[position] else bound
-        said.append(f"{name}{'' if group is None else f'_{group}'}{bound}{printed.value[position]:.{decimals}f}")
+        said.append(
+            f"{name}{'' if group is None else f'_{group}'}{bound}{printed.value[position]:.{decimals}f}"
+        )
     message = "" if finding is None else f" | {finding.message} | {finding.explanation}"
     tally.examples.append(f"{task.kind}, seed {task.seed}: {what}: {', '.join(said)}{message}")
 
@@ -201,9 +218,10 @@ def _note(
 def _tasks(kinds: list[str], rows: int, seed: int) -> Iterator[Task]:
     for kind in kinds:
         number = list(KINDS).index(kind)
-        sheets = -(-rows // ROWS_PER_SHEET)
+        size = min(ROWS_PER_SHEET, -(-rows // SHEETS))
+        sheets = -(-rows // size)
         for part in range(sheets):
-            some = min(ROWS_PER_SHEET, rows - part * ROWS_PER_SHEET)
+            some = min(size, rows - part * size)
             asked = ORACLE_ROWS * (part + 1) // sheets - ORACLE_ROWS * part // sheets
             yield Task(kind, seed + 100_000 * number + part, some, asked)
 
@@ -232,7 +250,19 @@ def _shortfalls(kind: str, tally: Tally) -> list[str]:
 
 
 def _print(tallies: dict[str, Tally]) -> None:
-    heads = ("kind", "rows", "caught", "incons.", "catchable", "of these", "named", "unique", "first", "explained", "suspects")
+    heads = (
+        "kind",
+        "rows",
+        "caught",
+        "incons.",
+        "catchable",
+        "of these",
+        "named",
+        "unique",
+        "first",
+        "explained",
+        "suspects",
+    )
     print(f"{heads[0]:<22}" + "".join(f"{h:>10}" for h in heads[1:]))
     for kind, t in tallies.items():
         shares = (
@@ -272,8 +302,11 @@ def main(argv: list[str] | None = None) -> int:
     with get_context("spawn").Pool(options.workers) as pool:
         for kind, tally in pool.imap_unordered(examine, tasks, chunksize=1):
             tallies[kind].add(tally)
-    print(f"seeds {options.seed} + 100,000 for each kind + one for each {ROWS_PER_SHEET} rows")
+    print(
+        f"seeds {options.seed} to {tasks[-1].seed}: 100,000 apart for the kinds, one for each sheet of a kind"
+    )
     _print(tallies)
+    print(LEGEND)
     print(f"seconds {time.perf_counter() - started:.0f}")
     missed = {kind: _shortfalls(kind, tally) for kind, tally in tallies.items()}
     for kind, tally in tallies.items():

@@ -11,6 +11,7 @@ With two groups the signs are kept by looking at each sign of M1 - M2 in turn.
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import lru_cache
 from itertools import product
 
 import numpy as np
@@ -23,7 +24,7 @@ from tests.evidence.printing import Printed, Sheet
 MOST_PARTICIPANTS = 3000
 """A group size nobody printed is searched for up to this number."""
 
-_LOOSE = 1e-10
+_LOOSE = 1e-12
 Ends = tuple[float, float]
 _UNKNOWN: Ends = (-np.inf, np.inf)
 
@@ -119,22 +120,27 @@ def _holds(row: Row, n: FloatArray) -> BoolArray:
 
 
 def _least_between(n: FloatArray, low: FloatArray, high: FloatArray) -> FloatArray:
-    """Least sum of n·(M - c)² over the box and over c: convex in c, so thirds are cut off until nothing moves."""
+    """Least sum of n·(M - c)² over the box and over c.
+
+    Between two neighbouring ends of intervals the sum is one parabola in c, so the least value lies at an end or at
+    the vertex of a parabola inside its piece: all of them are looked at.
+    """
     finite = np.isfinite(low) & np.isfinite(high)
-    if not finite.any():
+    if finite.sum() < 2:
         return np.zeros(len(n))
-    left = np.full(len(n), min(low[finite].min(), high[finite].min()))
-    right = np.full(len(n), max(low[finite].max(), high[finite].max()))
-
-    def spread(centre: FloatArray) -> FloatArray:
-        gap = np.maximum(np.maximum(low - centre[:, None], centre[:, None] - high), 0)
-        return np.asarray((n * gap**2).sum(axis=1))
-
-    for _ in range(60):
-        third = (right - left) / 3
-        better_left = spread(left + third) <= spread(right - third)
-        left, right = np.where(better_left, left, left + third), np.where(better_left, right - third, right)
-    return spread((left + right) / 2)
+    n, low, high = n[:, finite], low[finite], high[finite]
+    ends = np.sort(np.concatenate([low, high]))
+    middle = ((ends[1:] + ends[:-1]) / 2)[:, None]
+    target = np.where(low > middle, low, high)
+    pulls = (low > middle) | (high < middle)
+    weight = n @ pulls.T
+    with np.errstate(divide="ignore", invalid="ignore"):
+        vertex = np.where(weight > 0, (n @ (pulls * target).T) / weight, middle[:, 0])
+    centres = np.concatenate(
+        [np.clip(vertex, ends[:-1], ends[1:]), np.broadcast_to(ends, (len(n), len(ends)))], axis=1
+    )
+    gap = np.maximum(np.maximum(low - centres[:, :, None], centres[:, :, None] - high), 0)
+    return np.asarray((n[:, None, :] * gap**2).sum(axis=2).min(axis=1))
 
 
 def _most_between(n: FloatArray, low: FloatArray, high: FloatArray) -> FloatArray:
@@ -175,7 +181,7 @@ def _ratios(row: Row, n: FloatArray, sign: float | None) -> tuple[FloatArray, Fl
         cut(a * per_f, b * per_f)
         a, b = row.of("p_value")
         if (a, b) != _UNKNOWN:
-            cut(stats.f.isf(b, v1, v2) * per_f, stats.f.isf(a, v1, v2) * per_f)
+            cut(_f_of_p(b, v1, v2) * per_f, _f_of_p(a, v1, v2) * per_f)
         for name in ("eta_squared", "partial_eta_squared", "generalized_eta_squared"):
             a, b = row.of(name)
             if (a, b) != _UNKNOWN:
@@ -201,6 +207,15 @@ def _ratios(row: Row, n: FloatArray, sign: float | None) -> tuple[FloatArray, Fl
     return low, high
 
 
+def _f_of_p(p: float, v1: float, v2: FloatArray) -> FloatArray:
+    return np.array([_quantile(p, v1, float(v)) for v in v2])
+
+
+@lru_cache(maxsize=20_000)
+def _quantile(p: float, v1: float, v2: float) -> float:
+    return float(stats.f.isf(p, v1, v2))
+
+
 def _odds(index: float) -> float:
     return index / (1 - index) if index < 1 else np.inf
 
@@ -210,7 +225,11 @@ def _signed(row: Row, n: FloatArray, v2: FloatArray) -> list[tuple[FloatArray, F
     root = np.sqrt(1 / n[:, 0] + 1 / n[:, 1])
     factor = np.exp(special.gammaln(v2 / 2) - special.gammaln((v2 - 1) / 2)) / np.sqrt(v2 / 2)
     found = []
-    for name, to_t in (("t_value", np.ones_like(v2)), ("cohens_d", 1 / root), ("hedges_g", 1 / (root * factor))):
+    for name, to_t in (
+        ("t_value", np.ones_like(v2)),
+        ("cohens_d", 1 / root),
+        ("hedges_g", 1 / (root * factor)),
+    ):
         a, b = row.of(name)
         if (a, b) != _UNKNOWN:
             found.append((a * to_t, b * to_t))

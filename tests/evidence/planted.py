@@ -19,7 +19,7 @@ from tests.evidence.honest import statistics
 from tests.evidence.printing import Printed, Sheet, rounded
 
 INDICES = ("eta_squared", "omega_squared", "epsilon_squared", "cohens_f")
-ROWS_OF_A_SIZE = 20
+ROWS_OF_A_SIZE = 250
 SIGNED = ("t_value", "cohens_d", "hedges_g", "r", "mean_difference", "mean")
 
 
@@ -58,7 +58,7 @@ class Wants:
     """What a kind of slip needs the study to print."""
 
     two_groups: bool | None = None
-    spreads: tuple[str, ...] = ("sd", "sd", "sd", "both")
+    spreads: tuple[str, ...] = ("sd", "sd", "sd", "sd", "both", "se", "none")
     always: frozenset[str] = frozenset()
     around_zero: float = 0.25
     unequal: bool = False
@@ -75,7 +75,7 @@ def redundant_sheet(rng: np.random.Generator, rows: int, wants: Wants) -> Study:
     for start in range(0, rows, ROWS_OF_A_SIZE):
         sizes = _sizes(rng, k, wants.unequal)
         some = statistics(_scores(rng, min(ROWS_OF_A_SIZE, rows - start), sizes, centre, unit))
-        some["n"] = np.broadcast_to(sizes.astype(float), some["mean"].shape)
+        some["n"] = np.broadcast_to(sizes, some["mean"].shape)
         drawn.append(some)
     found = {name: np.concatenate([some[name] for some in drawn]) for name in drawn[0]}
     found["variance"] = found["sd"] ** 2
@@ -93,9 +93,9 @@ def redundant_sheet(rng: np.random.Generator, rows: int, wants: Wants) -> Study:
 def _sizes(rng: np.random.Generator, k: int, unequal: bool) -> FloatArray:
     low, high = (4, 12) if rng.random() < 0.3 else (8, 40)
     if not unequal and rng.random() < 0.5:
-        return np.full(k, rng.integers(low, high))
+        return np.full(k, float(rng.integers(low, high)))
     while True:
-        sizes = rng.integers(low, high, size=k)
+        sizes = rng.integers(low, high, size=k).astype(float)
         if not unequal or (sizes != sizes[0]).any():
             return sizes
 
@@ -106,7 +106,8 @@ def _scores(
     shift = rng.normal(0, rng.choice([0.3, 0.8, 1.5]), size=(rows, len(sizes)))
     spread = np.exp(rng.normal(0, rng.choice([0.1, 0.4]), size=len(sizes)))
     return [
-        unit * (centre + shift[:, [j]] + rng.normal(0, spread[j], size=(rows, int(n)))) for j, n in enumerate(sizes)
+        unit * (centre + shift[:, [j]] + rng.normal(0, spread[j], size=(rows, int(n))))
+        for j, n in enumerate(sizes)
     ]
 
 
@@ -191,7 +192,9 @@ def plant(kind: str, rng: np.random.Generator, rows: int) -> Planted:
     """A sheet of at most ``rows`` rows with one error of a kind in each; rows that print as before are dropped."""
     wants, slip = KINDS[kind]
     study = redundant_sheet(rng, rows, wants)
-    printed = {v: Printed(p.value.copy(), p.decimals, p.below, p.above) for v, p in study.sheet.columns.items()}
+    printed = {
+        v: Printed(p.value.copy(), p.decimals, p.below, p.above) for v, p in study.sheet.columns.items()
+    }
     planted = Planted(kind, Sheet(printed, study.sheet.facts), study.sheet, study.found)
     slip(rng, study, planted)
     return _kept(planted)
@@ -218,12 +221,16 @@ def _kept(planted: Planted) -> Planted:
 
 
 def _rows(sheet: Sheet, keep: BoolArray) -> Sheet:
-    def some(values: FloatArray | None) -> FloatArray | None:
+    def some(values: BoolArray | None) -> BoolArray | None:
         return None if values is None else values[keep]
 
     columns = {
         v: Printed(
-            p.value[keep], np.broadcast_to(p.decimals, keep.shape)[keep], some(p.below), some(p.above), some(p.given)
+            p.value[keep],
+            np.broadcast_to(p.decimals, keep.shape)[keep],
+            some(p.below),
+            some(p.above),
+            some(p.given),
         )
         for v, p in sheet.columns.items()
     }
@@ -266,12 +273,12 @@ def _sd_as_se(rng: np.random.Generator, study: Study, planted: Planted) -> None:
     _everywhere(planted, "se", study.found["sd"])
 
 
-@_slip("variance labelled SD")
+@_slip("variance labelled SD", Wants(spreads=("sd", "sd", "sd", "both")))
 def _variance_as_sd(rng: np.random.Generator, study: Study, planted: Planted) -> None:
     _everywhere(planted, "sd", study.found["variance"])
 
 
-@_slip("population SD")
+@_slip("population SD", Wants(spreads=("sd", "sd", "sd", "both")))
 def _population_sd(rng: np.random.Generator, study: Study, planted: Planted) -> None:
     _everywhere(planted, "sd", study.found["population_sd"])
 

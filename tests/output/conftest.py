@@ -14,32 +14,10 @@ from extractor.api import Result, convert
 from extractor.output.package import Request
 
 HEADINGS = [
-    "study",
-    "outcome",
-    "effect",
-    "design",
-    "contrast",
-    "f_value",
-    "df_effect",
-    "df_error",
-    "p_value",
-    "t_value",
-    "df",
-    "n_total",
-    "n_1",
-    "mean_1",
-    "sd_1",
-    "n_2",
-    "mean_2",
-    "sd_2",
-    "n_3",
-    "mean_3",
-    "sd_3",
-    "eta_squared",
-    "direction",
-    "page",
-    "notes",
-]
+    "study", "outcome", "effect", "design", "contrast", "f_value", "df_effect", "df_error", "p_value", "t_value",
+    "df", "n_total", "n_1", "mean_1", "sd_1", "n_2", "mean_2", "sd_2", "n_3", "mean_3", "sd_3", "eta_squared",
+    "direction", "page", "notes",
+]  # fmt: skip
 
 _CELLS: list[dict[str, str]] = [
     # an F with its degrees of freedom, and the groups

@@ -21,6 +21,7 @@ import extractor
 from extractor.api import Result, convert
 from extractor.errors import UsageError
 from extractor.output import report
+from extractor.output.labels import short_labels
 from extractor.output.layout import arrange
 from extractor.output.package import Request
 from extractor.output.report import render, write_report
@@ -120,7 +121,7 @@ def test_counts_are_those_of_the_tables(converted: Converted) -> None:
         assert line["all"] == len(mine)
     assert sum(line["all"] for line in context["counts"]) == len(result.effects)
     assert sum(line["findings"] for line in context["severities"]) == len(result.findings)
-    assert "5 converted, 1 bounded and" in render(result, request)
+    assert "6 converted, 1 bounded and 1 blocked; " in render(result, request)
 
 
 def test_every_row_has_its_entry_and_its_line(converted: Converted) -> None:
@@ -311,3 +312,8 @@ def test_effects_are_printed_with_three_decimals(value: float, expected: str) ->
 def test_symbols_keep_their_case_at_the_start_of_a_sentence() -> None:
     assert sentence("ω² has no direction") == "ω² has no direction"
     assert sentence("rows 2 and 3") == "Rows 2 and 3"
+
+
+def test_rows_that_would_be_called_alike_are_told_apart() -> None:
+    effects = pd.DataFrame({"row": [2, 3, 4, 5], "study": ["A", "A", "B", ""], "effect": ["x", "x", "", ""]})
+    assert short_labels(effects) == ["A, x, row 2", "A, x, row 3", "B", "row 5"]

@@ -1,0 +1,128 @@
+"""The register of fault kinds, and what every fault needs: a sheet of honest rows, and a command to run on it."""
+
+from __future__ import annotations
+
+import csv
+import io
+import random
+import warnings
+from collections.abc import Callable
+from dataclasses import dataclass
+from pathlib import Path
+
+from extractor.quantities import METRICS
+from tests.fuzz.judging import Case
+from tests.fuzz.seeds import ROWS
+
+READ = frozenset({0})
+"""Whatever stands in the cells, the sheet is read."""
+READ_OR_NOT = frozenset({0, 4})
+
+
+@dataclass
+class Hostile:
+    """An input with a fault in it.
+
+    sheet : the path, or "-" with ``stdin``. allowed : exit statuses it may have. rows : rows of the effect table;
+    None where the fault leaves them open. more : further words of ``convert``; without a sheet, the whole command.
+    """
+
+    sheet: str
+    allowed: frozenset[int]
+    stdin: bytes | None = None
+    rows: int | None = None
+    codebook: str | None = None
+    groups: str | None = None
+    decisions: str | None = None
+    more: tuple[str, ...] = ()
+
+
+Maker = Callable[[random.Random, Path], Hostile]
+FAULTS: dict[str, Maker] = {}
+"""Makers by the name of the fault kind."""
+
+
+def fault(name: str) -> Callable[[Maker], Maker]:
+    """Register a maker under the name of its kind."""
+
+    def register(maker: Maker) -> Maker:
+        assert name not in FAULTS
+        FAULTS[name] = maker
+        return maker
+
+    return register
+
+
+def case(name: str, seed: int, folder: Path) -> Case:
+    """The case of a kind and seed: the same seed always gives the same files and the same command line.
+
+    ``folder`` is an empty folder for the input; the output is written beside it.
+    """
+    source = random.Random(f"{name} {seed}")
+    with warnings.catch_warnings():
+        # the makers of archives warn of what is wrong with them
+        warnings.simplefilter("ignore")
+        made = FAULTS[name](source, folder)
+    if not made.sheet:
+        return Case(list(made.more), made.allowed)
+    words = [made.sheet]
+    for option in ("codebook", "groups", "decisions"):
+        value = getattr(made, option)
+        if value is not None:
+            words += [f"--{option}", value]
+    allowed, out = made.allowed, None
+    kind = source.random()
+    if kind < 0.15 and not made.more:
+        words = ["audit", *words]
+    elif kind < 0.2 and not made.more:
+        # a row that was not read is a mistake of whoever asks for it
+        words, allowed = ["trace", *words, str(source.randint(1, 4)), "--to", metric(source)], allowed | {2}
+    elif kind < 0.3:
+        words = ["convert", *words, "--to", metric(source), "--format", source.choice(("csv", "json"))]
+        words += made.more
+    else:
+        out = folder.parent / "out"
+        words = ["convert", *words, "--to", metric(source), "--out", str(out), *made.more]
+        for format_ in source.sample(("xlsx", "json", "dta"), source.choice((0, 0, 0, 1))):
+            words += ["--format", format_]
+    if words[0] != "trace" and source.random() < 0.1:
+        words += ["--fail-on", source.choice(("impossible", "inconsistent", "doubtful"))]
+        allowed = allowed | {3} if 0 in allowed else allowed
+    return Case(words, allowed, out, made.stdin, made.rows)
+
+
+def metric(source: random.Random) -> str:
+    """A metric, the common ones more often."""
+    return source.choice((*METRICS, "omega_squared", "hedges_g", "hedges_g"))
+
+
+def honest(source: random.Random, rows: int) -> list[dict[str, str]]:
+    """So many honest rows, with labels."""
+    return [
+        {"study": f"Site {at + 1}", "outcome": "recall", **source.choice(ROWS)} for at in range(rows)
+    ]
+
+
+def headings_of(rows: list[dict[str, str]]) -> list[str]:
+    """Every heading of the rows, in the order they come up."""
+    return list(dict.fromkeys(name for row in rows for name in row))
+
+
+def cells_of(rows: list[dict[str, str]]) -> list[list[str]]:
+    """The heading row and the rows below it."""
+    headings = headings_of(rows)
+    return [headings, *([row.get(name, "") for name in headings] for row in rows)]
+
+
+def delimited(cells: list[list[str]], delimiter: str = ",", newline: str = "\n") -> str:
+    """Cells as delimited text (RFC 4180)."""
+    stream = io.StringIO(newline="")
+    csv.writer(stream, delimiter=delimiter, lineterminator=newline).writerows(cells)
+    return stream.getvalue()
+
+
+def as_csv(folder: Path, cells: list[list[str]]) -> str:
+    """The path of a new csv file of these cells."""
+    path = folder / "sheet.csv"
+    path.write_text(delimited(cells), encoding="utf-8", newline="")
+    return str(path)
