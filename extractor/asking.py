@@ -148,6 +148,7 @@ _WORDS = {
     "direction": "direction of the difference",
     "tails": "whether p is one- or two-tailed",
     "confidence_level": "confidence level of the limits",
+    "significance_level": "significance level of the printed difference",
     "k_groups": "number of groups",
 }
 
@@ -251,7 +252,7 @@ def _batch(conversion: Conversion, asked: list[Asked]) -> pd.DataFrame:
     sets = sorted({o.asked for some in asked for o in some.offers}, key=sorted)
     lines: list[dict[str, object]] = []
     for one in sets:
-        served = [(some, o) for some in asked for o in some.offers[:] if o.asked <= one]
+        served = [(some, o) for some in asked for o in some.offers if o.asked <= one]
         by_aim = {
             word: np.unique(np.concatenate([s.positions for s, o in served if o.aim is aim] or [_NO_ROWS]))
             for aim, word in _COUNTED.items()

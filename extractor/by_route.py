@@ -10,6 +10,7 @@ import pandas as pd
 from extractor.catalogue.relation import Grade
 from extractor.choice import Chosen
 from extractor.conversion import Conversion, route_words
+from extractor.planner import Route
 from extractor.sampling.precision import standardizer_of
 from extractor.sensitivity import LABELS, flipped_rows, in_sheet_order, labelled, variance_of_rows
 
@@ -48,7 +49,7 @@ def _by_route(conversion: Conversion, chosen: Chosen) -> Iterator[pd.DataFrame]:
         with np.errstate(invalid="ignore"):
             apart = ((low > high[mine]) | (high < low[mine])).any(axis=0)
         lowest, highest = np.fmin.reduce(values), np.fmax.reduce(values)
-        words = np.array([route_words(chosen.routes[at].leaves, conversion.metric) for at in alike])
+        words = np.array([_words(chosen.routes[at], conversion.metric) for at in alike])
         first = words[np.where(np.isfinite(values), values, np.inf).argmin(axis=0)]
         last = words[np.where(np.isfinite(values), values, -np.inf).argmax(axis=0)]
         flipped = flipped_rows(conversion, chosen)[rows]
@@ -65,3 +66,9 @@ def _by_route(conversion: Conversion, chosen: Chosen) -> Iterator[pd.DataFrame]:
             lowest_route=np.where(flipped, last, first),
             highest_route=np.where(flipped, first, last),
         )
+
+
+def _words(route: Route, metric: str) -> str:
+    """A route by what it starts from; what it loses is said where it is more than rounding."""
+    lost = "" if route.grade is Grade.IDENTITY else f" ({route.grade.word})"
+    return route_words(route.leaves, metric) + lost

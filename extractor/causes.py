@@ -53,7 +53,12 @@ class Causes:
             for n in _READING
             if old.settings.get(n) != new.settings.get(n)
         ]
+        self.other_codebook = self._codebook(old) != self._codebook(new)
         self.by_study: dict[str, list[str]] | None = None
+
+    @staticmethod
+    def _codebook(run: Run) -> list[object]:
+        return [source for source in run.sources if str(source.get("title", "")).startswith("codebook")]
 
     def of(self, before: pd.Series, after: pd.Series) -> tuple[str, list[str]]:
         """The cause in one word, and in sentences."""
@@ -90,8 +95,17 @@ class Causes:
         return [
             arrow(b.get(h, a.get(h, ("", "")))[0], a.get(h, ("", None))[1], b.get(h, ("", None))[1])
             for h in dict.fromkeys([*a, *b])
-            if a.get(h, ("", ""))[1] != b.get(h, ("", ""))[1]
+            if not self._alike(a.get(h, ("", ""))[1], b.get(h, ("", ""))[1])
         ]
+
+    def _alike(self, before: str, after: str) -> bool:
+        """Whether two cells are the same; another codebook may show the same number with other digits."""
+        if before == after or not self.other_codebook:
+            return before == after
+        try:
+            return float(before) == float(after)
+        except ValueError:
+            return False
 
     def _leaves(self, old_row: int, new_row: int) -> list[str]:
         """The same from the reported quantities that both routes start from."""

@@ -15,7 +15,7 @@ from pathlib import Path
 import numpy as np
 import pandas as pd
 
-from extractor.codebook import Codebook, normalised, parse_codebook
+from extractor.codebook import Codebook, canonical, normalised, parse_codebook
 from extractor.errors import InvalidCodebook
 from extractor.quantities import DESIGNS, group_heading
 from extractor.reading import quoted
@@ -211,7 +211,7 @@ def misreadable(table: ReportedTable, codebook: Codebook) -> list[str]:
     for numbers in table.numbers.values():
         heading = " ".join(numbers.place.heading.split())
         alike = [known for known in exact if normalised(known) == normalised(heading)]
-        if numbers.place.column and heading not in exact and alike:
+        if numbers.place.column and heading not in exact and alike and canonical(heading) is None:
             found.append(f"{quoted(heading)} was taken for {quoted(alike[0])}")
     return found
 

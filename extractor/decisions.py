@@ -33,6 +33,8 @@ KEEP, CORRECT, WAIVE = WORDS = ("keep", "correct", "waive")
 _NEEDED = {KEEP: ("by",), CORRECT: ("cell", "value", "source", "by"), WAIVE: ("by", "why")}
 _ADDRESS = re.compile(r"\$?(?P<column>[A-Za-z]{1,3})\$?(?P<row>[1-9][0-9]{0,9})|row (?P<only>[1-9][0-9]{0,9})")
 _NAMED = re.compile(r"(?P<heading>.*?)\s*\[(?P<address>[^\[\]]*)\]")
+_LONGEST = 1000
+"""Longer cells hold more than a heading and its address."""
 _NO_FINDING = "decision without a finding"
 _DONE = {KEEP: "kept", CORRECT: "corrected", WAIVE: "waived"}
 _PARTS = tuple(field.name for field in fields(Numbers) if field.name != "place")
@@ -264,7 +266,7 @@ def _variables(table: ReportedTable, decision: Decision, codebook: Codebook) -> 
     text = decision.cell
     if not text:
         return []
-    named = _NAMED.fullmatch(text)
+    named = _NAMED.fullmatch(text) if len(text) <= _LONGEST else None
     heading, spot = (named["heading"], named["address"]) if named else (text, text)
     meaning, address = codebook.meaning(heading), _ADDRESS.fullmatch(spot)
     known = isinstance(meaning, tuple) and meaning in table.numbers

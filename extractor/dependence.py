@@ -153,7 +153,8 @@ class _Pairs:
             for name, into in self.known.items():
                 leaf = block.leaves.get(name)
                 if leaf is not None:
-                    into[block.positions, : block.groups] = leaf.value
+                    width = min(leaf.value.shape[1], shape[1])
+                    into[block.positions, :width] = leaf.value[:, :width]
         flipped = result.conversion.evidence.table.fact("orientation") == "-"
         self.known["contrast_weight"][flipped] *= -1
         self.side = np.where(flipped, 1.0, -1.0)

@@ -15,19 +15,22 @@ COLUMNS = ["row_a", "study_a", "row_b", "study_b", "alike", "numbers", "shown"]
 _QUANTITIES = {
     "group sizes": ("n",),
     "means": ("mean",),
+    "SDs": ("sd",),
     "F": ("f_value", "df_effect", "df_error"),
     "t": ("t_value", "df", "n_total"),
 }
+_TWO_SIZES = ("group sizes", 2)
 _MOST_ALIKE = 20
 """A combination that more rows share is a habit of the field (20 per group), not a copy."""
 
 
 def duplicate_reports(table: ReportedTable) -> pd.DataFrame:
-    """Pairs of rows of different studies that agree in group sizes, means, or F with its df.
+    """Pairs of rows of different studies that agree in group sizes, means, SDs, F or t.
 
-    Group sizes count only where they differ within the row: equal sizes agree by chance. Means count from two
-    groups on, F where it is printed with its df or with two decimals. ``numbers`` is how many printed numbers agree;
-    the pairs with most come first. A pair is a question: two arms of one trial, or one sample reported twice?
+    Group sizes count only where they differ within the row, and alone only from three groups on: equal or few sizes
+    agree by chance. Means and SDs count from two groups on, F and t where they are printed with their df or with two
+    decimals. ``numbers`` is how many printed numbers agree; the pairs with most come first. A pair is a question:
+    two arms of one trial, or one sample reported twice?
     """
     found: dict[tuple[int, int], list[tuple[str, int]]] = {}
     for word, key, count in _keys(table):
@@ -45,6 +48,7 @@ def duplicate_reports(table: ReportedTable) -> pd.DataFrame:
             "shown": _shown(table, a, [word for word, _ in alike]),
         }
         for (a, b), alike in found.items()
+        if alike != [_TWO_SIZES]
     ]
     frame = pd.DataFrame(lines, columns=COLUMNS)
     return frame.sort_values(
@@ -64,17 +68,19 @@ def _matrix(table: ReportedTable, name: str) -> FloatArray:
 
 def _keys(table: ReportedTable) -> Iterator[tuple[str, NDArray[np.int64], NDArray[np.int64]]]:
     """What may agree: its name, a code per row (-1 where the numbers say nothing), and how many numbers it is."""
-    sizes, means = _matrix(table, "n"), _matrix(table, "mean")
+    sizes = _matrix(table, "n")
     count = np.isfinite(sizes).sum(axis=1)
     with np.errstate(invalid="ignore"):
         unequal = np.fmax.reduce(sizes, axis=1, initial=-np.inf) > np.fmin.reduce(
             sizes, axis=1, initial=np.inf
         )
-    yield "group sizes", _codes(np.sort(sizes, axis=1), (count >= 2) & unequal), count
     # the same groups in another order are the same groups
-    count = np.isfinite(means).sum(axis=1)
-    fractional = (np.isfinite(means) & (means != np.rint(means))).any(axis=1)
-    yield "means", _codes(np.sort(means, axis=1), (count >= 2) & fractional), count
+    yield "group sizes", _codes(np.sort(sizes, axis=1), (count >= 2) & unequal), count
+    for word, name in (("means", "mean"), ("SDs", "sd")):
+        values = _matrix(table, name)
+        count = np.isfinite(values).sum(axis=1)
+        fractional = (np.isfinite(values) & (values != np.rint(values))).any(axis=1)
+        yield word, _codes(np.sort(values, axis=1), (count >= 2) & fractional), count
     for word in ("F", "t"):
         names = _QUANTITIES[word]
         columns = [_scalar(table, name) for name in names]

@@ -152,6 +152,9 @@ class _Gathering:
         for name, group in self.use:
             if group is not None:
                 highest = np.where(self.given(name, group), np.maximum(highest, group), highest)
+        # a design of two groups has two, whichever of them is coded
+        two = np.isin(self.table.fact("design"), ("two-group", "paired", "pre-post-control"))
+        highest = np.where(two & (highest == 1), 2.0, highest)
         # conditions of a model with several within factors are cells, not levels of the row's own factor
         several = (self.table.fact("design") == "within") & (
             (terms_per_row(self.table, self.table.fact("design")) > 1) | self._joint_term()
@@ -188,7 +191,9 @@ class _Gathering:
         other = np.logical_or.reduce([self.given(name) for name in _OTHER_TESTS])
         for name, own in (("p_value", np.zeros(self.rows, dtype=bool)), ("df", self.given("t_value"))):
             if (name, None) in self.use:
-                self.coding.remark(other & ~own & self.use[name, None], f"{name} beside another test is not used")
+                self.coding.remark(
+                    other & ~own & self.use[name, None], f"{name} beside another test is not used"
+                )
                 self.use[name, None] = self.use[name, None] & (own | ~other)
         self.corrected = fractional & correctable
         self.coding.remark(
@@ -321,7 +326,8 @@ class _Gathering:
 
     def _add_facts(self, block: Block) -> None:
         rows, first = block.positions, block.positions[0]
-        if block.groups >= 2:
+        # the two groups of a table of counts have no columns of their own
+        if block.groups >= 2 or (block.design == "two-group" and not block.groups):
             texts, which = np.unique(self.table.fact("contrast")[rows].astype(str), return_inverse=True)
             stacked = np.stack([self.weights[str(t), block.groups] for t in texts])[which]
             if stacked.any(axis=-1).all():

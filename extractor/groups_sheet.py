@@ -13,11 +13,13 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from extractor.codebook import Codebook
+from extractor.codebook import MOST_GROUPS, Codebook
 from extractor.errors import UnreadableInput
 from extractor.quantities import VOCABULARY, Role, Shape
+from extractor.reading import quoted
 from extractor.sheet import read_table
 from extractor.source.columns import filled, take_rows
+from extractor.source.grid import NoRows
 from extractor.source.workbook import has_sheet
 from extractor.study.terms import factors_of
 from extractor.table import Cells, FloatArray, Numbers, ObjectArray, Place, ReportedTable, Variable
@@ -51,7 +53,13 @@ def with_groups(
         if isinstance(source, pd.DataFrame) or str(source) == "-" or not has_sheet(Path(source), SHEET):
             return table
         groups = source
-    long = read_table(groups, _book(codebook))
+    try:
+        long = read_table(groups, _book(codebook))
+    except NoRows:
+        # headings without lines, as in a fresh coding sheet, are no groups
+        if groups is source:
+            return table
+        raise
     where = f"{long.source}, sheet {long.sheet or SHEET}"
     if "analysis" not in long.facts:
         raise UnreadableInput(f"{where}: no column 'analysis' says which rows the lines belong to; add it")
@@ -78,8 +86,16 @@ class _Joining:
         self.table, self.long = table, long
         self.design = table.fact("design")
         key = pd.Series(long.fact("analysis").astype(str))
-        self.number = key.groupby(key).cumcount().to_numpy() + 1
+        joined = (key != "") & key.isin(set(table.fact("analysis").astype(str)))
+        self.number = np.where(joined, key.groupby(key).cumcount().to_numpy() + 1, 0)
         self.key = key.to_numpy()
+        if self.number.max(initial=0) > MOST_GROUPS:
+            where = f"{long.source}, sheet {long.sheet or SHEET}"
+            most = int(np.argmax(self.number > MOST_GROUPS))
+            raise UnreadableInput(
+                f"{where}, row {long.row_numbers[most]}: more than {MOST_GROUPS} lines of the analysis "
+                f"{quoted(self.key[most])}"
+            )
         self.contrast: ObjectArray = table.fact("contrast").copy()
 
     def joined(self) -> ReportedTable:

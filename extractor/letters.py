@@ -33,8 +33,9 @@ _OF_TWO = frozenset({"direction", "mean_difference", "t_value"})
 
 PHRASES = {
     "direction": "which of the two groups (or conditions) had the higher mean",
-    "tails": "whether the printed p value is one-tailed or two-tailed",
-    "confidence_level": "the level of the printed confidence limits, in per cent",
+    "tails": "number of tails of the printed p value, 1 or 2",
+    "confidence_level": "level of the printed confidence limits, such as .95",
+    "significance_level": "significance level of the printed least significant difference, such as .05",
     "n": "number of participants analysed",
     "n_total": "number of participants analysed, all groups together",
     "k_groups": "number of groups (or conditions) in this analysis",
@@ -166,7 +167,7 @@ class _Names:
 
     def of(self, study: str) -> str:
         """The stem for a study."""
-        text = unicodedata.normalize("NFKD", study).encode("ascii", "ignore").decode()
+        text = unicodedata.normalize("NFKD", study.translate(_LETTERS)).encode("ascii", "ignore").decode()
         stem = re.sub(r"[^a-z0-9]+", "-", text.lower()).strip("-")[:60] or "study"
         # a letter of this name would be a device on some systems
         stem = f"study-{stem}" if stem in _DEVICES else stem
@@ -177,6 +178,8 @@ class _Names:
         return name
 
 
+_LETTERS = str.maketrans({"ø": "o", "Ø": "O", "æ": "ae", "œ": "oe", "ß": "ss", "ł": "l", "Ł": "L", "đ": "d"})
+"""Letters that Unicode does not take for a letter and a mark."""
 _DEVICES = {"con", "prn", "aux", "nul", *(f"{word}{at}" for word in ("com", "lpt") for at in range(1, 10))}
 
 

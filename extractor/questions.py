@@ -24,20 +24,20 @@ from extractor.engine import Engine, Estimate
 from extractor.evidence import Block, fractional_df
 from extractor.planner import Route
 from extractor.quantities import is_signed
-from extractor.situation import (
-    GROUPED,
-    Situation,
-    Wanted,
-    World,
-    askable_in,
-    planned,
-    uncertain_counts,
-    worlds,
-)
+from extractor.situation import GROUPED, Situation, Wanted, World, planned, uncertain_counts, worlds
 from extractor.study.terms import factors_of, terms_per_row
 from extractor.table import BoolArray, ReportedTable
 from extractor.typical import width_left
-from extractor.unlock import EASE, Ease, any_point, follows, graph, no_assumption, smallest_sets
+from extractor.unlock import (
+    EASE,
+    Ease,
+    any_point,
+    askable_in,
+    follows,
+    graph,
+    no_assumption,
+    smallest_sets,
+)
 
 _CANDIDATES = 10
 _CLASSICAL = frozenset({"f_value", "t_value", "p_value", "df_effect", "df_error"})

@@ -9,6 +9,8 @@ from extractor.words import printed_text
 
 _LABELS = frozenset({"study", "outcome", "effect", "page", "quote", "coder"})
 """Words that no effect depends on."""
+_MOST_DECIMALS = 12
+"""With more, a number is recorded by its own digits."""
 
 
 def recorded_cells(table: ReportedTable) -> list[dict[str, str]]:
@@ -21,6 +23,8 @@ def recorded_cells(table: ReportedTable) -> list[dict[str, str]]:
     for variable, numbers in table.numbers.items():
         for position in np.flatnonzero(numbers.given).tolist():
             text = printed_text(table, variable, position)
+            if numbers.decimals[position] > _MOST_DECIMALS:
+                text = repr(float(numbers.value[position]))
             found[position][numbers.place.at(rows[position])] = text
     for name, words in table.facts.items():
         if name not in _LABELS:

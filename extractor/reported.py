@@ -44,6 +44,8 @@ _MAY_BE_FRACTIONAL = frozenset({"df", "df_effect", "df_error"})
 
 LONGEST = 200
 """Longer cells hold prose, not a number."""
+MOST_COUNTED = 2**53
+"""Above it, floating point numbers leave whole numbers out."""
 TYPED_DIGITS = 12
 """A stored number with more significant digits was computed, not typed."""
 
@@ -98,6 +100,8 @@ def _plain(number: Decimal) -> str:
 
 def _printed(value: Decimal, decimals: int, notes: tuple[str, ...], to: _Setting) -> Reading:
     """The reading of a number printed with ``decimals`` decimals (negative: to tens, hundreds)."""
+    if to.quantity.integer and abs(value) > MOST_COUNTED:
+        return refuse(f"{value:.6g} is more than any study counts")
     number, shown = float(value) + 0.0, max(decimals, 0)
     if to.name in STATED or (to.quantity.exact and decimals == 0):
         return Reading(number, number, number, 0.0, shown, "=", "; ".join(notes))
@@ -117,6 +121,8 @@ def _bound(value: Decimal, decimals: int, relation: str, notes: tuple[str, ...],
     if comparator == "<" and to.name in PROBABILITIES and value == 0:
         notes = (*notes, f"no p is below zero; read as p < {_plain(unit)}")
         value = unit
+    if to.quantity.integer and abs(value) > MOST_COUNTED:
+        return refuse(f"{value:.6g} is more than any study counts")
     below, above = outward(value, value)
     low, high = (to.quantity.low, above) if comparator == "<" else (below, to.quantity.high)
     if low > high:

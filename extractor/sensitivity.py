@@ -118,7 +118,7 @@ def sensitivity(conversion: Conversion, *, method: str | None = None, level: flo
     parts = [p for chosen in conversion.chosen for p in _varied(conversion, chosen, method, level)]
     effects = in_sheet_order(parts, EFFECT_COLUMNS)
     fixed = [p for chosen in conversion.chosen for p in _not_values(conversion, chosen)]
-    return Sensitivity(effects, _summary(effects, fixed))
+    return Sensitivity(effects, _summary(conversion.evidence.table, effects, fixed))
 
 
 EFFECT_COLUMNS = [
@@ -175,10 +175,9 @@ def _moved(
         estimates.append(estimate)
         variances.append(variance)
     estimate, variance = chosen.estimates[index].value[rows], variance_of_rows(chosen, index)
-    outer = _outer(chosen, index, names)
     low, high = (
-        np.where(np.isfinite(end[rows]), end[rows], reach)
-        for end, reach in zip(outer.interval, _reach(estimates), strict=True)
+        np.where(np.isfinite(end), end, reach)
+        for end, reach in zip(_outer(chosen, index, names, rows), _reach(estimates), strict=True)
     )
     flipped = flipped_rows(conversion, chosen)[rows]
     low, high = np.where(flipped, -high, low), np.where(flipped, -low, high)
@@ -244,16 +243,27 @@ def _at(
     return estimate.value[rows], variance[rows]
 
 
-def _outer(chosen: Chosen, index: int, names: list[str]) -> Estimate:
-    """The interval of estimates for assumed values anywhere in their ranges, the printed numbers as they stand."""
-    block = chosen.block
+def _outer(chosen: Chosen, index: int, names: list[str], rows: BoolArray) -> tuple[FloatArray, FloatArray]:
+    """The interval of estimates for assumed values anywhere in their ranges, the printed numbers as they stand.
+
+    Counts take whole numbers only, one after the other.
+    """
+    block, size = chosen.block, len(chosen.block.positions)
     leaves = {n: e if n in block.bounds else _certain(e.value) for n, e in block.leaves.items()}
+    spans: list[list[tuple[float, float]]] = []
     for name in names:
-        taken, size = block.assumed[name], len(block.positions)
-        leaves[name] = Estimate(
-            np.full(size, taken.value), np.full(size, taken.low), np.full(size, taken.high)
-        )
-    return Engine(leaves).run(chosen.routes[index])
+        taken = block.assumed[name]
+        whole = [(v, v) for v in _values(name, taken, 0).tolist()] if VOCABULARY[name].integer else []
+        spans.append(whole or [(taken.low, taken.high)])
+    lows, highs = [], []
+    for ends in product(*spans):
+        for name, (low, high) in zip(names, ends, strict=True):
+            middle = block.assumed[name].value if low < high else low
+            leaves[name] = Estimate(np.full(size, middle), np.full(size, low), np.full(size, high))
+        found = Engine(leaves).run(chosen.routes[index])
+        lows.append(found.low[rows])
+        highs.append(found.high[rows])
+    return np.min(lows, axis=0), np.max(highs, axis=0)
 
 
 def _certain(values: FloatArray) -> Estimate:
@@ -290,7 +300,9 @@ def _not_values(conversion: Conversion, chosen: Chosen) -> Iterator[tuple[str, F
             yield text, conversion.evidence.table.row_numbers[rows]
 
 
-def _summary(effects: pd.DataFrame, fixed: list[tuple[str, FloatArray]]) -> pd.DataFrame:
+def _summary(
+    table: ReportedTable, effects: pd.DataFrame, fixed: list[tuple[str, FloatArray]]
+) -> pd.DataFrame:
     lines: list[dict[str, object]] = []
     for name, part in effects[effects["assumption"] != TOGETHER].groupby("assumption", sort=True):
         by = part["swing_in_se"].fillna(-1.0).to_numpy()
@@ -312,4 +324,10 @@ def _summary(effects: pd.DataFrame, fixed: list[tuple[str, FloatArray]]) -> pd.D
         rows.setdefault(text, set()).update(numbers.tolist())
     for text, touched in sorted(rows.items(), key=lambda item: (-len(item[1]), item[0])):
         lines.append({"assumption": text, "by": "no range is declared", "rows": len(touched)})
+    idle = {
+        n: a for n, a in table.assumptions.items() if a.low < a.high and n not in set(effects["assumption"])
+    }
+    for name, taken in sorted(idle.items()):
+        span = {"value": taken.value, "range_low": taken.low, "range_high": taken.high}
+        lines.append({"assumption": name, "by": taken.by, **span, "rows": 0})
     return pd.DataFrame(lines, columns=SUMMARY_COLUMNS)

@@ -16,7 +16,7 @@ from extractor.choice import STANDARDIZED
 from extractor.planner import Start, search
 from extractor.quantities import STANDARDIZERS, VOCABULARY, Shape
 from extractor.sampling.precision import limits_of, standardizer_of, variances_of
-from extractor.unlock import EASE, any_point, follows, graph, no_assumption
+from extractor.unlock import any_point, follows, graph, no_assumption
 
 GROUPED = frozenset(name for name, quantity in VOCABULARY.items() if quantity.shape is Shape.GROUP)
 _OF_TERMS = frozenset(
@@ -253,21 +253,3 @@ class Wanted:
         had = _derived(world, True, None) | derived
         each = (way.served(had) for way in self.precisions(world))
         return all(each) if surely else any(each)
-
-
-def askable_in(design: str, known: frozenset[str]) -> frozenset[str]:
-    """What can be asked about a row of a design; a number that stands for several is asked once.
-
-    Counts are asked for where something else of the row speaks of a 2 x 2 table already.
-    """
-    none = frozenset() if design == "two-group" and known & _OF_PROPORTIONS else _COUNTS
-    if design in ("paired", "within"):
-        # every condition has all participants
-        none |= {"n"}
-    if design != "paired":
-        none |= {"sd_difference"}
-    return frozenset(EASE) - none
-
-
-_COUNTS = frozenset({"count_a", "count_b", "count_c", "count_d"})
-_OF_PROPORTIONS = _COUNTS | {"odds_ratio", "log_odds_ratio", "chi_squared", "chi_squared_corrected", "phi"}

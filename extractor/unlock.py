@@ -48,7 +48,7 @@ _EASE = {
 }
 
 EASE: dict[str, Ease] = {
-    **dict.fromkeys(("direction", "tails", "confidence_level"), Ease.ARTICLE),
+    **dict.fromkeys(("direction", "tails", "confidence_level", "significance_level"), Ease.ARTICLE),
     **dict.fromkeys(("n", "mean", "sd", "n_total", "k_groups"), Ease.SUMMARY),
     **dict.fromkeys(("mean_pre", "sd_pre", "mean_post", "sd_post"), Ease.SUMMARY),
     **dict.fromkeys(("mean_change", "sd_change", "sd_difference", "adjusted_mean"), Ease.SUMMARY),
@@ -61,6 +61,24 @@ EASE: dict[str, Ease] = {
 """Quantities that an article or its authors can be asked for, and how readily they are to be had."""
 
 ASKABLE = frozenset(EASE)
+
+_COUNTS = frozenset({"count_a", "count_b", "count_c", "count_d"})
+_OF_PROPORTIONS = _COUNTS | {"odds_ratio", "log_odds_ratio", "chi_squared", "chi_squared_corrected", "phi"}
+
+
+def askable_in(design: str, known: frozenset[str]) -> frozenset[str]:
+    """What can be asked about a row of a design; a number that stands for several is asked once.
+
+    Counts are asked for where something else of the row speaks of a 2 x 2 table already.
+    """
+    none = frozenset() if design == "two-group" and known & _OF_PROPORTIONS else _COUNTS
+    if design in ("paired", "within"):
+        # every condition has all participants
+        none |= {"n"}
+    if design != "paired":
+        none |= {"sd_difference"}
+    return ASKABLE - none
+
 
 Allowed = Callable[[Relation], bool]
 
@@ -240,7 +258,8 @@ def _unlocking(start: Start, design: str, metric: str, most: int) -> tuple[froze
     # the contrast needs no asking: it is there as soon as groups are coded
     known = start.known | start.assumed | {"contrast_weight"}
     relations = graph(design, any_point, frozenset(), None)
-    return tuple(smallest_sets(known, ASKABLE, relations, frozenset([metric]), most))
+    askable = askable_in(design, start.known)
+    return tuple(smallest_sets(known, askable, relations, frozenset([metric]), most))
 
 
 def unlocking_sets(start: Start, design: str, metric: str, most: int = 3) -> list[frozenset[str]]:

@@ -28,5 +28,6 @@ def test_demo_gives_the_expected_outputs(name: str, tmp_path: Path, monkeypatch:
     assert ended.value.code == 0
     for expected in sorted((EXPECTED / name).iterdir()):
         # last digits may differ between processors, nothing else may
-        now, then = (pd.read_csv(path, keep_default_na=False, na_values=[""]) for path in (folder / expected.name, expected))
+        paths = folder / expected.name, expected
+        now, then = (pd.read_csv(path, keep_default_na=False, na_values=[""]) for path in paths)
         pd.testing.assert_frame_equal(now, then, rtol=1e-10)

@@ -15,7 +15,7 @@ from statsmodels.stats import oneway
 from extractor.catalogue import contrasts, correlations, counts, groups, homogeneity, p_values, source_table
 from extractor.catalogue import variance_explained as explained
 from extractor.catalogue.relation import FloatArray, catalogue
-from extractor.sampling.precision import variance_of
+from extractor.sampling.precision import variances_of
 
 ROWS = 10_000
 SEED = 20240
@@ -47,7 +47,7 @@ def close(found: FloatArray, expected: FloatArray, rtol: float = 1e-12) -> None:
 
 def variance(metric: str, design: str, **quantities: FloatArray) -> FloatArray:
     """Large-sample variance of a metric from quantities by name."""
-    entry = variance_of(metric, "large-sample", design, "pooled")
+    entry = next(iter(variances_of(metric, "large-sample", design, "pooled")), None)
     assert entry is not None and entry.method == "large-sample"
     return entry.function(*(quantities[need] for need in entry.needs))
 

@@ -41,8 +41,7 @@ def t_rows() -> Rows:
 
 def limits(metric: str, design: str, level: float = 0.95, **quantities: FloatArray) -> Interval:
     """Confidence limits of a metric from quantities by name."""
-    entry = limits_of(metric, design, "pooled")
-    assert entry is not None
+    entry = limits_of(metric, design, "pooled")[0]
     low, high = entry.function(*(quantities[need] for need in entry.needs), level)
     return low, high
 

@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from extractor.catalogue.p_values import p_from_f
-from extractor.catalogue.relation import MIXED, PAIRED, WITHIN, FloatArray, Interval, relation
+from extractor.catalogue.relation import MIXED, WITHIN, FloatArray, Interval, relation
 
 _ERROR = "one-factor within design: MS_error = mean variance - mean covariance (textbook identity)"
 _PARTIAL = (

@@ -15,9 +15,7 @@ from extractor.commands import options
 @options.coded
 @options.output
 @options.fail_on
-def command(
-    coded: options.Coded, out: Path | None, force: bool, csv_raw: bool, fail_on: str | None
-) -> int:
+def command(coded: options.Coded, out: Path | None, force: bool, csv_raw: bool, fail_on: str | None) -> int:
     """Ask of every row of SHEET whether its printed numbers can all be true.
 
     Rounding is taken into account: a correctly rounded and correctly coded row is never called impossible

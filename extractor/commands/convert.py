@@ -4,11 +4,19 @@ from __future__ import annotations
 
 import sys
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 import click
 
 from extractor.commands import options
 from extractor.errors import UsageError
+
+if TYPE_CHECKING:
+    import pandas as pd
+    from rich.console import Console
+
+    from extractor.api import Result
+    from extractor.table import Assumption
 
 _TO_STDOUT = ("csv", "json")
 
@@ -34,6 +42,36 @@ _TO_STDOUT = ("csv", "json")
     metavar="COLUMN=NAME",
     help="Heading of a column in the written effect tables; may be given several times.",
 )
+@click.option(
+    "--vary",
+    multiple=True,
+    metavar="NAME=LOW:HIGH",
+    help="Show what every effect becomes over the range of an assumption, such as correlation=.3:.8, and under each "
+    "admissible route; may be given several times. Ranges of the codebook count too.",
+)
+@click.option(
+    "--covariance",
+    is_flag=True,
+    help="Write covariance.csv: covariances of effects that share groups or participants.",
+)
+@click.option(
+    "--outcome-correlation",
+    type=click.FloatRange(-1, 1),
+    help="Correlation of two outcomes of the same participants, for --covariance.",
+)
+@click.option(
+    "--figure",
+    type=click.Path(path_type=Path),
+    metavar="FILE",
+    help="Draw the effects with their limits into this .svg, .pdf or .png file.",
+)
+@click.option(
+    "--figure-by",
+    default="outcome",
+    show_default=True,
+    metavar="COLUMN",
+    help="Column that groups the figure.",
+)
 @options.fail_on
 def command(
     coded: options.Coded,
@@ -43,6 +81,11 @@ def command(
     csv_raw: bool,
     formats: tuple[str, ...],
     rename: tuple[str, ...],
+    vary: tuple[str, ...],
+    covariance: bool,
+    outcome_correlation: float | None,
+    figure: Path | None,
+    figure_by: str,
     fail_on: str | None,
 ) -> int:
     """Turn the rows of SHEET into effects of one metric, each with its sampling variance and route.
@@ -54,22 +97,26 @@ def command(
     \b
     Examples:
       extractor convert coded.xlsx --to omega_squared
-      extractor convert coded.xlsx --to hedges_g --codebook two-group --out results --format xlsx
+      extractor convert coded.xlsx --to hedges_g --codebook two-group --out results --format xlsx --format html
+      extractor convert coded.xlsx --to hedges_g --figure effects.svg
       extractor convert coded.csv --to hedges_g --out results --rename estimate=effect_size
       extractor convert coded.csv --to eta_squared --format csv > effects.csv
     """
     renamed = options.pairs(rename, "--rename", "estimate=NAME")
     if out is None:
-        _check_without_folder(formats, bool(renamed))
+        _check_without_folder(formats, bool(renamed), covariance)
     from extractor import cautions
     from extractor.commands import running
     from extractor.output import files, package, tables, terminal
 
     for kind in formats:
-        tables.require(kind)
+        if kind not in options.VIEWS:
+            tables.require(kind)
     if out is not None:
         files.refuse_existing(out, force=force)
-    result = running.convert(coded, wanted)
+    result = running.convert(coded, wanted, vary)
+    if figure is not None:
+        _draw(result.effects, figure, wanted.level, figure_by, force)
     said = (*cautions.EFFECTS, *(cautions.FINDINGS if result.audit.findings else ()))
     if out is not None:
         request = package.Request(
@@ -82,6 +129,9 @@ def command(
             formats=formats,
             rename=renamed,
             raw=csv_raw,
+            covariance=covariance,
+            outcomes=_outcomes(outcome_correlation),
+            sensitivity=bool(vary),
         )
         rows = len(result.effects)
         with running.stage(f"writing {rows} rows", rows, counts=True) as tick:
@@ -89,6 +139,8 @@ def command(
         click.echo(f"written to {out}", err=True)
         page = terminal.console()
         terminal.show_summary(page, result)
+        if vary:
+            _show_sensitivity(page, result, wanted)
         terminal.show_cautions(page, said)
     elif formats:
         effects = package.effects_as_written(result, renamed)
@@ -99,11 +151,39 @@ def command(
     else:
         page = terminal.console()
         terminal.show_effects(page, result, wanted.level)
+        if vary:
+            _show_sensitivity(page, result, wanted)
         terminal.show_cautions(page, said)
     return running.status(result.audit, fail_on)
 
 
-def _check_without_folder(formats: tuple[str, ...], renamed: bool) -> None:
+def _show_sensitivity(page: Console, result: Result, wanted: options.Wanted) -> None:
+    from extractor.by_route import by_route
+    from extractor.output.teamwork import show_sensitivity
+    from extractor.sensitivity import sensitivity
+
+    found = sensitivity(result.conversion, method=wanted.variance, level=wanted.level)
+    show_sensitivity(page, found, by_route(result.conversion))
+
+
+def _draw(effects: pd.DataFrame, path: Path, level: float, by: str, force: bool) -> None:
+    from extractor.output.figure import ENDINGS, write_figure
+    from extractor.output.one_file import output_file
+
+    with output_file(path, ENDINGS, force=force) as made:
+        write_figure(effects, made, level=level, by=by)
+    click.echo(f"written to {path}", err=True)
+
+
+def _outcomes(correlation: float | None) -> Assumption | None:
+    from extractor.table import Assumption
+
+    return None if correlation is None else Assumption(correlation, "--outcome-correlation")
+
+
+def _check_without_folder(formats: tuple[str, ...], renamed: bool, covariance: bool) -> None:
+    if covariance:
+        raise UsageError("--covariance writes a file: name a folder with --out DIR")
     if len(formats) > 1:
         raise UsageError("several formats need a folder: name it with --out DIR")
     if formats and formats[0] not in _TO_STDOUT:

@@ -15,7 +15,9 @@ from extractor.quantities import METRICS, STANDARDIZERS, close_matches
 from extractor.reading import quoted
 
 SETTINGS = {"help_option_names": ["-h", "--help"], "max_content_width": 100}
-FORMATS = ("csv", "xlsx", "json", "parquet", "dta")
+FORMATS = ("csv", "xlsx", "html", "json", "parquet", "dta", "prov")
+VIEWS = ("html", "prov")
+"""Formats that are no effect tables."""
 
 Command = TypeVar("Command", bound=Callable[..., Any])
 Completer = Callable[[click.Context, click.Parameter, str], list[str]]
@@ -55,18 +57,20 @@ def coded(command: Callable[..., Any]) -> Callable[..., Any]:
     def gathered(
         sheet: str, codebook: str | None, groups: str | None, decisions: str | None, **others: object
     ) -> object:
-        return command(coded=Coded(sheet=sheet, codebook=codebook, groups=groups, decisions=decisions), **others)
+        return command(
+            coded=Coded(sheet=sheet, codebook=codebook, groups=groups, decisions=decisions), **others
+        )
 
     for option in (
         click.option(
             "--decisions",
             metavar="FILE",
-            help="What coders decided about findings, where it is not a sheet of that name in the workbook.",
+            help="What coders decided about findings; without it the sheet of that name.",
         ),
         click.option(
             "--groups",
             metavar="FILE",
-            help="One line per group or cell, joined by analysis, where it is not a sheet of that name in the workbook.",
+            help="One line per group or cell, joined by analysis; without it the sheet of that name.",
         ),
         click.option(
             "--codebook",

@@ -5,6 +5,7 @@ from __future__ import annotations
 import sys
 from collections.abc import Callable, Iterator
 from contextlib import contextmanager
+from dataclasses import replace
 
 import click
 
@@ -19,10 +20,11 @@ from extractor.conversion import (
     check_standardizer,
     convert_evidence,
 )
-from extractor.evidence import Evidence
+from extractor.evidence import Evidence, gather
 from extractor.findings import Severity
 from extractor.output.cells import reading_notes
 from extractor.output.terminal import console, printable
+from extractor.sensitivity import ranges, with_ranges
 
 LONG = 20_000
 """Rows above which progress is shown."""
@@ -44,10 +46,19 @@ def mention(notes: list[str]) -> None:
         click.echo(f"note: and {len(notes) - _MOST_NOTES} more like these", err=True)
 
 
-def convert(coded: Coded, wanted: Wanted) -> Result:
-    """Convert and audit a sheet; raises as ``extractor.convert`` does."""
+def convert(coded: Coded, wanted: Wanted, vary: tuple[str, ...] = ()) -> Result:
+    """Convert and audit a sheet; raises as ``extractor.convert`` does.
+
+    Parameters
+    ----------
+    vary : assumptions with their ranges, as typed; see ``sensitivity.ranges``.
+    """
     check(wanted)
+    varied = ranges(vary)
     reading = read(coded)
+    if varied:
+        evidence = gather(with_ranges(reading.evidence.table, varied))
+        reading = replace(reading, evidence=evidence)
     rows = reading.table.rows
     with stage(f"converting {rows} rows", rows):
         conversion = converted(reading.evidence, wanted.metric, wanted)

@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
+import errno
+import importlib.util
 import os
 import shutil
 import tempfile
 from collections.abc import Collection, Iterator
-from contextlib import contextmanager
+from contextlib import ExitStack, contextmanager, suppress
 from datetime import UTC, datetime
 from pathlib import Path
 
@@ -14,26 +16,30 @@ from extractor.errors import UsageError
 from extractor.reading import quoted
 
 _STAMP = datetime(2020, 1, 1, tzinfo=UTC)
+_FIRST, _LAST = datetime(1980, 1, 1, tzinfo=UTC), datetime(2107, 12, 31, tzinfo=UTC)
 
 
 def fixed_time() -> datetime:
     """The time written into files that must carry one: SOURCE_DATE_EPOCH, else a fixed date; never the clock.
 
-    Zip archives know no time before 1980.
+    Zip archives know no time before 1980 and none after 2107.
     """
     said = os.environ.get("SOURCE_DATE_EPOCH", "")
     if not (said.isascii() and said.isdigit() and len(said) < 12):
         return _STAMP
-    return max(datetime.fromtimestamp(int(said), UTC), datetime(1980, 1, 1, tzinfo=UTC))
+    return min(max(datetime.fromtimestamp(int(said), UTC), _FIRST), _LAST)
 
 
 def refuse_existing(path: Path, *, force: bool) -> None:
     """Raise ``UsageError`` where ``path`` is there already and must not be touched."""
-    if path.is_symlink() or path.exists():
-        if not force:
-            raise UsageError(f"{quoted(path, 200)} exists; choose another name, or --force to replace it")
-        if not path.is_dir():
-            raise UsageError(f"{quoted(path, 200)} is no folder; choose another name for --out")
+    try:
+        there, folder = _is_there(path), path.is_dir()
+    except OSError as fault:
+        raise _refused(path, fault) from fault
+    if there and not force:
+        raise UsageError(f"{quoted(path, 200)} exists; choose another name, or --force to replace it")
+    if there and not folder:
+        raise UsageError(f"{quoted(path, 200)} is no folder; choose another name for --out")
 
 
 @contextmanager
@@ -41,8 +47,8 @@ def output_folder(path: Path, own: Collection[str], *, force: bool) -> Iterator[
     """An empty folder to write into, which becomes ``path`` when everything has been written.
 
     It is made beside ``path``, so that the last step is a renaming. With ``force`` an existing folder keeps
-    the files that are not ours: ours are replaced one by one, and those of an earlier run that this one did
-    not write are removed.
+    the files that are not ours: ours are replaced, and those of an earlier run that this one did not write are
+    removed. All of them or, where that fails or is interrupted, none; runs into one folder take turns.
 
     Parameters
     ----------
@@ -56,30 +62,84 @@ def output_folder(path: Path, own: Collection[str], *, force: bool) -> Iterator[
     target = Path(os.path.realpath(path))
     try:
         target.parent.mkdir(parents=True, exist_ok=True)
-        workshop = Path(tempfile.mkdtemp(prefix=f".{target.name}-", dir=target.parent))
+        workshop = Path(tempfile.mkdtemp(prefix=f".{target.name[:40]}-", dir=target.parent))
     except OSError as fault:
         raise _refused(path, fault) from fault
     try:
         made = workshop / "made"
         made.mkdir()
         yield made
-        if target.exists():
+        if not _renamed(made, target):
             refuse_existing(path, force=force)
-            _replace(made, target, own)
-        else:
-            made.rename(target)
+            with _turn(target):
+                _replace(made, target, workshop / "before", own)
     except OSError as fault:
         raise _refused(path, fault) from fault
     finally:
         shutil.rmtree(workshop, ignore_errors=True)
 
 
-def _replace(made: Path, target: Path, own: Collection[str]) -> None:
+def _renamed(made: Path, target: Path) -> bool:
+    """Give the folder its name in one step; False where another of that name is there, perhaps only just."""
+    if target.exists():
+        return False
+    try:
+        made.rename(target)
+    except OSError:
+        if not target.exists():
+            raise
+        return False
+    return True
+
+
+def _replace(made: Path, target: Path, before: Path, own: Collection[str]) -> None:
+    """Put what was made into ``target`` in place of our earlier files; on any failure put those back."""
     written = sorted(entry.name for entry in made.iterdir())
-    for name in written:
-        os.replace(made / name, target / name)
-    for name in sorted(set(own) - set(written)):
-        (target / name).unlink(missing_ok=True)
+    obsolete = sorted(set(own) - set(written))
+    before.mkdir()
+    for name in (*written, *obsolete):
+        if _is_there(target / name):
+            _keep(target / name, before / name)
+    try:
+        for name in written:
+            os.replace(made / name, target / name)
+        for name in obsolete:
+            (target / name).unlink(missing_ok=True)
+    except BaseException:
+        for name in (*written, *obsolete):
+            if _is_there(before / name):
+                os.replace(before / name, target / name)
+            elif not _is_there(made / name):
+                (target / name).unlink(missing_ok=True)
+        raise
+
+
+def _is_there(path: Path) -> bool:
+    return path.is_symlink() or path.exists()
+
+
+def _keep(path: Path, copy: Path) -> None:
+    """A second name for a file, or a copy where the disk knows no such thing; refuses a folder."""
+    if path.is_dir() and not path.is_symlink():
+        raise IsADirectoryError(errno.EISDIR, f"{path.name} in it is a folder")
+    try:
+        os.link(path, copy, follow_symlinks=False)
+    except OSError:
+        shutil.copy2(path, copy, follow_symlinks=False)
+
+
+@contextmanager
+def _turn(folder: Path) -> Iterator[None]:
+    """Wait until no other run is replacing files in the folder; where the system cannot lock it, do not wait."""
+    with ExitStack() as held:
+        if importlib.util.find_spec("fcntl") is not None:
+            import fcntl
+
+            with suppress(OSError):
+                lock = os.open(folder, os.O_RDONLY)
+                held.callback(os.close, lock)
+                fcntl.flock(lock, fcntl.LOCK_EX)
+        yield
 
 
 def _refused(path: Path, fault: OSError) -> UsageError:

@@ -117,7 +117,7 @@ def log_frame(letters: Iterable[Letter]) -> pd.DataFrame:
         for letter in letters
         for line in letter.lines
     ]
-    return pd.DataFrame(lines, columns=list(LOG_COLUMNS)).fillna("")
+    return pd.DataFrame(lines, columns=list(LOG_COLUMNS), dtype=object).fillna("")
 
 
 def write_letters(folder: Path, letters: list[Letter], *, force: bool) -> None:

@@ -14,18 +14,38 @@ import pandas as pd
 from extractor import __version__, cautions
 from extractor.api import Result
 from extractor.audit.run import Audit
+from extractor.by_route import by_route
+from extractor.dependence import covariance_matrix, dependence
 from extractor.errors import UsageError
 from extractor.output.cells import reading_notes
 from extractor.output.columns import EFFECTS, FINDINGS, fields, whole_counts
 from extractor.output.files import output_folder
+from extractor.output.prov import write_prov
 from extractor.output.tables import WRITERS, neutralised, write_csv
 from extractor.output.trail import Tick, write_derivations
 from extractor.quantities import close_matches
 from extractor.reading import quoted
-from extractor.table import ReportedTable
+from extractor.sensitivity import sensitivity
+from extractor.table import Assumption, ReportedTable
 
 AUDIT_FILES = ("findings.csv", "datapackage.json")
-CONVERT_FILES = (*AUDIT_FILES, "derivations.json", *(f"effects.{ending}" for ending in WRITERS))
+ANNOTATED, REPORT = "annotated.xlsx", "report.html"
+COVARIANCE, MATRIX, PROVENANCE = "covariance.csv", "covariance-matrix.csv", "provenance.json"
+_MOST_IN_MATRIX = 1000
+"""Effects beyond which the matrix is left to whoever pools: the long table holds the same."""
+CONVERT_FILES = (
+    *AUDIT_FILES,
+    "derivations.json",
+    *(f"effects.{ending}" for ending in WRITERS),
+    ANNOTATED,
+    REPORT,
+    COVARIANCE,
+    MATRIX,
+    PROVENANCE,
+    "sensitivity.csv",
+    "assumptions.csv",
+    "routes.csv",
+)
 
 _PROFILES = "https://datapackage.org/profiles/2.0"
 _MEDIA = {
@@ -34,6 +54,7 @@ _MEDIA = {
     "xlsx": "application/vnd.openxmlformats-officedocument.spreadsheetml.sheet",
     "parquet": "application/vnd.apache.parquet",
     "dta": "application/x-stata-dta",
+    "html": "text/html",
 }
 _NEUTRALISED = (
     "an apostrophe stands before text that a spreadsheet could take for a formula (= + - @, tab or line "
@@ -48,7 +69,9 @@ class Request:
 
     sheet, codebook : as named by the user. formats : further files of the effect table.
     rename : new heading by column of the effect table, over those of the codebook.
-    raw : leave texts in csv files as they are.
+    raw : leave texts in csv files as they are. covariance : write the covariances of effects that share participants.
+    sensitivity : write what effects become over the ranges of assumptions and along other routes.
+    outcomes : correlation of two outcomes of the same participants, and who supplied it.
     """
 
     sheet: str
@@ -60,6 +83,9 @@ class Request:
     formats: tuple[str, ...] = ()
     rename: Mapping[str, str] = field(default_factory=dict)
     raw: bool = False
+    covariance: bool = False
+    sensitivity: bool = False
+    outcomes: Assumption | None = None
 
 
 def headings(columns: list[str], rename: Mapping[str, str]) -> dict[str, str]:
@@ -122,12 +148,59 @@ def write_conversion(folder: Path, result: Result, request: Request, *, force: b
             _findings_resource(made, result.findings, request, named["row"]),
             _resource(made / "derivations.json", "how every effect came about, with the routes not taken"),
         ]
-        for ending in sorted(set(request.formats) - {"csv"}):
+        for ending in sorted(set(request.formats) & set(WRITERS) - {"csv"}):
             notes += WRITERS[ending](effects, made / f"effects.{ending}")
             resources.append(_resource(made / f"effects.{ending}", "the effect table again"))
+        resources += _views(made, result, request, notes)
         said = (*cautions.EFFECTS, *cautions.FINDINGS)
         _describe(made, table, request, resources, said, notes)
     return notes
+
+
+def _views(made: Path, result: Result, request: Request, notes: list[str]) -> list[dict[str, object]]:
+    """What is written for people, and the covariances; their modules are heavy and come only when asked for."""
+    resources = []
+    if request.covariance:
+        shared = dependence(result, request.outcomes)
+        write_csv(shared.pairs, made / COVARIANCE, raw=request.raw)
+        notes += [
+            f"rows {pair['row']} and {pair['other_row']}: no covariance, {pair['why']}"
+            for pair in shared.unresolved.to_dict("records")
+        ]
+        resources.append(
+            _resource(made / COVARIANCE, "covariances of effects that share participants; others are 0")
+        )
+        rows, matrix = covariance_matrix(result.effects, shared.pairs)
+        if len(rows) <= _MOST_IN_MATRIX:
+            square = pd.DataFrame(matrix, columns=[str(row) for row in rows])
+            square.insert(0, "row", rows)
+            write_csv(square, made / MATRIX, raw=request.raw)
+            resources.append(_resource(made / MATRIX, "the same as a matrix, variances on its diagonal"))
+    if request.sensitivity:
+        found = sensitivity(result.conversion, method=request.variance, level=request.level)
+        for name, frame, what in (
+            ("sensitivity.csv", found.effects, "each effect over the ranges of the assumptions it rests on"),
+            ("assumptions.csv", found.assumptions, "which assumption moves how many effects"),
+            ("routes.csv", by_route(result.conversion), "each effect along every admissible route"),
+        ):
+            write_csv(frame, made / name, raw=request.raw)
+            resources.append(_resource(made / name, what))
+    if "xlsx" in request.formats:
+        from extractor.output.annotated import write_annotated
+
+        notes += write_annotated(result, request, made / ANNOTATED)
+        resources.append(
+            _resource(made / ANNOTATED, "the coder's sheets with marks on the cells findings name")
+        )
+    if "prov" in request.formats:
+        write_prov(result, request.sheet, made / PROVENANCE)
+        resources.append(_resource(made / PROVENANCE, "where every value came from, in PROV-JSON"))
+    if "html" in request.formats:
+        from extractor.output.report import write_report
+
+        write_report(result, request, made / REPORT)
+        resources.append(_resource(made / REPORT, "the report"))
+    return resources
 
 
 def write_audit(folder: Path, audit: Audit, table: ReportedTable, request: Request, *, force: bool) -> None:

@@ -24,8 +24,12 @@ Writer = Callable[[pd.DataFrame, Path], list[str]]
 
 _CHUNK = 20_000
 """Rows formatted at a time, so that memory stays flat."""
-_NUMBER = re.compile(r"[+-]?(?:[0-9]+\.?[0-9]*|\.[0-9]+)(?:[eE][+-]?[0-9]+)?")
-_FORMULA = re.compile(r"\A(?=[=+\-@\t\r\n])|(?<=[;\t\r\n])(?=[=+\-@])")
+_NUMBER = re.compile(r"[+-]?(?:[0-9]+(?:\.[0-9]*)?|\.[0-9]+)(?:[eE][+-]?[0-9]+)?")
+_SIGN = "[=+\\-@＝＋－＠]"
+"""What a formula begins with, in the width of East Asian keyboards too."""
+_FORMULA = re.compile(
+    rf"\A(?=[\t\r\n]|[\s\x00-\x1f\u200b\ufeff]*{_SIGN})|(?<=[;\t\r\n])(?={_SIGN})"
+)
 _QUOTED = re.compile(r'[",;|\t\r\n]|\A\s|\s\Z')
 _STATA_NAME = 32
 _STATA_TEXT = 2045
@@ -37,7 +41,8 @@ def neutralised(text: str) -> str:
     """Text that no spreadsheet takes for a formula; a text that is only a number stays as it is.
 
     An apostrophe goes before = + - @, tab, CR or LF at the start, and before = + - @ after a semicolon, tab
-    or line break, where some spreadsheets begin a new cell (OWASP, CSV injection).
+    or line break, where some spreadsheets begin a new cell (OWASP, CSV injection). Spaces at the start, and signs
+    there that no screen shows, hide nothing.
     """
     return text if _NUMBER.fullmatch(text) else _FORMULA.sub("'", text)
 

@@ -87,6 +87,9 @@ def show_sensitivity(to: Console, sensitivity: Sensitivity, routes: pd.DataFrame
             say(to, f"{line['assumption']}: {rows}; {line['by']}", 0, 2)
             continue
         span = f"{number(line['range_low'])} to {number(line['range_high'])}"
+        if not line["rows"]:
+            say(to, f"{line['assumption']} from {span}: no effect rests on it", 0, 2)
+            continue
         most = f"{number(line['largest_swing'])} in row {line['largest_row']}"
         errors = (
             f", {number(line['largest_in_se'])} standard errors" if pd.notna(line["largest_in_se"]) else ""

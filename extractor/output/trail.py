@@ -10,6 +10,7 @@ import pandas as pd
 from extractor.api import Result
 from extractor.catalogue.relation import catalogue
 from extractor.output.cells import understood
+from extractor.recorded import recorded_cells
 from extractor.output.tables import as_json, records
 from extractor.table import ReportedTable
 
@@ -51,6 +52,7 @@ def _relation(name: str) -> dict[str, object]:
 
 def _rows(result: Result) -> Iterator[dict[str, object]]:
     effects, table = result.effects, result.conversion.evidence.table
+    cells = recorded_cells(table)
     for start in range(0, len(effects), _CHUNK):
         part = effects.iloc[start : start + _CHUNK]
         steps = _by_row(result.derivations, part)
@@ -58,7 +60,7 @@ def _rows(result: Result) -> Iterator[dict[str, object]]:
         about = records(part[["row", "metric", "status", "estimate"]])
         for at, (record, own, others) in enumerate(zip(about, steps, alternatives, strict=True)):
             taken = [_step(step, table, start + at) for step in own]
-            yield {**record, "steps": taken, "alternatives": [_without_row(other) for other in others]}
+            yield {**record, "cells": cells[start + at], "steps": taken, "alternatives": [_without_row(other) for other in others]}
 
 
 def _by_row(lines: pd.DataFrame, part: pd.DataFrame) -> Iterator[list[dict[str, object]]]:

@@ -84,7 +84,9 @@ class Rows:
                 texts.pop()
             if len(texts) > MOST_COLUMNS:
                 where = f"{self.source}, row {number}"
-                raise UnreadableInput(f"{where}: more than {MOST_COLUMNS} headings; no spreadsheet has so many")
+                raise UnreadableInput(
+                    f"{where}: more than {MOST_COLUMNS} headings; no spreadsheet has so many"
+                )
             self.header, self.header_row = texts, number
             return
         width = len(self.header)

@@ -104,7 +104,9 @@ def _from_frame(frame: pd.DataFrame) -> Grid:
     if not filled.any():
         raise UnreadableInput("the data frame has no rows with a value")
     if len(columns) > MOST_COLUMNS:
-        raise UnreadableInput(f"the data frame has more than {MOST_COLUMNS} columns; no spreadsheet has so many")
+        raise UnreadableInput(
+            f"the data frame has more than {MOST_COLUMNS} columns; no spreadsheet has so many"
+        )
     kept = np.flatnonzero(filled)
     return Grid(
         source="data frame",

@@ -58,7 +58,9 @@ _SETTINGS = re.compile(r"(?:.*/)?(?:styles|workbook)\.xml|.*\.rels|\[Content_Typ
 # no longer than a tag is, so that a text of nothing but beginnings of tags takes no longer either
 _FORMULA = re.compile(rb"<(?:\w{1,20}:)?f[\s>/]")
 _MERGED = re.compile(rb'<(?:\w{1,20}:)?mergeCell\s[^<>]{0,200}?ref="([A-Z0-9:]{1,20})"')
-_HIDDEN_ROW = re.compile(rb'<(?:\w{1,20}:)?row\s(?=[^<>]{0,400}?\bhidden="(?:1|true)")[^<>]{0,400}?\br="([0-9]{1,7})"')
+_HIDDEN_ROW = re.compile(
+    rb'<(?:\w{1,20}:)?row\s(?=[^<>]{0,400}?\bhidden="(?:1|true)")[^<>]{0,400}?\br="([0-9]{1,7})"'
+)
 _CHUNK, _OVERLAP = 1 << 20, 1000
 
 
@@ -173,7 +175,9 @@ def _marks(archive: zipfile.ZipFile, part: str) -> _Marks:
     """Look through the text of a sheet; of all sheets where the part is not known."""
     found = _Marks()
     for member in archive.infolist():
-        if member.filename != part and (part or not re.fullmatch(r"xl/worksheets/[^/]+\.xml", member.filename)):
+        if member.filename != part and (
+            part or not re.fullmatch(r"xl/worksheets/[^/]+\.xml", member.filename)
+        ):
             continue
         with archive.open(member) as stream:
             tail = b""
@@ -207,7 +211,8 @@ def _cells(book: openpyxl.Workbook, title: str, name: str) -> Iterator[tuple[Cel
     sheet = book[title]
     sheet.reset_dimensions()
     cells = 0
-    for number, row in enumerate(sheet.iter_rows(), 1):
+    found: Iterator[tuple[Cell, ...]] = sheet.iter_rows()
+    for number, row in enumerate(found, 1):
         cells += len(row)
         # one cell far to the right fills the row up to it with blanks
         width = len(row)

@@ -15,9 +15,9 @@ from extractor.commands.main import cli
 SHEET = """study,outcome,design,reported,n_1,mean_1,sd_1,n_2,mean_2,sd_2,remark
 North Quay,recall,one-way,"F(2, 57) = 4.31, p = .018",,,,,,,=1+1
 Site 7,recall,two-group,,20,10.2,3.1,22,12.6,3.4,[red]shout[/red]
-Mill Lane,recall,one-way,"F(2, 57) = 4.31, p = .18",,,,,,,
+Mill Lane,recall,one-way,"F(2, 54) = 4.31, p = .18",,,,,,,
 Harbour 3,sleep,one-way,"p < .05, N = 40",,,,,,,
-East Gate,sleep,nonsense,"F(2, 57) = 4.31",,,,,,,-5
+East Gate,sleep,nonsense,"F(2, 50) = 3.11",,,,,,,-5
 """
 """Rows 2 to 6: two convertible ones, a contradictory p, an unknown number of groups, an unknown design."""
 

@@ -175,8 +175,9 @@ def test_package_describes_its_files(run: Run, folder: Path) -> None:
         "findings.csv",
         "derivations.json",
         "effects.xlsx",
+        "annotated.xlsx",
     ]
-    assert len({r["name"] for r in described["resources"]}) == 4
+    assert len({r["name"] for r in described["resources"]}) == 5
     for resource in described["resources"]:
         written = Path("out", resource["path"]).read_bytes()
         assert resource["bytes"] == len(written)
@@ -333,7 +334,7 @@ def test_same_input_same_bytes(folder: Path) -> None:
         )
     names = sorted(os.listdir("one"))
     assert names == sorted(os.listdir("two"))
-    assert len(names) == 7
+    assert len(names) == 8
     for name in names:
         assert Path("one", name).read_bytes() == Path("two", name).read_bytes(), name
 

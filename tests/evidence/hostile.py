@@ -2,10 +2,10 @@
 
     python -m tests.evidence.hostile [--cases N] [--seed S] [--kind NAME] [--workers W]
 
-Every case is one run of ``extractor convert``, ``audit``, ``trace`` or ``quick`` in this process with warnings as errors
-and a limit of 10 seconds. It must end in a table or in one clear line with the exit status of the contract: 4 for a
-sheet, 5 for a codebook, 2 for the words of the command. What was written must be whole and free of formulas. Prints
-fault kinds by outcome, and exits with 1 on any breach. The same seed gives the same cases.
+Every case is one run of the command (most often ``convert``) in this process, with warnings as errors and a limit of
+10 seconds of work. It must end in a table or in one clear line with the exit status of the contract: 4 for a sheet, 5
+for a codebook, 2 for the words of the command. What was written must be whole and free of formulas. Prints fault kinds
+by outcome, and exits with 1 on any breach. The same seed gives the same cases.
 """
 
 from __future__ import annotations
@@ -52,7 +52,9 @@ def _examined(jobs: list[tuple[str, int]], workers: int) -> Iterator[tuple[str, 
 
 def main(argv: list[str] | None = None) -> int:
     """Run the cases and print their table."""
-    parser = argparse.ArgumentParser(description=__doc__, formatter_class=argparse.RawDescriptionHelpFormatter)
+    parser = argparse.ArgumentParser(
+        description=__doc__, formatter_class=argparse.RawDescriptionHelpFormatter
+    )
     parser.add_argument("--cases", type=int, default=5_000)
     parser.add_argument("--seed", type=int, default=0, help="the first seed; each kind counts up from it")
     parser.add_argument("--kind", choices=sorted(catalogue.FAULTS), help="only this kind of fault")
@@ -84,7 +86,9 @@ def _show(counts: dict[str, Counter[str]]) -> None:
     seen = {outcome for found in counts.values() for outcome in found}
     outcomes = [outcome for outcome in (*OUTCOMES, *BREACHES) if outcome in seen or outcome in BREACHES]
     wide = max(map(len, counts)) + 2
-    print(f"{'fault':<{wide}}{'cases':>8}" + "".join(f"{outcome:>{len(outcome) + 3}}" for outcome in outcomes))
+    print(
+        f"{'fault':<{wide}}{'cases':>8}" + "".join(f"{outcome:>{len(outcome) + 3}}" for outcome in outcomes)
+    )
     totals: Counter[str] = Counter()
     for kind, found in (*counts.items(), ("all", totals)):
         if kind != "all":

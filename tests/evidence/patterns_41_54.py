@@ -107,8 +107,7 @@ CASES: list[Case] = [
     # 45 counts
     case(45, "2 x 2 counts", _counts(1219, 36244, 3108, 239241), "log_odds_ratio",
          "Poldrack (2019), ch. 12, odds ratio",
-         "2.59", variance=inverse(1219, 36244, 3108, 239241), shown=math.exp,
-         short="counts alone bring no contrast, so that nothing follows from them"),
+         "2.59", variance=inverse(1219, 36244, 3108, 239241), shown=math.exp),
     case(45, "2 x 2 counts beside the ns",
          _counts(1219, 36244, 3108, 239241, **of_groups(n="37463 242349")), "log_odds_ratio",
          "Poldrack (2019), ch. 12, odds ratio", "2.59", variance=inverse(1219, 36244, 3108, 239241), shown=math.exp),

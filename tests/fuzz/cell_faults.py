@@ -9,7 +9,9 @@ from extractor.quantities import DESIGNS, FACTS, STANDARDIZERS, VOCABULARY, Role
 from tests.fuzz.faults import READ, READ_OR_NOT, Hostile, as_csv, cells_of, fault, honest, metric
 from tests.fuzz.seeds import EXTREMES, FORMULAS, NUMBERS, TEXTS, WORDS
 
-_SIGNS = tuple("0123456789.,;-−–+<>=≤≥%()[]{}*†^·'’eE×²³ \t\n\r\"/|\\_#@ηωχFtpdrnNsAa\u00a0\u200b\ufeff\x00\x1b\u202eé😀")
+_SIGNS = tuple(
+    "0123456789.,;-−–+<>=≤≥%()[]{}*†^·'’eE×²³ \t\n\r\"/|\\_#@ηωχFtpdrnNsAa\u00a0\u200b\ufeff\x00\x1b\u202eé😀"
+)
 _WORDED = tuple(name for name in FACTS if name not in ("design", "analysis"))
 _SCALARS = tuple(
     name for name, q in VOCABULARY.items() if q.role is Role.REPORTED and q.shape is Shape.SCALAR
@@ -85,8 +87,8 @@ def formula_cells(source: random.Random, folder: Path) -> Hostile:
     """Texts a spreadsheet takes for formulas, in labels, unknown columns and their headings."""
     rows = honest(source, 1)
     for at in range(source.randint(1, 3)):
-        rows[0][f"{source.choice(FORMULAS)} {at}" if source.random() < 0.5 else f"remark {at}"] = source.choice(
-            FORMULAS
+        rows[0][f"{source.choice(FORMULAS)} {at}" if source.random() < 0.5 else f"remark {at}"] = (
+            source.choice(FORMULAS)
         )
     rows[0][source.choice(("study", "outcome", "effect", "page", "quote"))] = source.choice(FORMULAS)
     return Hostile(as_csv(folder, cells_of(rows)), READ, rows=1)
@@ -144,7 +146,8 @@ def quick(source: random.Random, folder: Path) -> Hostile:
     """The command ``quick``: words instead of a sheet, so that nothing is read from disk."""
     hostile = running_text(source, folder)
     text = Path(hostile.sheet).read_text(encoding="utf-8")
-    body = text.partition("\n")[2].replace("\x00", " ")
+    # what a user types is shown again as it is
+    body = "".join(c if c.isprintable() else " " for c in text.partition("\n")[2])
     more = ["--also", f"{source.choice(_SCALARS)}={source.choice(EXTREMES)}"] * source.randint(0, 1)
     words = ("quick", body.replace("-", "−", 1), "--to", metric(source), *more)
     return Hostile("", READ_OR_NOT | {2}, more=words)

@@ -8,7 +8,7 @@ from pathlib import Path
 from openpyxl import Workbook
 
 from extractor.codebook import EFFECT_COLUMNS, ready_codebooks
-from extractor.quantities import DESIGNS, FACTS, METRICS, VOCABULARY
+from extractor.quantities import DESIGNS, FACTS, METRICS, VOCABULARY, Role
 from tests.fuzz.faults import (
     READ_OR_NOT,
     Hostile,
@@ -41,7 +41,7 @@ def _sheet(folder: Path, cells: list[list[str]], source: random.Random) -> str:
 def damaged_codebook(source: random.Random, folder: Path) -> Hostile:
     """A ready codebook with letters changed, lines doubled, exchanged or left out, or bytes that are no text."""
     lines = (BOOKS / f"{source.choice(ready_codebooks())}.toml").read_text(encoding="utf-8").splitlines(True)
-    for _ in range(source.randint(1, 4)):
+    for _ in range(source.randint(1, 2)):
         at = source.randrange(len(lines))
         line = lines[at]
         spot = source.randint(0, len(line))
@@ -50,7 +50,9 @@ def damaged_codebook(source: random.Random, folder: Path) -> Hostile:
                 "",
                 line * 2,
                 lines[source.randrange(len(lines))],
-                line[:spot] + source.choice(('"', "[", "]", "=", "{", "}", "#", "\\", "\x00", "é", "9", ".")) + line[spot:],
+                line[:spot]
+                + source.choice(('"', "[", "]", "=", "{", "}", "#", "\\", "\x00", "é", "9", "."))
+                + line[spot:],
                 line[:spot],
                 line.replace('"', "'"),
                 line.replace("=", ":"),
@@ -62,7 +64,18 @@ def damaged_codebook(source: random.Random, folder: Path) -> Hostile:
     (folder / "book.toml").write_bytes(content)
     made = Hostile(_sheet(folder, cells_of(honest(source, 1)), source), _ANY)
     made.codebook = str(folder / "book.toml")
-    return made
+    return _checked(made, source, folder)
+
+
+def _checked(made: Hostile, source: random.Random, folder: Path) -> Hostile:
+    """Now and then the commands about the codebook itself in place of those that use it."""
+    kind = source.random()
+    if made.codebook is None or kind > 0.3:
+        return made
+    words = ("codebook", made.codebook, *((made.sheet,) if kind < 0.1 else ()))
+    if kind > 0.2:
+        words = ("sheet", made.codebook, str(folder / "coding.xlsx"))
+    return Hostile("", made.allowed | {2}, more=words)
 
 
 def _toml(value: str) -> str:
@@ -80,7 +93,9 @@ def strange_codebook(source: random.Random, folder: Path) -> Hostile:
             (
                 _toml(source.choice((*WORDS, *FORMULAS))),
                 _toml(source.choice(("n", "F", "x {group}", "{group}", "study", "f_value", "row"))),
-                source.choice(("1", "-1", "0", "1e308", "inf", "nan", "9" * 400, "0.5", "true", "2024-05-03", "[]")),
+                source.choice(
+                    ("1", "-1", "0", "1e308", "inf", "nan", "9" * 400, "0.5", "true", "2024-05-03", "[]")
+                ),
                 '["a", 1]',
                 "[" * 500 + "]" * 500,
                 "[-99, 1e308, nan, inf, " + "9" * 350 + "]",
@@ -90,23 +105,40 @@ def strange_codebook(source: random.Random, folder: Path) -> Hostile:
             )
         )
 
-    top = ("title", "design", "decimal_mark", "rounding", "missing", "alpha", "colums", "[x]")
-    lines = [f"{source.choice(top)} = {value()}" for _ in range(source.randint(0, 2))]
-    for table, keys in (
-        ("columns", (*FACTS, *VOCABULARY, "n_1", "N")),
-        ("decimals", (*VOCABULARY, "mean_1")),
-        ("assume", ("correlation", "icc", "tails", "n_total", "mean", "epsilon")),
-        ("scale", ("minimum", "maximum", "items", "responses")),
-        ("rename", (*EFFECT_COLUMNS, "x")),
+    def of(*likely: str) -> str:
+        return source.choice(likely) if source.random() < 0.85 else value()
+
+    lines = []
+    for key, text in (
+        ("title", of('"ours"', '"=1+1"', '"../x"')),
+        ("design", of('"one-way"', '"paired"')),
+        ("decimal_mark", of('","', '"."')),
+        ("rounding", of('"either"', '"truncated"')),
+        ("missing", of("[-99, 'NR']", "[0]", "['4.31', 2, '']")),
+        ("alpha", of("0.1", "1e-6")),
+        ("colums", of("1")),
     ):
-        if source.random() < 0.5:
-            chosen = source.sample(keys, source.randint(1, 2))
-            lines += [f"[{table}]", *(f"{key} = {value()}" for key in chosen)]
+        if source.random() < (0.2 if key != "colums" else 0.02):
+            lines.append(f"{key} = {text}")
+    quantities = tuple(name for name, q in VOCABULARY.items() if q.role is Role.REPORTED)
+    heading = _toml(source.choice((*WORDS[:40], *FORMULAS, "n", "x {group}", "study", "f_value", "row")))
+    for table, keys, likely in (
+        ("columns", (*FACTS, *quantities, "n_1"), (heading, f"[{heading}]", '["F", "f"]', '"f_value"')),
+        ("decimals", (*quantities, "mean_1"), ("0", "2", "12")),
+        ("assume", ("correlation", "icc", "tails", "n_total", "epsilon"), ("{ value = 1, by = '=1+1' }",)),
+        ("scale", ("minimum", "maximum", "items"), ("1", "7", "-1e299", "10000", "1e-300")),
+        ("rename", EFFECT_COLUMNS, (heading, '"x"', '"study"', '"=1+1"', '"row "')),
+    ):
+        if source.random() < 0.35:
+            chosen = source.sample(keys, source.choice((1, 1, 2)))
+            lines += [f"[{table}]", *(f"{key} = {of(*likely)}" for key in chosen)]
     (folder / "book.toml").write_text("\n".join(lines), encoding="utf-8")
     # two columns may be asked to have one name, which shows only once the sheet is read
     made = Hostile(_sheet(folder, cells_of(honest(source, 1)), source), _ANY | {2})
-    made.codebook = source.choice((str(folder / "book.toml"),) * 8 + ("one-wya", str(folder), "no/such.toml", "a" * 500))
-    return made
+    made.codebook = source.choice(
+        (str(folder / "book.toml"),) * 8 + ("one-wya", str(folder), "no/such.toml", "a" * 500)
+    )
+    return _checked(made, source, folder)
 
 
 @fault("groups sheet")
@@ -126,7 +158,9 @@ def groups(source: random.Random, folder: Path) -> Hostile:
     for _ in range(source.randint(1, 4)):
         at = source.randrange(len(cells))
         place = source.randrange(len(cells[at]))
-        cells[at][place] = source.choice((*NUMBERS, *WORDS, *EXTREMES, "", "A2", "analysis", "n_1", "sd", "se"))
+        cells[at][place] = source.choice(
+            (*NUMBERS, *WORDS, *EXTREMES, "", "A2", "analysis", "n_1", "sd", "se")
+        )
     made = Hostile(as_csv(folder, cells_of(rows)), READ_OR_NOT)
     text = delimited(cells)
     if source.random() < 0.5:
@@ -152,11 +186,24 @@ def decisions(source: random.Random, folder: Path) -> Hostile:
     for row in range(2, 2 + source.randint(1, 2)):
         heading = source.choice((*rows[row - 2], "f_value", "D2", "f_value [D2]", f"row {row}", ""))
         decision = source.choice(("keep", "correct", "waive", "Correct"))
-        cells.append([str(row), heading, decision, source.choice(EXTREMES), "p. 4", "first coder", "2024-05-03", "typo"])
+        cells.append(
+            [
+                str(row),
+                heading,
+                decision,
+                source.choice(EXTREMES),
+                "p. 4",
+                "first coder",
+                "2024-05-03",
+                "typo",
+            ]
+        )
     for _ in range(source.randint(0, 2)):
         at = source.randrange(len(cells))
         place = source.randrange(8)
-        cells[at][place] = source.choice((*NUMBERS, *WORDS, "", "row", "9" * 5000, "A" + "9" * 5000, "x [x]", "[A2]"))
+        cells[at][place] = source.choice(
+            (*NUMBERS, *WORDS, "", "row", "9" * 5000, "A" + "9" * 5000, "x [x]", "[A2]")
+        )
     made = Hostile(as_csv(folder, cells_of(rows)), READ_OR_NOT, rows=2)
     text = delimited(cells).encode("utf-8")
     name = "decisions.csv"

@@ -2,8 +2,6 @@
 
 from __future__ import annotations
 
-import csv
-import io
 import random
 import warnings
 from collections.abc import Callable
@@ -11,7 +9,7 @@ from dataclasses import dataclass
 from pathlib import Path
 
 from extractor.quantities import METRICS
-from tests.fuzz.judging import Case
+from tests.fuzz.judging import CONVERTED, Case
 from tests.fuzz.seeds import ROWS
 
 READ = frozenset({0})
@@ -70,14 +68,24 @@ def case(name: str, seed: int, folder: Path) -> Case:
         value = getattr(made, option)
         if value is not None:
             words += [f"--{option}", value]
-    allowed, out = made.allowed, None
+    allowed, out, files = made.allowed, None, CONVERTED
     kind = source.random()
     if kind < 0.15 and not made.more:
         words = ["audit", *words]
     elif kind < 0.2 and not made.more:
         # a row that was not read is a mistake of whoever asks for it
         words, allowed = ["trace", *words, str(source.randint(1, 4)), "--to", metric(source)], allowed | {2}
-    elif kind < 0.3:
+    elif kind < 0.23 and not made.more:
+        words = ["unlock", *words, "--to", metric(source)]
+        if source.random() < 0.5:
+            out, files = folder.parent / "out", ("replies.csv",)
+            words += ["--letters", str(out)]
+    elif kind < 0.26 and not made.more and made.stdin is None and made.groups is made.decisions is None:
+        words, allowed = ["reconcile", *words, _other_coder(source, folder)], allowed | {2, 4}
+        if source.random() < 0.5:
+            out, files = folder.parent / "out", ("agreement.csv", "disputes.csv", "consensus.xlsx")
+            words += ["--out", str(out), "--to", metric(source)]
+    elif kind < 0.35:
         words = ["convert", *words, "--to", metric(source), "--format", source.choice(("csv", "json"))]
         words += made.more
     else:
@@ -85,10 +93,20 @@ def case(name: str, seed: int, folder: Path) -> Case:
         words = ["convert", *words, "--to", metric(source), "--out", str(out), *made.more]
         for format_ in source.sample(("xlsx", "json", "dta"), source.choice((0, 0, 0, 1))):
             words += ["--format", format_]
-    if words[0] != "trace" and source.random() < 0.1:
+    if words[0] in ("convert", "audit") and source.random() < 0.1:
         words += ["--fail-on", source.choice(("impossible", "inconsistent", "doubtful"))]
         allowed = allowed | {3} if 0 in allowed else allowed
-    return Case(words, allowed, out, made.stdin, made.rows)
+    return Case(words, allowed, out, made.stdin, made.rows, files)
+
+
+def _other_coder(source: random.Random, folder: Path) -> str:
+    """A second sheet, by a coder who saw other numbers."""
+    rows = honest(source, 2)
+    for row in rows:
+        row[source.choice(list(row))] = source.choice(("5.1", "20", "Site 1"))
+    path = folder / "second.csv"
+    path.write_text(delimited(cells_of(rows)), encoding="utf-8", newline="")
+    return str(path)
 
 
 def metric(source: random.Random) -> str:
@@ -98,9 +116,7 @@ def metric(source: random.Random) -> str:
 
 def honest(source: random.Random, rows: int) -> list[dict[str, str]]:
     """So many honest rows, with labels."""
-    return [
-        {"study": f"Site {at + 1}", "outcome": "recall", **source.choice(ROWS)} for at in range(rows)
-    ]
+    return [{"study": f"Site {at + 1}", "outcome": "recall", **source.choice(ROWS)} for at in range(rows)]
 
 
 def headings_of(rows: list[dict[str, str]]) -> list[str]:
@@ -116,9 +132,13 @@ def cells_of(rows: list[dict[str, str]]) -> list[list[str]]:
 
 def delimited(cells: list[list[str]], delimiter: str = ",", newline: str = "\n") -> str:
     """Cells as delimited text (RFC 4180)."""
-    stream = io.StringIO(newline="")
-    csv.writer(stream, delimiter=delimiter, lineterminator=newline).writerows(cells)
-    return stream.getvalue()
+
+    def quoted(cell: str) -> str:
+        # the standard library's writer leaves a carriage return without quotation marks
+        plain = not any(sign in cell for sign in ('"', delimiter, "\n", "\r"))
+        return cell if plain else '"' + cell.replace('"', '""') + '"'
+
+    return "".join(delimiter.join(map(quoted, row)) + newline for row in cells)
 
 
 def as_csv(folder: Path, cells: list[list[str]]) -> str:

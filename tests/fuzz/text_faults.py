@@ -61,10 +61,15 @@ def delimiters(source: random.Random, folder: Path) -> Hostile:
     newline = source.choice(("\n", "\r\n", "\r", "\n\r", "\x0b", "\x0c", "\u2028", "\x85"))
     text = delimited(cells_of(rows), source.choice(",;\t|: "), newline)
     if source.random() < 0.3:
-        text = f"sep={source.choice((',', ';', '|', 'a', ' ', chr(34), chr(13), chr(0), '.', '5', 'é'))}\n" + text
+        text = (
+            f"sep={source.choice((',', ';', '|', 'a', ' ', chr(34), chr(13), chr(0), '.', '5', 'é'))}\n"
+            + text
+        )
     for _ in range(source.choice((0, 0, 1, 3))):
         at = source.randint(0, len(text))
-        text = text[:at] + source.choice(('"', '""', ",", ";", "\r", "\n", "\r\n", "\t", "'", "\\")) + text[at:]
+        text = (
+            text[:at] + source.choice(('"', '""', ",", ";", "\r", "\n", "\r\n", "\t", "'", "\\")) + text[at:]
+        )
     return _write(folder, text.encode("utf-8"), source)
 
 
@@ -153,7 +158,9 @@ def large(source: random.Random, folder: Path) -> Hostile:
         extra = [source.choice(("f_valu", "remark", "mean", "x")) + str(at) for at in range(300)]
         cells = [cells[0] + extra, cells[1] + ["1"] * len(extra)]
     elif kind == 1:
-        cells[1][source.randrange(len(cells[1]))] = source.choice("1 =F(x,") * source.choice((40_000, 100_000))
+        cells[1][source.randrange(len(cells[1]))] = source.choice("1 =F(x,") * source.choice(
+            (40_000, 100_000)
+        )
     elif kind == 2:
         cells[0] = [*cells[0], source.choice("1 =_x(") * source.choice((1000, 100_000))]
     else:
