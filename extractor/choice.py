@@ -13,6 +13,7 @@ from extractor.catalogue.relation import FloatArray, Grade, Interval, catalogue
 from extractor.engine import Engine, Estimate
 from extractor.evidence import Block
 from extractor.planner import Route, search
+from extractor.quantities import VOCABULARY
 from extractor.sampling.precision import Precision, limits_of, standardizer_of, variances_of
 
 NOTHING = -1
@@ -67,6 +68,9 @@ def choose(block: Block, metric: str, standardizer: str = "") -> Chosen:
     routes = search(block.start, block.design, standardizer).get(metric, ())
     if standardizer and metric in STANDARDIZED:
         routes = tuple(r for r in routes if standardizer_of(r.standardizer, block.design) == standardizer)
+    # an estimate from a part of a five-number summary must not slip through where that of all of it is refused
+    most = max((r.summary_numbers for r in routes), default=0)
+    routes = tuple(r for r in routes if r.summary_numbers in (0, most))
     engine = Engine(block.leaves)
     estimates = [engine.run(route) for route in routes]
     size = len(block.positions)
@@ -121,7 +125,11 @@ def support(chosen: Chosen, method: str | None, level: float) -> None:
             if options:
                 further[need] = options[0]
                 inputs[need] = chosen.engine.run(options[0]).value[rows]
-        chosen.precisions[int(index)] = _supported(variance, limits, inputs, further, int(rows.sum()), level)
+        coded = chosen.block.leaves.keys() - chosen.block.assumed.keys()
+        # half of what the design effect needs says that the plain variance is too small
+        absent = tuple(name for name in CLUSTER if name not in inputs) if coded & set(CLUSTER) else ()
+        size = int(rows.sum())
+        chosen.precisions[int(index)] = _supported(variance, limits, inputs, further, absent, size, level)
 
 
 def _first_served(options: list[Precision], known: set[str]) -> Precision | None:
@@ -134,6 +142,7 @@ def _supported(
     limits: Precision | None,
     inputs: Mapping[str, FloatArray],
     further: Mapping[str, Route],
+    absent: tuple[str, ...],
     size: int,
     level: float,
 ) -> Supported:
@@ -149,11 +158,17 @@ def _supported(
             ends = limits.function(*(inputs[need] for need in limits.needs), level)
             low, high = cast(Interval, ends)
     method = variance.name if variance else ""
-    if all(name in inputs for name in CLUSTER):
+    if absent:
+        missing += absent
+        spread, low, high = nothing, nothing, nothing
+    elif all(name in inputs for name in CLUSTER):
         effect = 1 + (inputs["cluster_size"] - 1) * inputs["icc"]
         centre = inputs[variance.metric] if variance else (low + high) / 2
         spread = spread * effect
         low, high = (centre + (end - centre) * np.sqrt(effect) for end in (low, high))
+        if variance is not None:
+            support = VOCABULARY[variance.metric]
+            low, high = np.maximum(low, support.low), np.minimum(high, support.high)
         method += ", times the design effect 1 + (m - 1)·ICC"
     used = {n: r for n, r in further.items() if n not in CLUSTER or all(c in inputs for c in CLUSTER)}
     return Supported(

@@ -8,7 +8,7 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from extractor.catalogue.refusals import why_no_route
+from extractor.catalogue.refusals import why_no_route, why_no_value
 from extractor.choice import NOTHING, STANDARDIZED, Chosen, assumptions_of, choose, grade_of, support
 from extractor.errors import UsageError
 from extractor.evidence import Block, Evidence
@@ -79,7 +79,7 @@ def convert_evidence(
     check_metric(metric)
     check_method(metric, method)
     check_standardizer(standardizer)
-    table = _Effects(evidence, metric)
+    table = _Effects(evidence, metric, standardizer)
     chosen = []
     for block in evidence.blocks:
         chosen.append(choose(block, metric, standardizer))
@@ -112,8 +112,9 @@ def check_standardizer(standardizer: str) -> None:
 class _Effects:
     """The columns of the effect table while they are being filled, one array per column over all rows."""
 
-    def __init__(self, evidence: Evidence, metric: str) -> None:
-        self.evidence, self.metric = evidence, metric
+    def __init__(self, evidence: Evidence, metric: str, standardizer: str) -> None:
+        self.evidence, self.metric, self.standardizer = evidence, metric, standardizer
+        self.left_out = _left_out(evidence)
         rows = evidence.table.rows
         self.numbers: dict[str, FloatArray] = {
             name: np.full(rows, np.nan)
@@ -207,12 +208,14 @@ class _Effects:
         left = chosen.block.positions[chosen.which == NOTHING]
         if not len(left):
             return
+        block = chosen.block
         if chosen.routes:
-            self.words["reason"][left] = (
-                "the printed numbers give no possible value: they contradict each other or the design"
-            )
+            reported = frozenset(block.leaves) - frozenset(block.assumed)
+            reason = why_no_value(self.metric, block.design, reported)
         else:
-            self.words["reason"][left] = refusal(chosen.block, self.metric)
+            reason = refusal(block, self.metric, self.standardizer)
+        said = self.left_out[left]
+        self.words["reason"][left] = np.where(said == "", reason, reason + ". Left out: " + said)
 
     def _set(self, name: str, rows: NDArray[np.intp], values: FloatArray) -> None:
         self.numbers[name][rows] = np.where(np.isfinite(values), values, np.nan)
@@ -248,9 +251,27 @@ def route_words(leaves: frozenset[str], metric: str) -> str:
     return f"{', '.join(shown)} -> {metric}"
 
 
-def refusal(block: Block, metric: str) -> str:
-    """Why a block has no route to a metric, and which numbers would open one."""
+def _left_out(evidence: Evidence) -> ObjectArray:
+    """What of each row was not understood or not used, shape (rows,)."""
+    table = evidence.table
+    said: ObjectArray = evidence.remarks.copy()
+
+    def add(position: int, message: str) -> None:
+        if message not in said[position]:
+            said[position] = f"{said[position]}; {message}" if said[position] else message
+
+    for kind in ("problems", "understood"):
+        for number, _, message in table.settings.get(kind, ()):
+            add(int(np.searchsorted(table.row_numbers, number)), message)
+    for column in table.numbers.values():
+        for position in np.flatnonzero((column.problem != "") & ~column.given):
+            add(int(position), str(column.problem[position]))
+    return said
+
+
+def refusal(block: Block, metric: str, standardizer: str = "") -> str:
+    """Why a block has no route to a metric over a standardizer ("" for any), and which numbers would open one."""
     reported = frozenset(block.leaves) - _SCOPED - frozenset(block.assumed) | frozenset(block.partial)
-    sets = unlocking_sets(block.start, block.design, metric)
+    sets = unlocking_sets(block.start, block.design, metric, standardizer=standardizer)
     why = why_no_route(metric, block.design, reported, sets)
     return f"{why}. Would open it: {in_words(sets)}" if sets else why

@@ -115,6 +115,7 @@ class _Gathering:
         self._set_aside()
         self.weights = self.coding.weights(self.design, self.groups)
         self.direction = self.coding.directions()
+        self.compared = self._compared()
         self.standardizer = self.coding.standardizers(self.design)
         # with several groups, a p value beside a t and no F is the contrast's
         one_factor = np.isin(self.design, ("one-way", "one-way-partial"))
@@ -169,6 +170,20 @@ class _Gathering:
         joint = {t: len(factors_of(t)) > 1 for t in set(terms)}
         return np.isin(terms, [t for t, several in joint.items() if several])
 
+    def _compared(self) -> BoolArray:
+        """Whether a row compares groups, so that its F or t has a contrast.
+
+        The interaction of a factorial design has none unless its cells are coded, and of a mixed design only the
+        interaction is a difference of changes.
+        """
+        joint, termed = self._joint_term(), self.table.fact("term") != ""
+        celled = np.isin(self.table.fact("analysis"), list(self.table.cells))
+        interaction = (self.design == "factorial") & joint & ~celled
+        main = (self.design == "mixed") & ~joint & termed
+        self.coding.remark(interaction, "an interaction is no contrast of two groups")
+        self.coding.remark(main, "a main effect of a mixed design is no difference of changes")
+        return np.asarray((self.table.fact("contrast") != NO_CONTRAST) & ~interaction & ~main)
+
     def _room_for_more(self) -> BoolArray:
         """Whether the dfs leave at least two participants for each group that is not coded."""
         total = np.zeros(self.rows)
@@ -205,11 +220,10 @@ class _Gathering:
         """One row of small integers per row; equal rows share a plan."""
         columns = sorted(self.use, key=lambda v: (v[0], v[1] or 0))
         words = (np.unique(w.astype(str), return_inverse=True)[1] for w in (self.design, self.standardizer))
-        compared = self.table.fact("contrast") != NO_CONTRAST
         facts = (
             self.groups,
             ~np.isnan(self.direction),
-            compared,
+            self.compared,
             self.contrast_p,
             self.f_test,
             self.corrected,
@@ -327,7 +341,8 @@ class _Gathering:
     def _add_facts(self, block: Block) -> None:
         rows, first = block.positions, block.positions[0]
         # the two groups of a table of counts have no columns of their own
-        if block.groups >= 2 or (block.design == "two-group" and not block.groups):
+        several = block.groups >= 2 or (block.design == "two-group" and not block.groups)
+        if several and self.compared[first]:
             texts, which = np.unique(self.table.fact("contrast")[rows].astype(str), return_inverse=True)
             stacked = np.stack([self.weights[str(t), block.groups] for t in texts])[which]
             if stacked.any(axis=-1).all():

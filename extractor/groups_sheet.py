@@ -21,6 +21,7 @@ from extractor.sheet import read_table
 from extractor.source.columns import filled, take_rows
 from extractor.source.grid import NoRows
 from extractor.source.workbook import has_sheet
+from extractor.study.subgroups import merged_lines
 from extractor.study.terms import factors_of
 from extractor.table import Cells, FloatArray, Numbers, ObjectArray, Place, ReportedTable, Variable
 
@@ -67,6 +68,10 @@ def with_groups(
         raise UnreadableInput(
             f"{where}: no column of group numbers is known; known are n, mean, sd, se and so on"
         )
+    named = [c for c in long.extras.columns if c.strip().lower() == _GROUP]
+    if named:
+        labels = long.extras[named[0]].fillna("").astype(str).str.strip().to_numpy(dtype=object)
+        long = merged_lines(long, labels)
     return _Joining(table, long).joined()
 
 

@@ -28,6 +28,10 @@ _BEST = 8
 _COUNTS = frozenset({"df_effect", "df_error", "df", "n_total", "k_groups", "n", "tails"})
 
 
+_SUMMARY = frozenset({"minimum", "q1", "median", "q3", "maximum"})
+"""Numbers of which an estimate of mean and SD had better use all that are printed."""
+
+
 @dataclass(frozen=True, slots=True)
 class Route:
     """One derivation of a quantity.
@@ -54,6 +58,11 @@ class Route:
         """How many values and relations rest on something nobody reported."""
         relations = catalogue()
         return len(self.assumed) + sum(relations[s].grade is Grade.ASSUMPTION for s in self.steps.values())
+
+    @property
+    def summary_numbers(self) -> int:
+        """How many of a five-number summary it uses."""
+        return len(self.leaves & _SUMMARY)
 
     @property
     def preference(self) -> tuple[int, bool, int, int, int, list[str], list[str]]:
@@ -186,6 +195,7 @@ def _kept(routes: tuple[Route, ...]) -> tuple[Route, ...]:
             and other.assumptions <= route.assumptions
             and other.grade <= route.grade
             and (other.standardizer == route.standardizer or route.behind)
+            and other.summary_numbers >= route.summary_numbers
             for other in kept
         )
         if not beaten:

@@ -158,6 +158,7 @@ _EFFECTS = [
     _scalar("partial_omega_squared", "ω²p", "partial omega squared; negative when F < 1", -INF, 1.0),
     _scalar("epsilon_squared", "ε²", "epsilon squared (Kelley 1935); negative when F < 1", -INF, 1.0),
     _scalar("cohens_f", "f", "Cohen's f, sqrt(eta² / (1 - eta²))", 0.0),
+    _scalar("f_squared", "f²", "Cohen's f squared, eta² / (1 - eta²)", 0.0),
     _signed("cohens_d", "d", "standardised mean difference without small-sample correction"),
     _signed("hedges_g", "g", "standardised mean difference with small-sample correction J(df)"),
     _signed("r", "r", "point-biserial correlation of group and outcome", 1.0),

@@ -37,6 +37,8 @@ from extractor.symbols import names
 __all__ = ["BLANK", "ROUNDINGS", "CellError", "Reading", "UncachedFormula", "read_number"]
 
 PROBABILITIES = frozenset({"p_value", "homogeneity_p"})
+CUT_AT_ZERO = frozenset({"omega_squared", "partial_omega_squared", "epsilon_squared", "rank_epsilon_squared"})
+"""Estimates that can be negative and are often printed as zero then."""
 STATED = frozenset({"confidence_level", "scale_min", "scale_max"})
 """Set by a design rather than measured, hence exact as printed."""
 _MAY_BE_FRACTIONAL = frozenset({"df", "df_effect", "df_error"})
@@ -111,6 +113,9 @@ def _printed(value: Decimal, decimals: int, notes: tuple[str, ...], to: _Setting
         said = "; ".join((*notes, f"a p of zero read as p < {_plain(bound)}"))
         return Reading(math.nan, 0.0, outward(value, bound)[1], float(unit), shown, "<", said)
     low, high = rounding_interval(value, unit, to.rounding)
+    if to.name in CUT_AT_ZERO and value == 0:
+        said = "; ".join((*notes, "a zero may be a negative estimate cut at zero; read as an upper bound"))
+        return Reading(math.nan, -math.inf, high, float(unit), shown, "<", said)
     return Reading(number, low, high, float(unit), shown, "=", "; ".join(notes))
 
 

@@ -36,6 +36,7 @@ SPELLINGS: tuple[tuple[str, str], ...] = (
     ),
     ("omega_squared", rf"{_OMEGA}{_SQUARED}"),
     ("epsilon_squared", rf"{_EPSILON}{_SQUARED}"),
+    ("f_squared", rf"(?:Cohen'?s )?f{_SQUARED}"),
     ("cohens_f", r"(?:Cohen'?s )?f"),
     ("cohens_d", r"(?:Cohen'?s )?d"),
     ("hedges_g", r"(?:Hedge'?s?'? )?g"),

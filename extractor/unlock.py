@@ -254,20 +254,26 @@ def _leading_to(goals: frozenset[str], relations: tuple[Relation, ...]) -> set[s
 
 
 @lru_cache(maxsize=4096)
-def _unlocking(start: Start, design: str, metric: str, most: int) -> tuple[frozenset[str], ...]:
+def _unlocking(
+    start: Start, design: str, metric: str, most: int, standardizer: str
+) -> tuple[frozenset[str], ...]:
     # the contrast needs no asking: it is there as soon as groups are coded
     known = start.known | start.assumed | {"contrast_weight"}
-    relations = graph(design, any_point, frozenset(), None)
+    relations = graph(design, any_point, frozenset(), standardizer or None)
     askable = askable_in(design, start.known)
     return tuple(smallest_sets(known, askable, relations, frozenset([metric]), most))
 
 
-def unlocking_sets(start: Start, design: str, metric: str, most: int = 3) -> list[frozenset[str]]:
+def unlocking_sets(
+    start: Start, design: str, metric: str, most: int = 3, *, standardizer: str = ""
+) -> list[frozenset[str]]:
     """Sets of missing quantities, each of which opens a route to ``metric``; the easiest to be had first.
+
+    ``standardizer`` : accept only routes over this one; "" takes every one.
 
     No part of a set opens one. The list is empty where a route is open, and where nothing would open one.
     """
-    return list(_unlocking(start, design, metric, most))
+    return list(_unlocking(start, design, metric, most, standardizer))
 
 
 def in_words(sets: Iterable[frozenset[str]]) -> str:

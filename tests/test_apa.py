@@ -189,8 +189,6 @@ def test_refused_as_a_whole(text: str, words: tuple[str, ...]) -> None:
         "adjusted R² = .2",
         "dz = .4",
         "d_z = .4",
-        "f² = .15",
-        "f2 = .15",
         "F1(1, 23) = 4.2",
         "F(57) = 4.31",
         "F(2, 57, ε = .8) = 4.31",

@@ -72,8 +72,8 @@ def audit_evidence(
     counts = np.zeros(table.rows, dtype=int)
     for block in evidence.blocks:
         counts[block.positions] = checks_of(block, table)
-        if counts[block.positions[0]]:
-            findings.extend(contradictions(block, table))
+        # limits of a quantity can contradict it where nothing implies its value
+        findings.extend(contradictions(block, table))
     why = np.where(evidence.blocked != "", evidence.blocked, "no printed number is implied by others")
     unchecked = [(int(table.row_numbers[i]), str(why[i])) for i in np.flatnonzero(counts == 0)]
     if review is not None:

@@ -68,9 +68,7 @@ def _upper_tail(explained: FloatArray, df_effect: FloatArray, df_error: FloatArr
 )
 def p_from_f(f_value: FloatArray, df_effect: FloatArray, df_error: FloatArray) -> FloatArray:
     """p = P(F(df1, df2) ≥ F)."""
-    return np.asarray(
-        special.betainc(df_error / 2, df_effect / 2, df_error / (df_error + df_effect * f_value))
-    )
+    return _upper_tail(f_value * df_effect, df_effect, df_error)
 
 
 def _f_at_upper_tail(p: FloatArray, df_effect: FloatArray, df_error: FloatArray) -> FloatArray:

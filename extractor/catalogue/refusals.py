@@ -8,7 +8,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-from extractor.catalogue.relation import PARTIAL, PRE_POST, SEVERAL_GROUPS, TERMS
+from extractor.catalogue.relation import ANCOVA, PARTIAL, PRE_POST, SEVERAL_GROUPS, TERMS
 from extractor.quantities import VOCABULARY, is_signed
 
 _OMNIBUS = (
@@ -95,6 +95,26 @@ def why_no_route(metric: str, design: str, reported: frozenset[str], opened_by: 
     if why:
         return f"{symbol} is refused: {why}"
     return f"no relation leads from {', '.join(sorted(known))} to {symbol}"
+
+
+_NO_VALUE = "the printed numbers give no possible value: they contradict each other or the design"
+_SKEWED = "medians and quartiles or extremes are visibly skewed, so that no mean and SD are estimated from them"
+_ONE_SIZE = "an LSD or HSD is one number for all pairs only when groups are of equal size"
+_CUT = "an adjusted p of 1 may have been cut there"
+
+
+def why_no_value(metric: str, design: str, reported: frozenset[str]) -> str:
+    """One sentence saying why the relations that lead to ``metric`` give no value in a row."""
+    symbol = VOCABULARY[metric].symbol
+    if "median" in reported and not reported & {"mean", "t_value", "f_value"}:
+        return f"{symbol} is refused: {_SKEWED}"
+    if reported & {"lsd_value", "hsd_value"}:
+        return f"{symbol} is refused: {_ONE_SIZE}"
+    if "adjusted_p" in reported:
+        return f"{symbol} is refused: {_CUT}"
+    if is_signed(metric) and design in TERMS | ANCOVA and "f_value" in reported:
+        return f"{symbol} is refused: {_OMNIBUS}"
+    return _NO_VALUE
 
 
 def _of_the_metric(case: _Case) -> str:

@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import numpy as np
 
-from extractor.catalogue.relation import ONE_FACTOR, FloatArray, relation
+from extractor.catalogue.relation import ONE_FACTOR, PARTIAL, FloatArray, relation
 
 _ETA = "SS_effect / SS_total with F = MS_effect / MS_error (textbook identity)"
 _OMEGA = "Hays (1963), omega squared of the one-way fixed-effects design"
@@ -109,6 +109,18 @@ def cohens_f_from_eta_squared(eta_squared: FloatArray) -> FloatArray:
 def eta_squared_from_cohens_f(cohens_f: FloatArray) -> FloatArray:
     """η² = f² / (1 + f²)."""
     return cohens_f**2 / (1 + cohens_f**2)
+
+
+@relation(gives="cohens_f", rising=["f_squared"], designs=ONE_FACTOR | PARTIAL, source=_F)
+def cohens_f_from_its_square(f_squared: FloatArray) -> FloatArray:
+    """f = sqrt(f²)."""
+    return np.sqrt(f_squared)
+
+
+@relation(gives="f_squared", rising=["cohens_f"], designs=ONE_FACTOR | PARTIAL, source=_F)
+def square_of_cohens_f(cohens_f: FloatArray) -> FloatArray:
+    """f² = f · f."""
+    return cohens_f**2
 
 
 @relation(gives="partial_eta_squared", rising=["eta_squared"], designs=ONE_FACTOR, source=_SAME)

@@ -83,6 +83,7 @@ def world(rng: np.random.Generator, rows: int, groups: int, *, equal: bool = Fal
         "partial_omega_squared": omega,
         "epsilon_squared": 1 - (1 - eta) * (total - 1) / v2,
         "cohens_f": np.sqrt(between / within),
+        "f_squared": between / within,
         "p_two_sided": p,
         "p_value": np.where(tails == 1, p / 2, p),
         "tails": tails,

@@ -83,12 +83,10 @@ CASES: list[Case] = [
          (quartile_mean(11, 14, 17.5, 40) - quartile_mean(8.2, 11, 14, 42))
          / pooled([40, 42], [quartile_sd(11, 17.5, 40), quartile_sd(8.2, 14, 42)]),
          grade="approximation", said=("visibly skewed is refused",)),
-    refused(43, "median and quartiles, skewed", {**_QUARTILES, "q3_1": "29.0", "q3_2": "26.0"}, "cohens_d", "skew",
-            short="the row is blocked, but the reason speaks of a contradiction"),
+    refused(43, "median and quartiles, skewed", {**_QUARTILES, "q3_1": "29.0", "q3_2": "26.0"}, "cohens_d", "skew"),
     case(43, "five numbers, n", _FIVE, "cohens_d", "mean by Luo et al. (2018), SD by Shi et al. (2020)",
          (five_mean(8, 13, 14, 15, 18, 100) - five_mean(7, 12, 13, 14, 18, 100))
-         / pooled([100, 100], [five_sd(8, 13, 15, 18, 100), five_sd(7, 12, 14, 18, 100)]), grade="approximation",
-         short="of five numbers only the median and two are used: the search drops routes that need more numbers"),
+         / pooled([100, 100], [five_sd(8, 13, 15, 18, 100), five_sd(7, 12, 14, 18, 100)]), grade="approximation"),
     # 44 ranks
     case(44, "U, ns", row("two-group", u_value="120", direction="+", **_U), "cohens_d",
          "P(X > Y) = 1 - U/(n1·n2), d of normal groups (McGraw & Wong 1992)", normal_d(1 - 120 / 360),
@@ -160,8 +158,7 @@ CASES: list[Case] = [
          variance=1.95 * d_variance(60, 60, _D_CLUSTERED), grade="assumption", said=("icc = 0.05 (protocol)",),
          codebook='design = "two-group"\n[assume.icc]\nvalue = 0.05\nby = "protocol"\n'),
     case(49, "groups randomised, no ICC", _CLUSTERED, "cohens_d", "no variance without ICC", _D_CLUSTERED,
-         variance=math.nan, reason=("no sampling variance", "icc"),
-         short="without ICC the variance is that of participants who were randomised one by one"),
+         variance=math.nan, reason=("no sampling variance", "icc")),
     case(50, "crossover with r", {**_CROSSED, "correlation": ".68"}, "cohens_d",
          "over the average SD; V = d²(1 + r²)/(4(n - 1)) + 2(1 - r)/(n - 1) (Bonett 2008)", _AVERAGE,
          standardizer="average",
@@ -187,8 +184,7 @@ CASES: list[Case] = [
          "n, M, SD of the union (Cochrane Handbook 6.5.2.10): d of the merged arm and the control",
          (9.85 - 9.0) / pooled([50, 25], [math.sqrt((24 * (2.0**2 + 2.1**2) + 12.5 * 0.5**2) / 49), 1.9]),
          groups=tuple({"analysis": "arms", "group": g, "n": "25", "mean": m, "sd": s} for g, m, s in (
-             ("arm", "10.1", "2.0"), ("arm", "9.6", "2.1"), ("control", "9.0", "1.9"))),
-         short="merging exists as a function only (catalogue.merging); no column asks for it"),
+             ("arm", "10.1", "2.0"), ("arm", "9.6", "2.1"), ("control", "9.0", "1.9")))),
     # 54 typography
     _cell("decimal comma", "3,45", 1.45),
     _cell("Unicode minus", "−3.45", -5.45),
