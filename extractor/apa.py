@@ -182,7 +182,11 @@ class _Reader:
     def statistic(self, match: re.Match[str]) -> None:
         """A name, its degrees of freedom, a relation sign and a number."""
         name, text = quantity_of(match["name"]), match.group()
-        if name is None or not self.free(match.span()) or _FOREIGN.search(self.text[max(match.start() - _FOREIGN_LONGEST, 0) : match.start()]):
+        if (
+            name is None
+            or not self.free(match.span())
+            or _FOREIGN.search(self.text[max(match.start() - _FOREIGN_LONGEST, 0) : match.start()])
+        ):
             return
         inside = match["round"] or match["square"] or match["flat"] or ""
         dfs: tuple[Reading, ...] = ()

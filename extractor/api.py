@@ -150,7 +150,11 @@ def read(
     decided: list[Decision] = []
     if decisions is not None:
         decided = read_decisions(decisions)
-    elif not isinstance(source, pd.DataFrame) and str(source) != "-" and str(source).endswith((".xlsx", ".xlsm")):
+    elif (
+        not isinstance(source, pd.DataFrame)
+        and str(source) != "-"
+        and str(source).endswith((".xlsx", ".xlsm"))
+    ):
         decided = read_decisions(source)
     corrected, notes = apply_decisions(table, decided, book)
     return Reading(table, gather(corrected), decided, book, notes)

@@ -111,7 +111,10 @@ def support(chosen: Chosen, method: str | None, level: float) -> None:
             standardizer_of(route.standardizer, design) if chosen.metric in STANDARDIZED else "pooled"
         )
         steps = chosen.engine.all_steps(route)
-        known = {*steps, *(q for q, found in reachable.items() if any(r.grade is not Grade.BOUND for r in found))}
+        known = {
+            *steps,
+            *(q for q, found in reachable.items() if any(r.grade is not Grade.BOUND for r in found)),
+        }
         variance = _first_served(variances_of(chosen.metric, method, design, standardizer), known)
         limits = _first_served(limits_of(chosen.metric, design, standardizer), known)
         further: dict[str, Route] = {}

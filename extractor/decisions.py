@@ -31,7 +31,9 @@ SHEET = "decisions"
 COLUMNS = ("row", "cell", "decision", "value", "source", "by", "on", "why")
 KEEP, CORRECT, WAIVE = WORDS = ("keep", "correct", "waive")
 _NEEDED = {KEEP: ("by",), CORRECT: ("cell", "value", "source", "by"), WAIVE: ("by", "why")}
-_ADDRESS = re.compile(r"\$?(?P<column>[A-Za-z]{1,3})\$?(?P<row>[1-9][0-9]{0,9})|row (?P<only>[1-9][0-9]{0,9})")
+_ADDRESS = re.compile(
+    r"\$?(?P<column>[A-Za-z]{1,3})\$?(?P<row>[1-9][0-9]{0,9})|row (?P<only>[1-9][0-9]{0,9})"
+)
 _NAMED = re.compile(r"(?P<heading>.*?)\s*\[(?P<address>[^\[\]]*)\]")
 _LONGEST = 1000
 """Longer cells hold more than a heading and its address."""

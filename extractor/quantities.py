@@ -184,11 +184,21 @@ _OTHER = [
     _scalar("h_value", "H", "Kruskal-Wallis H", 0.0),
     _scalar("u_value", "U", "Mann-Whitney U", 0.0),
     _scalar("z_value", "z", "normal deviate of a test"),
-    _scalar("chi_squared", "χ²", "chi-square statistic of a 2 x 2 table, one df, without continuity correction", 0.0),
+    _scalar(
+        "chi_squared",
+        "χ²",
+        "chi-square statistic of a 2 x 2 table, one df, without continuity correction",
+        0.0,
+    ),
     _scalar("homogeneity_p", "p_hom", "p value of a test of equal variances", 0.0, 1.0),
     *(
         _count(f"count_{cell}", cell, f"participants of group {group} {event} the event")
-        for cell, group, event in (("a", 1, "with"), ("b", 1, "without"), ("c", 2, "with"), ("d", 2, "without"))
+        for cell, group, event in (
+            ("a", 1, "with"),
+            ("b", 1, "without"),
+            ("c", 2, "with"),
+            ("d", 2, "without"),
+        )
     ),
     _scalar("rank_sum", "W", "sum of the ranks of group 1 (Wilcoxon)", 0.0),
     _scalar("signed_rank_sum", "T", "smaller sum of the signed ranks of pairs (Wilcoxon)", 0.0),

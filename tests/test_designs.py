@@ -34,7 +34,10 @@ def test_every_step_of_every_route_holds_in_the_design(seed: int) -> None:
     ("design", "refused"),
     [
         ("factorial", ("eta_squared", "omega_squared", "epsilon_squared", "cohens_d", "hedges_g", "r")),
-        ("within", ("eta_squared", "omega_squared", "epsilon_squared", "cohens_d", "generalized_eta_squared")),
+        (
+            "within",
+            ("eta_squared", "omega_squared", "epsilon_squared", "cohens_d", "generalized_eta_squared"),
+        ),
         ("mixed", ("eta_squared", "omega_squared", "epsilon_squared", "cohens_d", "generalized_eta_squared")),
         ("ancova", ("eta_squared", "omega_squared", "epsilon_squared", "cohens_d", "hedges_g")),
         ("one-way", ("cohens_d", "hedges_g", "r", "fisher_z", "log_odds_ratio", "mean_difference")),
@@ -42,7 +45,9 @@ def test_every_step_of_every_route_holds_in_the_design(seed: int) -> None:
 )
 def test_f_with_two_dfs_gives_only_what_it_says(design: str, refused: tuple[str, ...]) -> None:
     """NEEDS of the trade: a factorial, within or adjusted F is not a one-way F (Olejnik & Algina 2003)."""
-    row = pd.DataFrame([{"design": design, "f_value": "4.31", "df_effect": "2", "df_error": "57", "n_total": "60"}])
+    row = pd.DataFrame(
+        [{"design": design, "f_value": "4.31", "df_effect": "2", "df_error": "57", "n_total": "60"}]
+    )
     for metric in METRICS:
         status = extractor.convert(row, to=metric).effects["status"][0]
         assert (status == "blocked") == (metric in refused or _signed_or_whole(metric, design)), metric

@@ -98,7 +98,9 @@ def why_no_route(metric: str, design: str, reported: frozenset[str], opened_by: 
 
 
 _NO_VALUE = "the printed numbers give no possible value: they contradict each other or the design"
-_SKEWED = "medians and quartiles or extremes are visibly skewed, so that no mean and SD are estimated from them"
+_SKEWED = (
+    "medians and quartiles or extremes are visibly skewed, so that no mean and SD are estimated from them"
+)
 _ONE_SIZE = "an LSD or HSD is one number for all pairs only when groups are of equal size"
 _CUT = "an adjusted p of 1 may have been cut there"
 

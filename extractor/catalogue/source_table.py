@@ -70,13 +70,27 @@ def total_sum(ss_effect: FloatArray, ss_error: FloatArray) -> FloatArray:
     return ss_effect + ss_error
 
 
-@relation(gives="ss_effect", rising=["ss_total"], falling=["ss_error"], designs=ONE_FACTOR, accuracy=1e-11, source=_SUM)
+@relation(
+    gives="ss_effect",
+    rising=["ss_total"],
+    falling=["ss_error"],
+    designs=ONE_FACTOR,
+    accuracy=1e-11,
+    source=_SUM,
+)
 def effect_sum_from_total(ss_total: FloatArray, ss_error: FloatArray) -> FloatArray:
     """SS_effect = SS_total - SS_error."""
     return ss_total - ss_error
 
 
-@relation(gives="ss_error", rising=["ss_total"], falling=["ss_effect"], designs=ONE_FACTOR, accuracy=1e-11, source=_SUM)
+@relation(
+    gives="ss_error",
+    rising=["ss_total"],
+    falling=["ss_effect"],
+    designs=ONE_FACTOR,
+    accuracy=1e-11,
+    source=_SUM,
+)
 def error_sum_from_total(ss_total: FloatArray, ss_effect: FloatArray) -> FloatArray:
     """SS_error = SS_total - SS_effect."""
     return ss_total - ss_effect

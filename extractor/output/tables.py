@@ -27,9 +27,7 @@ _CHUNK = 20_000
 _NUMBER = re.compile(r"[+-]?(?:[0-9]+(?:\.[0-9]*)?|\.[0-9]+)(?:[eE][+-]?[0-9]+)?")
 _SIGN = "[=+\\-@＝＋－＠]"
 """What a formula begins with, in the width of East Asian keyboards too."""
-_FORMULA = re.compile(
-    rf"\A(?=[\t\r\n]|[\s\x00-\x1f\u200b\ufeff]*{_SIGN})|(?<=[;\t\r\n])(?={_SIGN})"
-)
+_FORMULA = re.compile(rf"\A(?=[\t\r\n]|[\s\x00-\x1f\u200b\ufeff]*{_SIGN})|(?<=[;\t\r\n])(?={_SIGN})")
 _QUOTED = re.compile(r'[",;|\t\r\n]|\A\s|\s\Z')
 _STATA_NAME = 32
 _STATA_TEXT = 2045

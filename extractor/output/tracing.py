@@ -117,8 +117,7 @@ class _Branches:
     def _cells(self, lines: pd.DataFrame) -> list[str]:
         """The cells of a reported quantity, each once."""
         found = [
-            str(line["cell"]).removeprefix(f"{line['quantity']} in ")
-            for line in lines.to_dict("records")
+            str(line["cell"]).removeprefix(f"{line['quantity']} in ") for line in lines.to_dict("records")
         ]
         return list(dict.fromkeys(found))
 

@@ -10,8 +10,8 @@ import pandas as pd
 from extractor.api import Result
 from extractor.catalogue.relation import catalogue
 from extractor.output.cells import understood
-from extractor.recorded import recorded_cells
 from extractor.output.tables import as_json, records
+from extractor.recorded import recorded_cells
 from extractor.table import ReportedTable
 
 _CHUNK = 2_000
@@ -60,7 +60,12 @@ def _rows(result: Result) -> Iterator[dict[str, object]]:
         about = records(part[["row", "metric", "status", "estimate"]])
         for at, (record, own, others) in enumerate(zip(about, steps, alternatives, strict=True)):
             taken = [_step(step, table, start + at) for step in own]
-            yield {**record, "cells": cells[start + at], "steps": taken, "alternatives": [_without_row(other) for other in others]}
+            yield {
+                **record,
+                "cells": cells[start + at],
+                "steps": taken,
+                "alternatives": [_without_row(other) for other in others],
+            }
 
 
 def _by_row(lines: pd.DataFrame, part: pd.DataFrame) -> Iterator[list[dict[str, object]]]:

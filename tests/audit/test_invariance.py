@@ -37,7 +37,9 @@ def _said(findings: list[Finding]) -> list[tuple[object, ...]]:
 
 def _planted(kind: str, seed: int) -> ReportedTable:
     reported = table(plant(kind, np.random.default_rng(seed), ROWS).sheet)
-    return replace(reported, facts={**reported.facts, "study": np.arange(reported.rows).astype(str).astype(object)})
+    return replace(
+        reported, facts={**reported.facts, "study": np.arange(reported.rows).astype(str).astype(object)}
+    )
 
 
 @given(kinds, seeds)
@@ -46,7 +48,8 @@ def test_order_of_rows(kind: str, seed: int) -> None:
     reported = _planted(kind, seed)
     order = np.random.default_rng(seed).permutation(reported.rows)
     numbers = {
-        v: Numbers(**{a: getattr(n, a)[order] for a in _ARRAYS}, place=n.place) for v, n in reported.numbers.items()
+        v: Numbers(**{a: getattr(n, a)[order] for a in _ARRAYS}, place=n.place)
+        for v, n in reported.numbers.items()
     }
     facts = {name: words[order] for name, words in reported.facts.items()}
     shuffled = replace(reported, numbers=numbers, facts=facts, row_numbers=reported.row_numbers[order])

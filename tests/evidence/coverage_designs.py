@@ -86,7 +86,9 @@ def pairs(rng: np.random.Generator, draws: int) -> Iterator[Line]:
                 )  # fmt: skip
                 true_z = delta / np.sqrt(2 * (1 - r))
                 # exact moments take delta as g estimates it, so the truth enters uncorrected
-                at_truth = difference.difference_exact(np.array(true_z) / small_sample_factor(n - 1), np.array(n))
+                at_truth = difference.difference_exact(
+                    np.array(true_z) / small_sample_factor(n - 1), np.array(n)
+                )
                 yield _line(
                     "d_z", case, true_z, d_z, difference.difference_exact(d_z, size),
                     difference.difference_limits(d_z, size, 0.95), float(at_truth), exact=True,

@@ -1,6 +1,6 @@
 """Writes the demo's expected outputs, which a test compares with a fresh run.
 
-    python -m tests.evidence.expected
+python -m tests.evidence.expected
 """
 
 from __future__ import annotations

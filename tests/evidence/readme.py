@@ -1,7 +1,7 @@
 """The terminal output shown in README.md, made by running the commands it shows.
 
-    python -m tests.evidence.readme          compares and says what differs
-    python -m tests.evidence.readme --write  puts the output of each command under it
+python -m tests.evidence.readme          compares and says what differs
+python -m tests.evidence.readme --write  puts the output of each command under it
 """
 
 from __future__ import annotations
@@ -22,7 +22,9 @@ def output_of(words: str) -> str:
     """What a command prints, at a fixed width and without colour."""
     environment = {**os.environ, "COLUMNS": "110", "NO_COLOR": "1", "PYTHONIOENCODING": "utf-8"}
     command = [sys.executable, "-m", "extractor", *shlex.split(words)]
-    done = subprocess.run(command, cwd=ROOT, env=environment, capture_output=True, encoding="utf-8", check=True)
+    done = subprocess.run(
+        command, cwd=ROOT, env=environment, capture_output=True, encoding="utf-8", check=True
+    )
     return "\n".join(line.rstrip() for line in done.stdout.splitlines()) + "\n"
 
 
@@ -42,7 +44,9 @@ def main(argv: list[str]) -> int:
     if "--write" in argv:
         README.write_text(now, encoding="utf-8")
         return 0
-    print("README.md shows what the commands print" if now == text else "README.md is stale: run with --write")
+    print(
+        "README.md shows what the commands print" if now == text else "README.md is stale: run with --write"
+    )
     return int(now != text)
 
 

@@ -167,7 +167,11 @@ def test_an_interrupt_while_computing(
 @pytest.mark.parametrize("existing", [False, True])
 @pytest.mark.parametrize("after", [1, 2, 5, 8])
 def test_an_interrupt_while_files_change_places(
-    tmp_path: Path, convert: Callable[..., Result], monkeypatch: pytest.MonkeyPatch, after: int, existing: bool
+    tmp_path: Path,
+    convert: Callable[..., Result],
+    monkeypatch: pytest.MonkeyPatch,
+    after: int,
+    existing: bool,
 ) -> None:
     """Whatever step is the last one before the interrupt, the folder is the old one or the new one."""
     if existing:
