@@ -21,6 +21,8 @@ from extractor.table import BoolArray
 _NEAR = 1e-9
 _SHRINKS = 1e-3
 _ROUNDS = 40
+_WORTH_DROPPING = 0.7
+"""Rows that are done with are dropped when fewer than this share are left."""
 
 
 @dataclass(slots=True)
@@ -49,34 +51,89 @@ def judges_of(design: str) -> tuple[Relation, ...]:
     return tuple(r for _, r in sorted(catalogue().items()) if design in r.designs and r.judges)
 
 
+@lru_cache(maxsize=64)
+def _tiers(design: str) -> tuple[tuple[Relation, ...], tuple[Relation, ...]]:
+    """The relations that give something new, and those that only narrow: costly, and seldom what empties a row."""
+    judges = judges_of(design)
+    return tuple(r for r in judges if r.routes), tuple(r for r in judges if not r.routes)
+
+
 def propagate(design: str, domain: Domain) -> BoolArray:
-    """Narrow ``domain`` in place to a fixpoint; True in the rows where an interval became empty, shape (rows,)."""
+    """Narrow ``domain`` in place to a fixpoint; True in the rows where an interval became empty, shape (rows,).
+
+    A row is done with once it is empty; its intervals then mean nothing.
+    """
     rows = len(next(iter(domain.low.values())))
     empty = np.zeros(rows, dtype=bool)
     for quantity in domain.low:
         empty |= _any(domain.low[quantity] > domain.high[quantity])
-    version = dict.fromkeys(domain.low, 1)
-    done: dict[str, int] = {}
-    clock = 1
+    work = _Work(design, domain)
+    left = np.arange(rows)
     for _ in range(_ROUNDS):
-        moved = False
-        for relation in judges_of(design):
-            if any(need not in version for need in relation.needs):
-                continue
-            if max(version[need] for need in relation.needs) <= done.get(relation.name, 0):
-                continue
-            done[relation.name] = clock
-            changed = _contract(relation, domain)
-            if changed is None:
-                continue
-            empty |= _any(domain.low[relation.gives] > domain.high[relation.gives])
-            if (changed & ~empty).any():
-                clock += 1
-                version[relation.gives] = clock
-                moved = True
-        if not moved:
+        for tier in _tiers(design):
+            gone = work.narrow(tier, empty[left])
+            empty[left] |= gone
+            alive = ~empty[left]
+            if alive.sum() < _WORTH_DROPPING * len(left):
+                left = left[alive]
+                work.domain = work.domain.take(alive)
+                if not len(left):
+                    return empty
+        if not work.moved:
             break
+    if len(left) < rows:
+        _spread(work.domain, domain, left, rows)
     return empty
+
+
+class _Work:
+    """A domain being narrowed, with what has changed since each relation last ran."""
+
+    def __init__(self, design: str, domain: Domain) -> None:
+        self.design, self.domain = design, domain
+        self.version = dict.fromkeys(domain.low, 1)
+        self.done: dict[str, int] = {}
+        self.clock = 1
+        self.moved = False
+
+    def narrow(self, tier: tuple[Relation, ...], empty: BoolArray) -> BoolArray:
+        """Run the relations of a tier until none of them changes anything; True in the rows that became empty."""
+        empty = empty.copy()
+        self.moved = False
+        for _ in range(_ROUNDS):
+            again = False
+            for relation in tier:
+                if any(need not in self.version for need in relation.needs):
+                    continue
+                if max(self.version[need] for need in relation.needs) <= self.done.get(relation.name, 0):
+                    continue
+                self.done[relation.name] = self.clock
+                changed = _contract(relation, self.domain)
+                if changed is None:
+                    continue
+                low, high = self.domain.pair(relation.gives)
+                empty |= _any(low > high)
+                if (changed & ~empty).any():
+                    self.clock += 1
+                    self.version[relation.gives] = self.clock
+                    self.moved = again = True
+            if not again:
+                break
+        return empty
+
+
+def _spread(narrowed: Domain, domain: Domain, left: NDArray[np.intp], rows: int) -> None:
+    """Put the rows that were left back among all rows."""
+    for ends, into, side in ((narrowed.low, domain.low, "low"), (narrowed.high, domain.high, "high")):
+        for quantity, values in ends.items():
+            known = into.get(quantity)
+            if known is None:
+                support = getattr(VOCABULARY[quantity], side)
+                whole = np.full((rows, *values.shape[1:]), support)
+            else:
+                whole = known.copy()
+            whole[left] = values
+            into[quantity] = whole
 
 
 def _contract(relation: Relation, domain: Domain) -> BoolArray | None:

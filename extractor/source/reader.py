@@ -92,6 +92,10 @@ def _all(stream: IO[bytes], name: str) -> bytes:
 
 def _from_frame(frame: pd.DataFrame) -> Grid:
     """The cells of a frame; its first row counts as row 2, below the headings."""
+    if frame.shape[1] > MOST_COLUMNS:
+        raise UnreadableInput(
+            f"the data frame has more than {MOST_COLUMNS} columns; no spreadsheet has so many"
+        )
     columns: list[ObjectArray] = []
     filled = np.zeros(len(frame), dtype=bool)
     for position in range(frame.shape[1]):
@@ -103,10 +107,6 @@ def _from_frame(frame: pd.DataFrame) -> Grid:
         filled |= np.fromiter((not is_blank(value) for value in column), dtype=bool, count=len(frame))
     if not filled.any():
         raise UnreadableInput("the data frame has no rows with a value")
-    if len(columns) > MOST_COLUMNS:
-        raise UnreadableInput(
-            f"the data frame has more than {MOST_COLUMNS} columns; no spreadsheet has so many"
-        )
     kept = np.flatnonzero(filled)
     return Grid(
         source="data frame",

@@ -94,7 +94,7 @@ def _sheets(members: dict[str, bytes]) -> None:
     members["xl/workbook.xml"] = members["xl/workbook.xml"].replace(b"</sheets>", many + b"</sheets>", 1)
 
 
-_BOMBS: tuple[Callable[[dict[str, bytes]], None], ...] = (
+BOMBS: tuple[Callable[[dict[str, bytes]], None], ...] = (
     _far_row,
     _far_cells,
     _deep,
@@ -107,7 +107,7 @@ _BOMBS: tuple[Callable[[dict[str, bytes]], None], ...] = (
     _merges,
 )
 """Those that are made in no time."""
-_HEAVY_BOMBS = (_big_member, _big_text)
+HEAVY_BOMBS = (_big_member, _big_text)
 
 
 @fault("bombs in a workbook")
@@ -115,6 +115,6 @@ def bombs(source: random.Random, folder: Path) -> Hostile:
     """A small file that would take all memory or all day."""
     book, _ = book_of(source)
     members = saved(book)
-    bomb = source.choice(_HEAVY_BOMBS) if source.random() < 0.02 else source.choice(_BOMBS)
+    bomb = source.choice(HEAVY_BOMBS) if source.random() < 0.02 else source.choice(BOMBS)
     bomb(members)
     return write(folder, members)
