@@ -41,7 +41,7 @@ COLUMNS = [
     "reason",
     "findings",
 ]
-_SCOPED = frozenset({"contrast_weight", "direction", "k_groups", "tails", "confidence_level"})
+_SCOPED = frozenset({"contrast_weight", "direction", "k_groups", "tails", "confidence_level", "one_factor"})
 """Leaves that are coded facts or consequences of them: a row that has only these reports nothing."""
 
 
@@ -247,7 +247,7 @@ class _Effects:
 
 def route_words(leaves: frozenset[str], metric: str) -> str:
     """A route in one cell: what it starts from and where it leads."""
-    shown = sorted(leaf for leaf in leaves if leaf not in ("contrast_weight", "k_groups"))
+    shown = sorted(leaf for leaf in leaves if leaf not in ("contrast_weight", "k_groups", "one_factor"))
     return f"{', '.join(shown)} -> {metric}"
 
 

@@ -106,6 +106,7 @@ class _Gathering:
         self.table = table
         self.rows = table.rows
         self.coding = Coding(table)
+        self.joint = self._joint_term()
         self.numbers = {v: n for v, n in table.numbers.items() if VOCABULARY[v[0]].role is Role.REPORTED}
         self.use = {v: usable(VOCABULARY[v[0]], n) for v, n in self.numbers.items()}
         self.groups = self._coded_groups()
@@ -158,7 +159,7 @@ class _Gathering:
         highest = np.where(two & (highest == 1), 2.0, highest)
         # conditions of a model with several within factors are cells, not levels of the row's own factor
         several = (self.table.fact("design") == "within") & (
-            (terms_per_row(self.table, self.table.fact("design")) > 1) | self._joint_term()
+            (terms_per_row(self.table, self.table.fact("design")) > 1) | self.joint
         )
         self.coding.remark(
             several & (highest > 0), "conditions of a model with several terms are not used here"
@@ -176,7 +177,7 @@ class _Gathering:
         The interaction of a factorial design has none unless its cells are coded, and of a mixed design only the
         interaction is a difference of changes.
         """
-        joint, termed = self._joint_term(), self.table.fact("term") != ""
+        joint, termed = self.joint, self.table.fact("term") != ""
         celled = np.isin(self.table.fact("analysis"), list(self.table.cells))
         interaction = (self.design == "factorial") & joint & ~celled
         main = (self.design == "mixed") & ~joint & termed
@@ -221,6 +222,7 @@ class _Gathering:
         columns = sorted(self.use, key=lambda v: (v[0], v[1] or 0))
         words = (np.unique(w.astype(str), return_inverse=True)[1] for w in (self.design, self.standardizer))
         facts = (
+            self.joint,
             self.groups,
             ~np.isnan(self.direction),
             self.compared,
@@ -352,6 +354,8 @@ class _Gathering:
         count = coded_k(block)
         if count:
             block.leaves.setdefault("k_groups", _certain(np.full(len(rows), count)))
+        if not self.joint[first]:
+            block.leaves["one_factor"] = _certain(np.ones(len(rows)))
         if block.design == "pre-post-control":
             block.leaves.setdefault("df_effect", _certain(np.ones(len(rows))))
         if "p_value" in block.leaves and self.f_test[first] and "tails" not in block.leaves:

@@ -154,7 +154,7 @@ def _apart(
 
 
 _SAID = {"n": "ns", "mean": "means", "sd": "SDs", "se": "SEs", "df_effect": "dfs", "df_error": "dfs"}
-_UNSAID = frozenset({"contrast_weight", "k_groups", "tails", "direction"})
+_UNSAID = frozenset({"contrast_weight", "k_groups", "tails", "direction", "one_factor"})
 
 
 def _evidence(design: str, known: frozenset[str], cell: Cell, named: set[str]) -> str:

@@ -218,6 +218,22 @@ def one_tailed(constraints: Constraints) -> Iterator[Repair]:
 
 
 @_kind
+def another_test(constraints: Constraints) -> Iterator[Repair]:
+    """A statistic and its p from another test than the coded one: a suspicion, since any two numbers would fit."""
+    for name in ("f_value", "t_value"):
+        for cell in _cells(constraints, name):
+            for companion in (*_cells(constraints, "p_value"), *_cells(constraints, "p_contrast")):
+                free = np.full(constraints.rows, -np.inf), np.full(constraints.rows, np.inf)
+                yield _repair(
+                    constraints,
+                    "another test",
+                    "statistic and p of another test",
+                    {cell: free, companion: free},
+                    share=np.ones(constraints.rows),
+                )
+
+
+@_kind
 def mislabelled_index(constraints: Constraints) -> Iterator[Repair]:
     """One index of explained variance printed under the name of another."""
     one_factor = constraints.design in ONE_FACTOR

@@ -175,9 +175,12 @@ def one_observation_each(n_total: FloatArray) -> FloatArray:
 @relation(
     gives="n_observations",
     rising=["n_total", "df_effect"],
+    exact=["one_factor"],
     designs=PAIRED | WITHIN,
     source="one observation of each participant at each level of the factor",
 )
-def one_observation_per_level(n_total: FloatArray, df_effect: FloatArray) -> FloatArray:
-    """N_obs = N·(df1 + 1)."""
-    return n_total * (df_effect + 1)
+def one_observation_per_level(
+    n_total: FloatArray, df_effect: FloatArray, one_factor: FloatArray
+) -> FloatArray:
+    """N_obs = N·(df1 + 1), of a term that is one factor."""
+    return n_total * (df_effect + 1) * one_factor
