@@ -205,7 +205,8 @@ class _Assembly:
             return "", read_number(raw, VOCABULARY["f_value"]).problem
         if isinstance(raw, (datetime.date, datetime.time)):
             return str(raw), f"the cell holds a date or time: {DATE_ADVICE}"
-        text = heading_text(raw).strip()
+        # fixed-width arrays of words lose a NUL at the end, so that two words would become one
+        text = heading_text(raw).replace("\x00", "").strip()
         plain = tidy(text)
         if name in _SIGNED and plain in _SIGNS:
             return _SIGNS[plain], ""

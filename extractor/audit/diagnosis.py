@@ -18,6 +18,7 @@ from numpy.typing import NDArray
 from extractor.audit.constraints import Cell, Constraints
 from extractor.audit.propagation import Domain, propagate
 from extractor.catalogue.relation import Interval
+from extractor.catalogue.solving_for_groups import MOST_GROUPS
 from extractor.quantities import VOCABULARY
 from extractor.table import BoolArray, FloatArray
 
@@ -28,6 +29,8 @@ _BATCH = 40_000
 _REACHES = np.array([1.0, 16.0, 256.0, 4096.0])
 _BETWEEN = np.array([0.25, 0.5, 0.75])
 _REFINEMENTS = 2
+_MOST_COUPLES = 100
+"""Pairs of cells of two quantities beyond which only the quantities are looked at."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -107,7 +110,7 @@ def suspects(constraints: Constraints) -> tuple[list[Suspect], dict[str, BoolArr
             continue
         if len(cells) == 1:
             found[cells[0]] = Suspect(cells[0], trial.consistent, *interval_of(trial.narrowed, cells[0]))
-        else:
+        elif len(cells) <= MOST_GROUPS:
             single.extend((cell, np.flatnonzero(trial.consistent)) for cell in cells)
     apart = attempt(constraints.design, ((rows, constraints.freed([cell])) for cell, rows in single))
     for (cell, rows), trial in zip(single, apart, strict=True):
@@ -142,7 +145,8 @@ def pairs(constraints: Constraints, rows: NDArray[np.intp]) -> list[tuple[Cell, 
     couples: list[tuple[Cell, Cell, NDArray[np.intp]]] = []
     for (one, other), trial in zip(coarse, trials, strict=True):
         left = rows[trial.consistent]
-        for i, first in enumerate(by_name[one]) if len(left) else ():
+        few = len(by_name[one]) * len(by_name[other]) <= _MOST_COUPLES
+        for i, first in enumerate(by_name[one]) if len(left) and few else ():
             rest = by_name[other] if one != other else by_name[one][i + 1 :]
             couples.extend((first, second, left) for second in rest)
     fine = attempt(constraints.design, ((left, constraints.freed([a, b])) for a, b, left in couples))

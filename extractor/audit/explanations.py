@@ -18,6 +18,7 @@ from extractor.audit.propagation import Domain, judges_of
 from extractor.audit.welch import welch_marks
 from extractor.catalogue.branches import square_image
 from extractor.catalogue.relation import ONE_FACTOR, Interval, Relation
+from extractor.catalogue.solving_for_groups import MOST_GROUPS
 from extractor.quantities import VOCABULARY
 from extractor.table import BoolArray, FloatArray
 from extractor.words import listed
@@ -370,7 +371,8 @@ def before_exclusions(constraints: Constraints) -> Iterator[Repair]:
 @_kind
 def swapped_sizes(constraints: Constraints) -> Iterator[Repair]:
     """Two groups' ns changed places."""
-    couples = list(combinations(_cells(constraints, "n"), 2))
+    cells = _cells(constraints, "n")
+    couples = list(combinations(cells, 2)) if len(cells) <= MOST_GROUPS else []
     for first, second in couples:
         one, two = constraints.interval(first), constraints.interval(second)
         yield _repair(

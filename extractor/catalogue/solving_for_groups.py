@@ -12,6 +12,8 @@ _POOLED = "SS_error = Σ (n_j - 1)·SD_j², solved for one group (textbook ident
 _TOTAL = "N = Σ n_j, solved for one group"
 _CONTRAST = "definition of a contrast of means, solved for one group"
 _WIDEN = 1e-9
+MOST_GROUPS = 30
+"""Above this many groups no single mean is solved for: the work grows with the cube of their number."""
 
 
 def _others(values: FloatArray, group: int) -> FloatArray:
@@ -20,6 +22,8 @@ def _others(values: FloatArray, group: int) -> FloatArray:
 
 def _mean_image(mean: Interval, n: Interval, ss_effect: Interval) -> Interval:
     low, high = np.array(mean[0]), np.array(mean[1])
+    if low.shape[1] > MOST_GROUPS:
+        return np.full_like(low, -np.inf), np.full_like(high, np.inf)
     for j in range(low.shape[1]):
         rest_low, rest_high = _others(mean[0], j), _others(mean[1], j)
         size_low, size_high = _others(n[0], j), _others(n[1], j)
