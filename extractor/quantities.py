@@ -290,7 +290,7 @@ _INNER = [
     _inner("cells_df_error", "df2", "degrees of freedom within cells", 0.0, integer=True),
     _inner("cells_n_total", "N", "participants in all cells", 0.0, integer=True),
     _inner(
-        "one_factor", "1", "1 where the term is one factor, whose levels are df1 + 1", 1.0, 1.0, exact=True
+        "one_factor", "1", "1 where the term is one factor, whose levels are df1 + 1", 0.0, 1.0, exact=True
     ),
     _inner("sd_difference", "SD_diff", "standard deviation of the difference scores", 0.0),
     _inner("average_sd", "s_av", "root of the mean of the two variances", 0.0),

