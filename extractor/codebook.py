@@ -18,6 +18,7 @@ from extractor.codebook_rules import Checker, nearest
 from extractor.errors import InvalidCodebook
 from extractor.quantities import DESIGNS, FACTS, VOCABULARY, Role, Shape
 from extractor.reading import ROUNDINGS, quoted, spelled_missing
+from extractor.reported import MOST_COUNTED
 from extractor.table import Assumption, Variable
 
 Meaning = Variable | str
@@ -266,6 +267,8 @@ def _missing(check: Checker, value: object) -> frozenset[str]:
         raise check.fail(("missing",), 'must be a list such as ["NA", "-99"]')
     if not all(isinstance(code, (str, int, float)) and not isinstance(code, bool) for code in value):
         raise check.fail(("missing",), "must hold texts or numbers only")
+    if any(isinstance(code, int) and abs(code) > MOST_COUNTED for code in value):
+        raise check.fail(("missing",), "holds a number that no cell can hold")
     return frozenset(spelled_missing(code) for code in value)
 
 

@@ -39,6 +39,7 @@ __all__ = ["BLANK", "ROUNDINGS", "CellError", "Reading", "UncachedFormula", "rea
 PROBABILITIES = frozenset({"p_value", "homogeneity_p"})
 CUT_AT_ZERO = frozenset({"omega_squared", "partial_omega_squared", "epsilon_squared", "rank_epsilon_squared"})
 """Estimates that can be negative and are often printed as zero then."""
+_MAY_BE_TINY = PROBABILITIES | {"adjusted_p"}
 STATED = frozenset({"confidence_level", "scale_min", "scale_max"})
 """Set by a design rather than measured, hence exact as printed."""
 _MAY_BE_FRACTIONAL = frozenset({"df", "df_effect", "df_error"})
@@ -48,6 +49,8 @@ LONGEST = 200
 """Longer cells hold prose, not a number."""
 MOST_COUNTED = 2**53
 """Above it, floating point numbers leave whole numbers out."""
+LARGEST, SMALLEST = Decimal("1e50"), Decimal("1e-50")
+"""No statistic but a p is printed beyond these; within them products of several stay within what doubles hold."""
 TYPED_DIGITS = 12
 """A stored number with more significant digits was computed, not typed."""
 
@@ -100,10 +103,23 @@ def _plain(number: Decimal) -> str:
     return f"{number:f}".removeprefix("0") or "0"
 
 
+def _beyond(value: Decimal, decimals: int, to: _Setting) -> str:
+    """Why a number cannot be one that an article prints; "" where it can."""
+    size = abs(value)
+    if to.quantity.integer and size > MOST_COUNTED:
+        return f"{value:.6g} is more than any study counts"
+    if size > LARGEST:
+        return f"{value:.6g} is larger than any printed statistic"
+    tiny = 0 < size < SMALLEST or Decimal(1).scaleb(-decimals) < SMALLEST
+    if tiny and to.name not in _MAY_BE_TINY:
+        return f"{value:.6g} is smaller, or more exact, than any printed statistic"
+    return ""
+
+
 def _printed(value: Decimal, decimals: int, notes: tuple[str, ...], to: _Setting) -> Reading:
     """The reading of a number printed with ``decimals`` decimals (negative: to tens, hundreds)."""
-    if to.quantity.integer and abs(value) > MOST_COUNTED:
-        return refuse(f"{value:.6g} is more than any study counts")
+    if beyond := _beyond(value, decimals, to):
+        return refuse(beyond)
     number, shown = float(value) + 0.0, max(decimals, 0)
     if to.name in STATED or (to.quantity.exact and decimals == 0):
         return Reading(number, number, number, 0.0, shown, "=", "; ".join(notes))
@@ -126,8 +142,8 @@ def _bound(value: Decimal, decimals: int, relation: str, notes: tuple[str, ...],
     if comparator == "<" and to.name in PROBABILITIES and value == 0:
         notes = (*notes, f"no p is below zero; read as p < {_plain(unit)}")
         value = unit
-    if to.quantity.integer and abs(value) > MOST_COUNTED:
-        return refuse(f"{value:.6g} is more than any study counts")
+    if beyond := _beyond(value, decimals, to):
+        return refuse(beyond)
     below, above = outward(value, value)
     low, high = (to.quantity.low, above) if comparator == "<" else (below, to.quantity.high)
     if low > high:
@@ -253,7 +269,8 @@ def _read_stored(raw: int | float, number_format: str | None, to: _Setting) -> R
     if to.whole and held == 0:
         return _printed(value, 0, (), to)
     if isinstance(raw, float) and len(digits.digits) > TYPED_DIGITS:
-        return _computed(raw, shown, to)
+        beyond = _beyond(value, 0, to)
+        return refuse(beyond) if beyond else _computed(raw, shown, to)
     places = held
     notes: tuple[str, ...] = ()
     if shown.display is Display.NUMBER:

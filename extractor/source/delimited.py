@@ -76,7 +76,7 @@ def from_text(content: bytes, name: str, suffix: str, known: Known) -> Grid:
     text, notes = _decode(content, name)
     if not text.strip(" ,;\t\r\n"):
         raise UnreadableInput(f"{name} is empty; the first row must hold the headings")
-    declared = re.match(r'sep=([^\w"\s]|\t)\r?\n', text)
+    declared = re.match(r"sep=([!#-/:-@\[-`{-~\t])\r?\n", text)
     if declared is not None:
         # a line by which spreadsheet programs tell each other the delimiter; they do not show it as a row
         text, delimiter = text[declared.end() :], declared[1]

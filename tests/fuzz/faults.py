@@ -8,6 +8,7 @@ from collections.abc import Callable
 from dataclasses import dataclass
 from pathlib import Path
 
+from extractor.commands.options import FORMATS
 from extractor.quantities import METRICS
 from tests.fuzz.judging import CONVERTED, Case
 from tests.fuzz.seeds import ROWS
@@ -91,8 +92,16 @@ def case(name: str, seed: int, folder: Path) -> Case:
     else:
         out = folder.parent / "out"
         words = ["convert", *words, "--to", metric(source), "--out", str(out), *made.more]
-        for format_ in source.sample(("xlsx", "json", "dta"), source.choice((0, 0, 0, 1))):
+        for format_ in source.sample(("xlsx", "xlsx", *FORMATS), source.choice((0, 0, 1))):
             words += ["--format", format_]
+        if source.random() < 0.05:
+            words += ["--covariance", "--outcome-correlation", source.choice(("0.5", "1", "-1"))]
+        if source.random() < 0.02:
+            # a sheet without a single effect cannot be drawn
+            words, allowed = (
+                [*words, "--figure", str(folder / f"figure.{source.choice(('svg', 'png'))}")],
+                allowed | {2},
+            )
     if words[0] in ("convert", "audit") and source.random() < 0.1:
         words += ["--fail-on", source.choice(("impossible", "inconsistent", "doubtful"))]
         allowed = allowed | {3} if 0 in allowed else allowed

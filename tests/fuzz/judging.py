@@ -177,6 +177,9 @@ def _breach_of_file(path: Path, rows: int | None) -> str:
                 of_file = hashlib.sha256((path.parent / resource["path"]).read_bytes()).hexdigest()
                 if f"sha256:{of_file}" != resource["hash"]:
                     return f"{resource['path']} is not the file that was described"
+    elif path.suffix == ".html":
+        if "<script>alert(1)" in path.read_text(encoding="utf-8"):
+            return "a script of the sheet stands in the page"
     elif path.suffix == ".dta":
         pd.read_stata(path)
     elif path.suffix == ".csv":

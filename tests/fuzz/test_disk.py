@@ -90,7 +90,7 @@ class _Limited:
         return getattr(self.opened, name)
 
 
-@pytest.mark.parametrize("room", [0, 100, 700, 3_000, 10_000])
+@pytest.mark.parametrize("room", [0, 700, 10_000])
 @pytest.mark.parametrize("existing", [False, True])
 def test_a_full_disk(
     tmp_path: Path,
@@ -165,7 +165,7 @@ def test_an_interrupt_while_computing(
 
 
 @pytest.mark.parametrize("existing", [False, True])
-@pytest.mark.parametrize("after", [1, 2, 5, 8])
+@pytest.mark.parametrize("after", [1, 3, 8])
 def test_an_interrupt_while_files_change_places(
     tmp_path: Path,
     convert: Callable[..., Result],

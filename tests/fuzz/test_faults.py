@@ -16,7 +16,7 @@ from click.testing import CliRunner
 from tests.fuzz import catalogue
 from tests.fuzz.judging import BREACHES, CONVERTED, Case, judge
 
-SEEDS = range(8)
+SEEDS = range(4)
 
 
 @pytest.mark.skipif(sys.platform == "win32", reason="the time limit needs a signal")
