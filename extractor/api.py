@@ -10,18 +10,18 @@ import pandas as pd
 
 from extractor.audit.run import Audit, audit_evidence
 from extractor.codebook import Codebook, default_codebook, load_codebook
-from extractor.conversion import (
+from extractor.decisions import Decision, apply_decisions, mark, read_decisions
+from extractor.evidence import Evidence, gather
+from extractor.findings import Finding
+from extractor.groups_sheet import with_groups
+from extractor.routes.conversion import (
     Conversion,
     check_method,
     check_metric,
     check_standardizer,
     convert_evidence,
 )
-from extractor.decisions import Decision, apply_decisions, mark, read_decisions
-from extractor.derivations import alternatives_frame, steps_frame
-from extractor.evidence import Evidence, gather
-from extractor.findings import Finding
-from extractor.groups_sheet import with_groups
+from extractor.routes.derivations import alternatives_frame, steps_frame
 from extractor.sheet import read_table
 from extractor.table import ReportedTable
 

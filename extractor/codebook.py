@@ -16,9 +16,9 @@ from pathlib import Path
 
 from extractor.codebook_rules import Checker, nearest
 from extractor.errors import InvalidCodebook
+from extractor.printed.reading import ROUNDINGS, quoted, spelled_missing
+from extractor.printed.reported import MOST_COUNTED
 from extractor.quantities import DESIGNS, FACTS, VOCABULARY, Role, Shape
-from extractor.reading import ROUNDINGS, quoted, spelled_missing
-from extractor.reported import MOST_COUNTED
 from extractor.table import Assumption, Variable
 
 Meaning = Variable | str

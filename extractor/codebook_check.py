@@ -17,8 +17,8 @@ import pandas as pd
 
 from extractor.codebook import Codebook, canonical, normalised, parse_codebook
 from extractor.errors import InvalidCodebook
+from extractor.printed.reading import quoted
 from extractor.quantities import DESIGNS, group_heading
-from extractor.reading import quoted
 from extractor.table import Numbers, ReportedTable
 
 _WHOLE = ("assume.", "scale", "assume")

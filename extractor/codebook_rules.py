@@ -7,8 +7,8 @@ import re
 from collections.abc import Iterable, Mapping
 
 from extractor.errors import InvalidCodebook
+from extractor.printed.reading import quoted
 from extractor.quantities import close_matches
-from extractor.reading import quoted
 
 MOST_WORDS = 200
 """Headings of one key; each is compared with every column of a sheet."""

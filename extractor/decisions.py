@@ -18,9 +18,9 @@ from openpyxl.utils import get_column_letter
 from extractor.codebook import Codebook, normalised
 from extractor.errors import UnreadableInput
 from extractor.findings import Finding, Severity
+from extractor.printed.reading import Reading, quoted
+from extractor.printed.reported import read_number
 from extractor.quantities import VOCABULARY
-from extractor.reading import Reading, quoted
-from extractor.reported import read_number
 from extractor.source.grid import Grid, NoRows, heading_text, is_blank
 from extractor.source.reader import read_grid
 from extractor.source.workbook import sheet_names

@@ -14,9 +14,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from extractor.coding import NO_CONTRAST, Coding, leaf_of_d
-from extractor.engine import Estimate
-from extractor.planner import Start
 from extractor.quantities import DEFAULTS, VOCABULARY, Quantity, Role, Shape
+from extractor.routes.engine import Estimate
+from extractor.routes.planner import Start
 from extractor.study.cells import leaves_from_cells
 from extractor.study.terms import factors_of, sums_over_terms, terms_per_row
 from extractor.table import Assumption, BoolArray, FloatArray, Numbers, ObjectArray, ReportedTable, Variable

@@ -15,8 +15,8 @@ from numpy.typing import NDArray
 
 from extractor.codebook import MOST_GROUPS, Codebook
 from extractor.errors import UnreadableInput
+from extractor.printed.reading import quoted
 from extractor.quantities import VOCABULARY, Role, Shape
-from extractor.reading import quoted
 from extractor.sheet import read_table
 from extractor.source.columns import filled, take_rows
 from extractor.source.grid import NoRows

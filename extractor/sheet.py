@@ -15,12 +15,12 @@ import numpy as np
 import pandas as pd
 from openpyxl.utils import get_column_letter
 
-from extractor.apa import columns_from_text
 from extractor.codebook import MOST_GROUPS, RESPONSES, Codebook, Meaning, canonical_names, normalised
 from extractor.errors import UnreadableInput
+from extractor.printed.apa import columns_from_text
+from extractor.printed.reading import BLANK, Reading, is_missing, quoted, refuse, tidy
+from extractor.printed.reported import DATE_ADVICE, CellError, UncachedFormula, read_number
 from extractor.quantities import DESIGNS, VOCABULARY, Shape, group_heading
-from extractor.reading import BLANK, Reading, is_missing, quoted, refuse, tidy
-from extractor.reported import DATE_ADVICE, CellError, UncachedFormula, read_number
 from extractor.source.columns import Mask, factorized, filled, numbers_from, printed, take_rows
 from extractor.source.grid import Grid, ObjectArray, heading_text, is_blank
 from extractor.source.reader import read_grid

@@ -9,7 +9,7 @@ import numpy as np
 import pandas as pd
 from openpyxl import Workbook, load_workbook
 
-from extractor.reconcile import Reconciliation
+from extractor.coders.reconcile import Reconciliation
 
 TO = "hedges_g"
 SHEET = pd.DataFrame(

@@ -12,8 +12,8 @@ from extractor.api import read
 from extractor.codebook import Codebook, parse_codebook, ready_codebooks
 from extractor.codebook_check import faults, misreadable, pilot, text_of
 from extractor.commands.codebook import command
-from extractor.duplicates import duplicate_reports
 from extractor.errors import InvalidCodebook
+from extractor.overlap.duplicates import duplicate_reports
 
 FAULTY = """title = "pilot"
 desing = "one-way"

@@ -9,8 +9,8 @@ import pytest
 import extractor
 from extractor.catalogue.relation import catalogue
 from extractor.evidence import gather
-from extractor.planner import search
 from extractor.quantities import DESIGNS, METRICS
+from extractor.routes.planner import search
 from tests.evidence.honest import honest_sheet
 from tests.evidence.honest_designs import honest_design_sheet
 from tests.evidence.printing import table

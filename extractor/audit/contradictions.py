@@ -14,8 +14,8 @@ from extractor.audit.fits import LIKELY, Fit, fits_of
 from extractor.audit.propagation import judges_of, propagate
 from extractor.evidence import Block
 from extractor.findings import Finding, Severity
-from extractor.planner import Start, search
 from extractor.quantities import VOCABULARY
+from extractor.routes.planner import Start, search
 from extractor.table import ReportedTable
 from extractor.words import listed, plain, printed_text
 

@@ -14,8 +14,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from extractor.catalogue.relation import FloatArray, Interval, Relation, catalogue
-from extractor.intervals import image
 from extractor.quantities import VOCABULARY
+from extractor.routes.intervals import image
 from extractor.table import BoolArray
 
 _NEAR = 1e-9

@@ -14,10 +14,10 @@ from extractor.audit.homogeneity import unequal_variances
 from extractor.audit.models import shares_of_the_total, sums_of_squares_types
 from extractor.audit.plausibility import implausible, outlying
 from extractor.audit.support import unsupported
-from extractor.conversion import Conversion
-from extractor.double_counting import double_counted
 from extractor.evidence import Evidence
 from extractor.findings import Finding, Severity, frame
+from extractor.overlap.double_counting import double_counted
+from extractor.routes.conversion import Conversion
 
 Check = Callable[[Evidence], Iterator[Finding]]
 CHECKS: tuple[Check, ...] = (

@@ -10,7 +10,7 @@ from scipy import special
 from extractor.audit.constraints import Cell, Constraints
 from extractor.catalogue.branches import square_image
 from extractor.catalogue.relation import Interval, Relation
-from extractor.intervals import image
+from extractor.routes.intervals import image
 from extractor.table import BoolArray, FloatArray
 
 _DECADES = np.log(100)

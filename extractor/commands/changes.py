@@ -32,9 +32,9 @@ def command(old_dir: Path, new_dir: Path, out: Path | None, force: bool) -> None
     """
     if out is not None and out.exists() and not force:
         raise UsageError(f"'{out}' exists; choose another name, or --force to replace it")
-    from extractor.changes import compare
     from extractor.output import tables, teamwork, terminal
-    from extractor.runs import read_run
+    from extractor.runs.changes import compare
+    from extractor.runs.folder import read_run
 
     found = compare(read_run(old_dir), read_run(new_dir))
     if out is not None:

@@ -43,8 +43,8 @@ def command(file: Path, sheet: str | None) -> None:
     from extractor.api import read
     from extractor.codebook_check import misreadable, pilot
     from extractor.commands import running
-    from extractor.duplicates import duplicate_reports
     from extractor.output.cells import reading_notes
+    from extractor.overlap.duplicates import duplicate_reports
 
     book = parse_codebook(text, str(file))
     reading = read(sheet, book)

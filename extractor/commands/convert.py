@@ -158,9 +158,9 @@ def command(
 
 
 def _show_sensitivity(page: Console, result: Result, wanted: options.Wanted) -> None:
-    from extractor.by_route import by_route
     from extractor.output.teamwork import show_sensitivity
-    from extractor.sensitivity import sensitivity
+    from extractor.routes.by_route import by_route
+    from extractor.routes.sensitivity import sensitivity
 
     found = sensitivity(result.conversion, method=wanted.variance, level=wanted.level)
     show_sensitivity(page, found, by_route(result.conversion))

@@ -13,8 +13,8 @@ import click
 from extractor import __version__
 from extractor.commands.options import SETTINGS
 from extractor.errors import ExtractorError, UsageError
+from extractor.printed.reading import quoted
 from extractor.quantities import close_matches
-from extractor.reading import quoted
 
 COMMANDS = (
     "convert",

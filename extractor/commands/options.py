@@ -11,8 +11,8 @@ from typing import Any, TypeVar
 import click
 
 from extractor.errors import UsageError
+from extractor.printed.reading import quoted
 from extractor.quantities import METRICS, STANDARDIZERS, close_matches
-from extractor.reading import quoted
 
 SETTINGS = {"help_option_names": ["-h", "--help"], "max_content_width": 100}
 FORMATS = ("csv", "xlsx", "html", "json", "parquet", "dta", "prov")

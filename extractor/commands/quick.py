@@ -8,8 +8,8 @@ import click
 
 from extractor.commands import options
 from extractor.errors import UsageError
+from extractor.printed.reading import quoted
 from extractor.quantities import DESIGNS, VOCABULARY, Shape, close_matches
-from extractor.reading import quoted
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -74,8 +74,8 @@ def command(text: str, wanted: options.Wanted, design: str | None, also: tuple[s
 
 def _evidence(text: str, design: str | None, columns: dict[str, str]) -> tuple[Evidence, str]:
     """The text as a sheet of one row, and how its design was settled."""
-    from extractor.apa import read_statistics
     from extractor.codebook import canonical, canonical_names
+    from extractor.printed.apa import read_statistics
 
     for name in columns:
         if canonical(name) is None or name in ("reported", "design"):
@@ -165,8 +165,8 @@ def _related_line(effect: pd.Series) -> list[str]:
 
 def _p_line(evidence: Evidence) -> list[str]:
     """The p value that the printed test statistic implies; nothing where none is printed."""
-    from extractor.engine import Engine
-    from extractor.planner import search
+    from extractor.routes.engine import Engine
+    from extractor.routes.planner import search
     from extractor.words import plain
 
     for block in evidence.blocks:

@@ -89,10 +89,10 @@ def command(
         raise UsageError(f"--level {level:g} is not between 0 and 1")
     if consensus is not None and out is None:
         raise UsageError("--consensus writes the merged sheet: name a folder for it with --out")
+    from extractor.coders.reconcile import reconcile
     from extractor.commands import running
     from extractor.output import comparing, files, terminal
     from extractor.output.consensus import read_consensus
-    from extractor.reconcile import reconcile
 
     if out is not None:
         files.refuse_existing(out, force=force)

@@ -13,18 +13,18 @@ from extractor.api import Reading, Result
 from extractor.api import read as read_sheet
 from extractor.audit.run import Audit
 from extractor.commands.options import Coded, Wanted
-from extractor.conversion import (
+from extractor.evidence import Evidence, gather
+from extractor.findings import Severity
+from extractor.output.cells import reading_notes
+from extractor.output.terminal import console, printable
+from extractor.routes.conversion import (
     Conversion,
     check_method,
     check_metric,
     check_standardizer,
     convert_evidence,
 )
-from extractor.evidence import Evidence, gather
-from extractor.findings import Severity
-from extractor.output.cells import reading_notes
-from extractor.output.terminal import console, printable
-from extractor.sensitivity import ranges, with_ranges
+from extractor.routes.sensitivity import ranges, with_ranges
 
 LONG = 20_000
 """Rows above which progress is shown."""

@@ -13,7 +13,7 @@ from extractor.errors import UsageError
 
 if TYPE_CHECKING:
     from extractor.api import Reading
-    from extractor.conversion import Conversion
+    from extractor.routes.conversion import Conversion
 
 
 @click.command(
@@ -80,7 +80,7 @@ def command(
     if log is not None:
         _replies(log, reading)
         return
-    from extractor.asking import unlocking
+    from extractor.asking.batch import unlocking
     from extractor.output import tables, teamwork, terminal
 
     rows = reading.table.rows
@@ -105,9 +105,9 @@ def command(
 def _draft(
     folder: Path, reading: Reading, conversion: Conversion, wanted: options.Wanted, force: bool
 ) -> None:
-    from extractor.letters import letters
+    from extractor.asking.letters import letters
+    from extractor.asking.questions import questions
     from extractor.output.letter_texts import LOG, write_letters
-    from extractor.questions import questions
 
     asked = questions(conversion, method=wanted.variance, standardizer=wanted.standardizer)
     drafts = letters(conversion, asked, reading.audit(conversion).findings)
@@ -120,9 +120,9 @@ def _draft(
 
 
 def _replies(path: Path, reading: Reading) -> None:
+    from extractor.asking.replies import read_replies
     from extractor.commands import running
     from extractor.output import tables
-    from extractor.replies import read_replies
 
     found = read_replies(path, reading.table, reading.codebook)
     sys.stdout.writelines(tables.csv_lines(found.decisions))

@@ -10,16 +10,16 @@ import pandas as pd
 from rich.console import Console
 from rich.text import Text
 
-from extractor.comparison import EFFECT
-from extractor.displacement import DECIDES, MOVES_IN_WORDS, NOTHING
+from extractor.coders.comparison import EFFECT
+from extractor.coders.displacement import DECIDES, MOVES_IN_WORDS, NOTHING
+from extractor.coders.reconcile import Reconciliation
 from extractor.errors import UsageError
 from extractor.output.consensus import Settled, has_agreed, write_consensus
 from extractor.output.files import output_folder
 from extractor.output.merged import write_merged
 from extractor.output.tables import write_csv
 from extractor.output.terminal import counted, number, rows_in_words, say
-from extractor.reading import quoted
-from extractor.reconcile import Reconciliation
+from extractor.printed.reading import quoted
 from extractor.words import listed, plain
 
 CONSENSUS, MERGED = "consensus.xlsx", "merged.xlsx"

@@ -13,13 +13,13 @@ from openpyxl.utils import get_column_letter
 from openpyxl.worksheet.datavalidation import DataValidation
 from openpyxl.worksheet.worksheet import Worksheet
 
-from extractor.disputes import reading_text
+from extractor.coders.disputes import reading_text
+from extractor.coders.reconcile import Reconciliation
 from extractor.errors import UnreadableInput
 from extractor.output.sheets import PLAIN, save, write_table
+from extractor.printed.reading import is_missing, quoted, tidy
+from extractor.printed.reported import read_number
 from extractor.quantities import DESIGNS, VOCABULARY, close_matches
-from extractor.reading import is_missing, quoted, tidy
-from extractor.reconcile import Reconciliation
-from extractor.reported import read_number
 from extractor.source.grid import Grid, heading_text, is_blank
 from extractor.source.reader import read_grid
 from extractor.source.workbook import has_sheet

@@ -13,7 +13,7 @@ from datetime import UTC, datetime
 from pathlib import Path
 
 from extractor.errors import UsageError
-from extractor.reading import quoted
+from extractor.printed.reading import quoted
 
 _STAMP = datetime(2020, 1, 1, tzinfo=UTC)
 _FIRST, _LAST = datetime(1980, 1, 1, tzinfo=UTC), datetime(2107, 12, 31, tzinfo=UTC)

@@ -8,7 +8,7 @@ from pathlib import Path
 
 import pandas as pd
 
-from extractor.letters import LOG_COLUMNS, Letter
+from extractor.asking.letters import LOG_COLUMNS, Letter
 from extractor.output.files import output_folder
 from extractor.output.tables import write_csv
 

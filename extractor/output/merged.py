@@ -8,15 +8,15 @@ import numpy as np
 import pandas as pd
 from openpyxl import Workbook
 
-from extractor.agreement import MISSING
-from extractor.comparison import Column, extra_headings, extra_texts, from_groups_sheet
+from extractor.coders.agreement import MISSING
+from extractor.coders.comparison import Column, extra_headings, extra_texts, from_groups_sheet
+from extractor.coders.matching import ABSENT
+from extractor.coders.reconcile import Reconciliation
 from extractor.groups_sheet import SHEET
-from extractor.matching import ABSENT
 from extractor.output.consensus import Settled
 from extractor.output.sheets import save, write_table
 from extractor.output.terminal import counted
 from extractor.quantities import FACTS, group_heading
-from extractor.reconcile import Reconciliation
 from extractor.table import ObjectArray
 
 TITLE = "merged"

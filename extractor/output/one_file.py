@@ -9,7 +9,7 @@ from contextlib import contextmanager
 from pathlib import Path
 
 from extractor.errors import UsageError
-from extractor.reading import quoted
+from extractor.printed.reading import quoted
 
 
 @contextmanager

@@ -14,8 +14,6 @@ import pandas as pd
 from extractor import __version__, cautions
 from extractor.api import Result
 from extractor.audit.run import Audit
-from extractor.by_route import by_route
-from extractor.dependence import covariance_matrix, dependence
 from extractor.errors import UsageError
 from extractor.output.cells import reading_notes
 from extractor.output.columns import EFFECTS, FINDINGS, fields, whole_counts
@@ -23,9 +21,11 @@ from extractor.output.files import output_folder
 from extractor.output.prov import write_prov
 from extractor.output.tables import WRITERS, neutralised, write_csv
 from extractor.output.trail import Tick, write_derivations
+from extractor.overlap.dependence import covariance_matrix, dependence
+from extractor.printed.reading import quoted
 from extractor.quantities import close_matches
-from extractor.reading import quoted
-from extractor.sensitivity import sensitivity
+from extractor.routes.by_route import by_route
+from extractor.routes.sensitivity import sensitivity
 from extractor.table import Assumption, ReportedTable
 
 AUDIT_FILES = ("findings.csv", "datapackage.json")

@@ -9,11 +9,11 @@ import pandas as pd
 from rich.console import Console
 from rich.text import Text
 
-from extractor.asking import Unlocking
-from extractor.changes import Comparison, in_words
+from extractor.asking.batch import Unlocking
 from extractor.codebook_check import Pilot
 from extractor.output.terminal import between, counted, number, rows_in_words, say
-from extractor.sensitivity import Sensitivity
+from extractor.routes.sensitivity import Sensitivity
+from extractor.runs.changes import Comparison, in_words
 from extractor.words import listed
 
 _MOST_QUESTIONS = 8

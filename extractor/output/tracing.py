@@ -9,8 +9,8 @@ from rich.tree import Tree
 
 from extractor.api import Result
 from extractor.catalogue.relation import catalogue
-from extractor.choice import NOTHING, Supported
 from extractor.output.terminal import between, number, printable, say, show_finding, show_tree
+from extractor.routes.choice import NOTHING, Supported
 from extractor.table import FloatArray, ReportedTable
 
 

@@ -11,7 +11,7 @@ from extractor.api import Result
 from extractor.catalogue.relation import catalogue
 from extractor.output.cells import understood
 from extractor.output.tables import as_json, records
-from extractor.recorded import recorded_cells
+from extractor.runs.recorded import recorded_cells
 from extractor.table import ReportedTable
 
 _CHUNK = 2_000

@@ -7,7 +7,7 @@ from collections.abc import Iterable, Sequence
 import numpy as np
 from numpy.typing import NDArray
 
-from extractor.reading import Reading
+from extractor.printed.reading import Reading
 from extractor.source.grid import ObjectArray
 from extractor.table import Numbers, Place
 

@@ -8,8 +8,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from extractor.errors import UnreadableInput
-from extractor.reading import quoted, shortest
-from extractor.reported import CellError, UncachedFormula
+from extractor.printed.reading import quoted, shortest
+from extractor.printed.reported import CellError, UncachedFormula
 
 ObjectArray = NDArray[np.object_]
 

@@ -11,7 +11,7 @@ import numpy as np
 import pandas as pd
 
 from extractor.errors import UnreadableInput
-from extractor.reading import quoted
+from extractor.printed.reading import quoted
 from extractor.source.delimited import Known, from_text
 from extractor.source.grid import MOST_COLUMNS, Grid, ObjectArray, is_blank, object_array
 from extractor.source.workbook import from_workbook

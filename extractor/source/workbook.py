@@ -17,8 +17,8 @@ from defusedxml import ElementTree
 from openpyxl.cell.read_only import EMPTY_CELL
 
 from extractor.errors import UnreadableInput
-from extractor.reading import quoted
-from extractor.reported import CellError, UncachedFormula
+from extractor.printed.reading import quoted
+from extractor.printed.reported import CellError, UncachedFormula
 from extractor.source.grid import MOST_COLUMNS, Grid, Rows
 
 MOST_BYTES = 1 << 30

@@ -13,7 +13,7 @@ from itertools import permutations
 
 import numpy as np
 
-from extractor.engine import Estimate
+from extractor.routes.engine import Estimate
 from extractor.study.cell_means import term_forms
 from extractor.study.terms import factors_of
 from extractor.table import Cells, ObjectArray, ReportedTable

@@ -12,7 +12,7 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from extractor.engine import Estimate
+from extractor.routes.engine import Estimate
 from extractor.table import BoolArray, FloatArray, ObjectArray, ReportedTable, Variable
 
 TERM_DESIGNS = ("factorial", "within", "mixed")

@@ -8,8 +8,8 @@ from types import ModuleType
 import numpy as np
 
 from extractor.catalogue.relation import CATALOGUE, FloatArray, Interval, Relation
-from extractor.intervals import image
 from extractor.quantities import VOCABULARY
+from extractor.routes.intervals import image
 from tests.catalogue.worlds import World, boxes, inside
 
 

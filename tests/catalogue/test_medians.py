@@ -11,8 +11,8 @@ from scipy import integrate, stats
 from extractor.catalogue import medians
 from extractor.catalogue.medians import unskewed_by_five, unskewed_by_quartiles, unskewed_by_range
 from extractor.catalogue.relation import CATALOGUE, FloatArray, Grade
-from extractor.intervals import image
-from extractor.planner import Start, search
+from extractor.routes.intervals import image
+from extractor.routes.planner import Start, search
 from tests.catalogue.families import check_family, relations_in
 from tests.catalogue.worlds import World
 

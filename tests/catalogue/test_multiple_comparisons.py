@@ -16,8 +16,8 @@ from extractor.catalogue.multiple_comparisons import (
     two_sided_p_from_bonferroni,
 )
 from extractor.catalogue.relation import Relation
-from extractor.intervals import image
-from extractor.planner import Start, search
+from extractor.routes.intervals import image
+from extractor.routes.planner import Start, search
 from tests.catalogue.families import check_family, relations_in
 from tests.catalogue.worlds import World
 

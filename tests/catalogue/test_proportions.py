@@ -10,7 +10,7 @@ from statsmodels.stats.contingency_tables import Table2x2
 from extractor.catalogue import proportions
 from extractor.catalogue.odds import d_from_log_odds_ratio, log_odds_ratio_from_odds_ratio
 from extractor.catalogue.relation import Grade, Relation
-from extractor.planner import Start, search
+from extractor.routes.planner import Start, search
 from tests.catalogue.families import check_family, evaluate, relations_in
 from tests.catalogue.worlds import World
 

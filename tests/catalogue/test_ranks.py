@@ -8,7 +8,7 @@ from scipy import stats
 
 from extractor.catalogue import ranks
 from extractor.catalogue.relation import Grade
-from extractor.planner import Start, search
+from extractor.routes.planner import Start, search
 from tests.catalogue.families import check_family, relations_in
 from tests.catalogue.worlds import World
 

@@ -13,8 +13,8 @@ import numpy as np
 import pytest
 
 from extractor.catalogue.relation import FloatArray, Grade, Interval, Relation, catalogue
-from extractor.intervals import image
 from extractor.quantities import DESIGNS, VOCABULARY, Shape
+from extractor.routes.intervals import image
 from tests.catalogue.worlds import CHOICES, anywhere, boxes, inside, one_factor, some_study, world, worlds_of
 
 DECLARED = sorted(catalogue().values(), key=lambda r: r.name)

@@ -20,9 +20,9 @@ import pytest
 import extractor
 from extractor import cautions
 from extractor.api import convert
-from extractor.conversion import COLUMNS
 from extractor.output import package
 from extractor.output.columns import EFFECTS, FINDINGS
+from extractor.routes.conversion import COLUMNS
 
 from .conftest import Run, environment
 

@@ -14,9 +14,9 @@ import numpy as np
 import pandas as pd
 
 from extractor.api import read
-from extractor.asking import groups_of, heading_of, places_of
-from extractor.conversion import Conversion, convert_evidence
-from extractor.questions import Aim, Asked, Offer, questions
+from extractor.asking.batch import groups_of, heading_of, places_of
+from extractor.asking.questions import Aim, Asked, Offer, questions
+from extractor.routes.conversion import Conversion, convert_evidence
 from tests.simulated_review import ASSUMING, Truth, review, written
 
 METRICS = ("cohens_d", "hedges_g", "omega_squared", "eta_squared", "partial_eta_squared")

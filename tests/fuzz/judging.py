@@ -28,7 +28,7 @@ import pandas as pd
 from click.testing import CliRunner
 
 from extractor.commands.main import cli
-from extractor.conversion import COLUMNS
+from extractor.routes.conversion import COLUMNS
 
 SECONDS = 10.0
 CONVERTED = ("effects.csv", "findings.csv", "derivations.json", "datapackage.json")

@@ -15,8 +15,8 @@ import pytest
 
 import extractor
 from extractor.api import read
-from extractor.conversion import convert_evidence
 from extractor.quantities import METRICS, VOCABULARY, Quantity, group_heading
+from extractor.routes.conversion import convert_evidence
 
 REFUSED = ("1e308", "-1e308", "1e400", "1" * 300, "inf", "-inf", "Infinity", "1" + "0" * 299 + ".5")
 MISSING = ("nan", "NaN", "NA", "", "-", "—")

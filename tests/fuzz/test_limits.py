@@ -17,16 +17,16 @@ import pandas as pd
 import pytest
 from click.testing import CliRunner
 
-from extractor.apa import columns_from_text
 from extractor.codebook import default_codebook, parse_codebook
 from extractor.commands.main import cli
 from extractor.decisions import read_decisions
 from extractor.errors import InvalidCodebook, UnreadableInput
 from extractor.groups_sheet import with_groups
-from extractor.number_format import UNDECIDED, shown_by
 from extractor.output.tables import neutralised
+from extractor.printed.apa import columns_from_text
+from extractor.printed.number_format import UNDECIDED, shown_by
+from extractor.printed.reported import read_number
 from extractor.quantities import VOCABULARY
-from extractor.reported import read_number
 from extractor.sheet import read_table
 from extractor.source import reader, workbook
 from extractor.source.grid import MOST_COLUMNS

@@ -11,11 +11,11 @@ from openpyxl import load_workbook
 
 import extractor
 from extractor.codebook import default_codebook, parse_codebook
+from extractor.coders.reconcile import Reconciliation, reconcile
 from extractor.errors import UnreadableInput, UsageError
 from extractor.output.comparing import CONSENSUS, MERGED, write_comparison, write_settled
 from extractor.output.consensus import Settled, has_agreed, read_consensus
 from extractor.output.merged import merged
-from extractor.reconcile import Reconciliation, reconcile
 from tests.double_coding import (
     CELLS,
     SHEET,

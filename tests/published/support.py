@@ -13,9 +13,9 @@ import numpy as np
 import pandas as pd
 
 from extractor.catalogue.relation import FloatArray
-from extractor.conversion import convert_evidence
 from extractor.evidence import gather
 from extractor.quantities import VOCABULARY
+from extractor.routes.conversion import convert_evidence
 from extractor.table import ReportedTable, Variable
 from tests.evidence.printing import Printed, Sheet, table
 

@@ -31,7 +31,7 @@ import pytest
 from extractor.catalogue import contrasts, correlations, counts, groups, homogeneity, odds, p_values
 from extractor.catalogue import variance_explained as explained
 from extractor.catalogue.relation import FloatArray, Interval, catalogue
-from extractor.intervals import image
+from extractor.routes.intervals import image
 from tests.published.support import (
     agrees,
     assert_prints,

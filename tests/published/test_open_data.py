@@ -16,8 +16,8 @@ from scipy import special
 
 from extractor.catalogue import homogeneity, p_values
 from extractor.catalogue.relation import FloatArray
-from extractor.choice import choose
 from extractor.evidence import gather
+from extractor.routes.choice import choose
 from tests.published.support import DATA, converted_rows, group, one, unrounded_sheet
 
 READ: dict[str, Any] = json.loads((DATA / "open_data.json").read_text(encoding="utf-8"))

@@ -10,7 +10,7 @@ import pytest
 
 from extractor.catalogue import contrasts, groups, homogeneity, p_values, source_table
 from extractor.catalogue.relation import FloatArray, Interval, catalogue
-from extractor.intervals import image
+from extractor.routes.intervals import image
 from tests.published.support import (
     agrees,
     assert_prints,

@@ -17,7 +17,7 @@ import pytest
 
 from extractor.api import audit_sheet, convert, read
 from extractor.catalogue.groups import error_sum_from_sds
-from extractor.choice import choose
+from extractor.routes.choice import choose
 from extractor.study.cell_means import factorial_table
 
 DATA = Path(__file__).parent / "data"

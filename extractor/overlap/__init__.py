@@ -1,0 +1,1 @@
+"""Participants behind more than one row: recognised, and the covariances they bring."""

@@ -1,0 +1,1 @@
+"""Two runs compared: what was recorded of each, which effects moved, and why."""
