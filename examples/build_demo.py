@@ -16,6 +16,8 @@ from openpyxl import Workbook
 from other_reports import Row, p_text, rows_other_reports
 from scipy import stats
 
+from extractor.output.workbook import save
+
 HERE = Path(__file__).parent
 RNG = np.random.default_rng(20261201)
 
@@ -296,7 +298,7 @@ def write_workbook(path: Path, columns: list[str], rows: list[Row], cells: list[
         for line in each.iter_rows():
             for one in line:
                 one.number_format = "@"
-    book.save(path)
+    save(book, path)
 
 
 def main() -> None:

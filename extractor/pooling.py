@@ -203,13 +203,20 @@ def _of_outcome(
         # a line that leaves out the same rows as one before it says nothing new
         if out.any() and not any(np.array_equal(out, other) for _, other in doubts[:at]):
             lines.append(line(what, out))
+    warnings = _warnings(effects[usable], designs[usable])
+    whole = lines[0].pooled
+    if whole is not None and whole.count > 1 and whole.standard_error < float((1 / variances).sum()) ** -0.5:
+        warnings.append(
+            "the effects are more alike than their sampling variances lead one to expect: the interval is narrower "
+            "than those variances alone would make it"
+        )
     return Glance(
         outcome,
         tuple(lines),
-        _mover(rows, estimates, variances, lines[0].pooled),
+        _mover(rows, estimates, variances, whole),
         int((effects["status"] == "bounded").sum()),
         int((converted & ~usable).sum()),
-        tuple(_warnings(effects[usable], designs[usable])),
+        tuple(warnings),
     )
 
 

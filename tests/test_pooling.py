@@ -194,6 +194,15 @@ def test_warnings_fit_the_metric_and_the_rows(effects: pd.DataFrame) -> None:
     assert not any("do not mix" in said for said in mixed[1].warnings)
 
 
+def test_effects_more_alike_than_chance_allows_are_said(effects: pd.DataFrame) -> None:
+    """Two equal effects have an interval of no width, which is no precision."""
+    alike = effects[effects["status"] == "converted"].assign(estimate=0.3, outcome="recall", variance=0.04)
+    found = glance(alike, set(), designs(*["two-group"] * 6))[0]
+    assert found.lines[0].pooled is not None
+    assert found.lines[0].pooled.high == pytest.approx(found.lines[0].pooled.low)
+    assert any("more alike than their sampling variances" in said for said in found.warnings)
+
+
 def test_many_rows_are_pooled_without_leaving_each_out(
     effects: pd.DataFrame, monkeypatch: pytest.MonkeyPatch
 ) -> None:

@@ -5,6 +5,7 @@ The source file is read, never written.
 
 from __future__ import annotations
 
+import warnings
 from pathlib import Path
 
 import pandas as pd
@@ -20,8 +21,8 @@ from extractor.errors import UsageError
 from extractor.findings import Finding
 from extractor.output.chart import write_chart
 from extractor.output.marks import COMPANION, FILLS, SIGNS, address_of, marks_of, show, unmark
-from extractor.output.package import Request, effects_as_written
 from extractor.output.record import settings_frame
+from extractor.output.request import Request, effects_as_written
 from extractor.output.results import AnyCell, cached_results, with_results
 from extractor.output.sheets import (
     AUTHOR,
@@ -30,10 +31,9 @@ from extractor.output.sheets import (
     free_title,
     landscape,
     put_text,
-    saved,
     write_table,
 )
-from extractor.output.workbook import _canonical
+from extractor.output.workbook import saved, without_clock
 from extractor.source.reader import read_grid
 from extractor.table import ReportedTable
 
@@ -48,7 +48,8 @@ _CODES = {
         "0.0000",
     ),
     **dict.fromkeys(("n_total", "row"), "0"),
-    **dict.fromkeys(("low", "high", "value", "distance", "expected_low", "expected_high"), PLAIN),
+    **dict.fromkeys(("low", "high", "value", "expected_low", "expected_high"), PLAIN),
+    "distance": "0.0000",
     "slack": "0.0",
 }
 _SENTENCES = ("reason", "assumptions", "message", "explanation", "cells", "source", "equation", "meaning")
@@ -84,7 +85,7 @@ def write_annotated(result: Result, request: Request, path: Path) -> list[str]:
     if changed:
         notes.append(f"annotated.xlsx: {changed} texts were cut or cleaned to fit into cells")
     content = with_results(saved(book), book.sheetnames, results)
-    path.write_bytes(_canonical(content))
+    path.write_bytes(without_clock(content))
     return notes
 
 
@@ -100,7 +101,10 @@ def _copy(
         return book, None, {}, [note]
     if not table.sheet:
         return (*_from_text(source, table), {}, [])
-    book = load_workbook(source, rich_text=True, keep_links=False)
+    with warnings.catch_warnings():
+        # what a workbook cannot keep was said when it was read
+        warnings.simplefilter("ignore")
+        book = load_workbook(source, rich_text=True, keep_links=False)
     for title in _OURS:
         if title in book.sheetnames and title != table.sheet and _is_ours(book[title]):
             book.remove(book[title])

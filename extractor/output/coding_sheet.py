@@ -23,7 +23,8 @@ from extractor.decisions import WORDS as DECISIONS
 from extractor.errors import UsageError
 from extractor.output.coding_columns import WORDS, Column, columns_of
 from extractor.output.coding_guide import guide_lines
-from extractor.output.sheets import AUTHOR, INK, RULE, SANS, landscape, put_text, save
+from extractor.output.sheets import AUTHOR, INK, RULE, SANS, landscape, put_text
+from extractor.output.workbook import save
 from extractor.quantities import VOCABULARY
 
 CODED, GROUPS, DECIDED, GUIDE, LISTS = "coded", "groups", "decisions", "how to code", "lists"

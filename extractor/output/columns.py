@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass, field
 
 import pandas as pd
@@ -74,6 +75,56 @@ FINDINGS: dict[str, Column] = {
     ),
 }
 
+COVARIANCES: dict[str, Column] = {
+    "row": Column("integer", "row of the sheet", {"required": True, "minimum": 1}),
+    "other_row": Column("integer", "a later row of the same study", {"required": True, "minimum": 1}),
+    "covariance": Column("number", "covariance of the two estimates; blank where it cannot be computed"),
+    "why": _words("what the rows share, or why the covariance cannot be computed"),
+}
+
+_LABELS = {name: EFFECTS[name] for name in ("study", "outcome", "effect", "metric")}
+_MOVED = {
+    "assumption": _words("what is taken for granted"),
+    "by": _words("who supplied it"),
+    "value": Column("number", "value in use; blank where the assumption is no number"),
+    "range_low": Column("number", "smallest value tried; blank where no range is declared"),
+    "range_high": Column("number", "largest value tried"),
+}
+SENSITIVITY: dict[str, Column] = {
+    "row": COVARIANCES["row"],
+    **_LABELS,
+    **_MOVED,
+    "estimate": Column("number", "the effect with the value in use"),
+    "estimate_low": Column("number", "smallest effect over the range"),
+    "estimate_high": Column("number", "largest effect over the range"),
+    "variance": Column("number", "sampling variance with the value in use", {"minimum": 0}),
+    "variance_low": Column("number", "smallest variance over the range", {"minimum": 0}),
+    "variance_high": Column("number", "largest variance over the range", {"minimum": 0}),
+    "swing": Column("number", "largest effect less smallest", {"minimum": 0}),
+    "swing_in_se": Column("number", "the same in standard errors", {"minimum": 0}),
+}
+ASSUMPTIONS: dict[str, Column] = {
+    **_MOVED,
+    "rows": Column("integer", "effects that rest on the assumption", {"minimum": 0}),
+    "median_swing": Column("number", "median of their swings", {"minimum": 0}),
+    "largest_swing": Column("number", "largest of them", {"minimum": 0}),
+    "largest_in_se": Column("number", "the same in standard errors", {"minimum": 0}),
+    "largest_row": Column("integer", "row of the sheet that moves most", {"minimum": 1}),
+}
+ROUTES: dict[str, Column] = {
+    "row": COVARIANCES["row"],
+    **_LABELS,
+    "routes": Column("integer", "comparable admissible routes", {"minimum": 0}),
+    "estimate": Column("number", "the effect along the chosen route"),
+    "lowest": Column("number", "smallest effect along any of them"),
+    "highest": Column("number", "largest effect along any of them"),
+    "spread": Column("number", "largest less smallest", {"minimum": 0}),
+    "spread_in_se": Column("number", "the same in standard errors", {"minimum": 0}),
+    "beyond_rounding": Column("boolean", "whether rounding fails to explain that routes differ"),
+    "lowest_route": _words("route of the smallest effect"),
+    "highest_route": _words("route of the largest effect"),
+}
+
 
 def is_text(column: pd.Series) -> bool:
     """Whether a column holds words."""
@@ -82,8 +133,11 @@ def is_text(column: pd.Series) -> bool:
 
 def texts(column: pd.Series) -> list[str]:
     """A column's words; "" where blank."""
+    listed = column.tolist()
+    if set(map(type, listed)) <= {str}:
+        return listed
     blank = column.isna().tolist()
-    return ["" if empty else str(value) for value, empty in zip(column.tolist(), blank, strict=True)]
+    return ["" if empty else str(value) for value, empty in zip(listed, blank, strict=True)]
 
 
 def whole_counts(frame: pd.DataFrame) -> pd.DataFrame:
@@ -98,7 +152,7 @@ def whole_counts(frame: pd.DataFrame) -> pd.DataFrame:
 
 
 def fields(
-    frame: pd.DataFrame, known: dict[str, Column], headings: dict[str, str]
+    frame: pd.DataFrame, known: Mapping[str, Column], headings: Mapping[str, str]
 ) -> list[dict[str, object]]:
     """Table Schema fields of a frame's columns, in order.
 

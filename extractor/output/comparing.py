@@ -102,7 +102,7 @@ def _two(value: object) -> str:
     """A coefficient with two decimals; 0.996 is not shown as perfect."""
     if not isinstance(value, float) or math.isnan(value):
         return ""
-    shown = f"{value:.2f}"
+    shown = f"{value:.2f}".replace("-0.00", "0.00")
     return f"{value:.3f}" if shown == "1.00" and value < 0.9995 else shown
 
 

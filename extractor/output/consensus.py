@@ -13,10 +13,12 @@ from openpyxl.utils import get_column_letter
 from openpyxl.worksheet.datavalidation import DataValidation
 from openpyxl.worksheet.worksheet import Worksheet
 
+from extractor.coders.agreement_table import FRACTIONS
 from extractor.coders.disputes import reading_text
 from extractor.coders.reconcile import Reconciliation
 from extractor.errors import UnreadableInput
-from extractor.output.sheets import PLAIN, save, write_table
+from extractor.output.sheets import PLAIN, write_table
+from extractor.output.workbook import save
 from extractor.printed.reading import is_missing, quoted, tidy
 from extractor.printed.reported import read_number
 from extractor.quantities import DESIGNS, VOCABULARY, close_matches
@@ -68,7 +70,7 @@ def write_consensus(found: Reconciliation, path: Path) -> list[str]:
     for title, frame, codes in (
         (CELLS, _cells(found), _CODES),
         (ROWS, _rows(found), {}),
-        ("agreement", found.agreement, _AGREEMENT_CODES | dict.fromkeys(_FRACTIONS, PLAIN)),
+        ("agreement", found.agreement, _AGREEMENT_CODES | dict.fromkeys(FRACTIONS, PLAIN)),
         (_ABOUT, pd.DataFrame({"how to settle disputes": [*_whose(found), *_HOW, _tolerance(found)]}), {}),
     ):
         if not len(frame):
@@ -79,21 +81,6 @@ def write_consensus(found: Reconciliation, path: Path) -> list[str]:
             _open_column(sheet, list(frame.columns).index(AGREED) + 1, len(frame), title == ROWS)
     save(book, path)
     return [f"{path.name}: {changed} texts were cut or lost control characters"] if changed else []
-
-
-_FRACTIONS = (
-    "raw_agreement",
-    "kappa",
-    "kappa_low",
-    "kappa_high",
-    "ac1",
-    "ac1_low",
-    "ac1_high",
-    "icc",
-    "icc_low",
-    "icc_high",
-    "alpha",
-)
 
 
 def _whose(found: Reconciliation) -> list[str]:
@@ -111,7 +98,7 @@ def _cells(found: Reconciliation) -> pd.DataFrame:
     frame = found.disputes.drop(columns=["of_effect", "of_column"])
     rows = found.effects.loc[found.disputes["of_effect"], [f"row {coder}" for coder in found.coders]]
     for at, name in enumerate(rows.columns):
-        frame.insert(3 + at, name, rows[name].to_numpy())
+        frame.insert(3 + at, name, rows[name].array)
     if found.metric is None:
         frame = frame.drop(columns=["moves", "estimate", "changed", "shift", "shift_in_se"])
     return frame.assign(agreed="", by="", why="")

@@ -24,12 +24,14 @@ from matplotlib.figure import Figure
 from matplotlib.patches import Rectangle
 
 from extractor.errors import UsageError
+from extractor.output.columns import is_text
 from extractor.output.files import fixed_time
 from extractor.output.labels import short_labels
 from extractor.output.report_rows import shown
 from extractor.output.scale import Scale, scale_of
 from extractor.output.strips import sides
 from extractor.output.terminal import counted
+from extractor.printed.reading import quoted
 from extractor.quantities import VOCABULARY, close_matches
 
 ENDINGS = (".svg", ".pdf", ".png")
@@ -86,8 +88,13 @@ def write_figure(effects: pd.DataFrame, path: Path, *, level: float = 0.95, by: 
         raise UsageError(f"--figure writes {', '.join(ENDINGS)}, not '{path.suffix}'")
     if by and by not in effects.columns:
         near = close_matches(by, [str(name) for name in effects.columns])
-        hint = f"; did you mean {near[0]}?" if near else ""
-        raise UsageError(f"the effect table has no column '{by}' to group the figure by{hint}")
+        words = [str(name) for name in effects.columns if is_text(effects[name])]
+        hint = (
+            f"did you mean {near[0]}?"
+            if near
+            else f"it has {', '.join(words)}, and any column the sheet adds"
+        )
+        raise UsageError(f"the effect table has no column {quoted(by)} to group the figure by; {hint}")
     drawn = effects[effects["status"].isin(["converted", "bounded"])]
     if drawn.empty:
         raise UsageError("no row has an effect to draw")
@@ -186,8 +193,9 @@ def _draw(figure: Figure, axes: Axes, row: _Row, at: int, scale: Scale) -> None:
             numbers += f" [{shown(effect['ci_low'])}, {shown(effect['ci_high'])}]"
         if math.isfinite(low) and math.isfinite(high):
             start, end = max(low, scale.low), min(high, scale.high)
+            # higher than the largest square, so that a band narrower than its square still looks out
             axes.add_patch(
-                Rectangle((start, at - 0.2), end - start, 0.4, facecolor=_BAND, linewidth=0, zorder=2)
+                Rectangle((start, at - 0.36), end - start, 0.72, facecolor=_BAND, linewidth=0, zorder=2)
             )
         axes.plot(
             [effect["estimate"]], [at], marker="s", markersize=row.side * 0.55, color=_ACCENT, zorder=3, mew=0

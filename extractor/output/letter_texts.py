@@ -3,12 +3,13 @@
 from __future__ import annotations
 
 import textwrap
-from collections.abc import Iterable
+from collections.abc import Iterable, Iterator
 from pathlib import Path
 
 import pandas as pd
 
-from extractor.asking.letters import LOG_COLUMNS, Letter
+from extractor.asking.letters import LOG_COLUMNS, Letter, Line, Part
+from extractor.asking.questions import Aim
 from extractor.output.files import output_folder
 from extractor.output.tables import write_csv
 
@@ -21,13 +22,20 @@ _OPENING = (
 _NUMBER = "the number listed below"
 _NUMBERS = "the few numbers listed below"
 _WORDS = "a word on the printed numbers below"
+_ASKING = "We would be grateful for:"
+_ASKED = "The numbers asked for above serve this result as well."
 _HEADING = "Questions on printed numbers"
-_CLOSING = (
+_PURPOSE = {
+    Aim.OPENS: "Without further numbers we cannot compute an effect size for {result}.",
+    Aim.TIGHTENS: "The article lets us compute a limit of the effect size only, not its value, for {result}.",
+    Aim.FREES: "For {result} we have had to assume so far, as the article does not say: {supposed}.",
+    Aim.COMPLETES: "For {result} we have an effect size, but not how precise it is.",
+}
+_UNAVAILABLE = (
     "If a number is no longer available, a short note to that effect helps us as well; there is no need to send "
-    "any data beyond these. We will name your reply as the source.",
-    "Thank you very much for your time.",
-    "With kind regards,\n[name, institution, address]",
+    "any data beyond these. We will name your reply as the source."
 )
+_CLOSING = ("Thank you very much for your time.", "With kind regards,\n[name, institution, address]")
 
 
 def markdown(letter: Letter) -> str:
@@ -39,24 +47,23 @@ def markdown(letter: Letter) -> str:
         "",
         _opening(letter),
     ]
-    if letter.groups:
-        lines += ["", letter.groups]
-    number = 0
-    for part in letter.parts:
-        lines += ["", f"## {_escaped(part.title)}", "", _context(part.known, part.purpose)]
-        lines += ["", "We would be grateful for:", ""]
-        for line in part.lines:
-            number += 1
-            lines.append(f"{number}. {line.asked}")
-        if part.instead:
+    lines += [piece for paragraph in _before(letter) for piece in ("", paragraph)]
+    for part, asked in _numbered(letter):
+        context = _escaped(_context(letter, part))
+        lines += ["", f"## {_escaped(part.title)}", "", *([context, ""] if context else [])]
+        lines += [_ASKING, "", *(f"{at}. {line.asked}" for at, line in asked)] if asked else [_ASKED]
+        if part.instead and not _shared(letter):
             lines += ["", f"If that is not at hand, this would help as well: {part.instead}."]
     if letter.findings:
         lines += ["", f"## {_HEADING}", ""]
         lines += [f"- {_escaped(question)}" for question in letter.findings]
-    if letter.lines:
-        lines += ["", "## Reply table", "", "| No. | Number | Your value |", "|---:|---|---|"]
-        lines += [f"| {at} | {_escaped(line.asked)} | |" for at, line in enumerate(letter.lines, 1)]
-    for paragraph in _CLOSING:
+    if letter.numbers:
+        several = len(letter.parts) > 1
+        lines += ["", "## Reply table", "", f"| No. |{' Result |' if several else ''} Number | Your value |"]
+        lines += [f"|---:|{'---|' if several else ''}---|---|"]
+        for at, (title, line) in enumerate(letter.numbers, 1):
+            lines.append(f"| {at} |{f' {_escaped(title)} |' if several else ''} {_escaped(line.asked)} | |")
+    for paragraph in _after(letter):
         lines += ["", paragraph.replace("\n", "  \n")]
     return "\n".join(lines) + "\n"
 
@@ -65,40 +72,75 @@ def plain_text(letter: Letter) -> str:
     """A letter as plain text, for the body of an e-mail."""
     lines = [f"Subject: {_subject(letter)}", "", "Dear [name of the corresponding author],", ""]
     lines += _wrapped(_opening(letter))
-    if letter.groups:
-        lines += ["", *_wrapped(letter.groups)]
-    number = 0
-    for part in letter.parts:
+    for paragraph in _before(letter):
+        lines += ["", *_wrapped(paragraph)]
+    for part, asked in _numbered(letter):
         lines += ["", *_wrapped(part.title), "-" * min(len(part.title), _WIDTH)]
-        lines += _wrapped(f"{_context(part.known, part.purpose)} We would be grateful for:")
-        for line in part.lines:
-            number += 1
-            lines += _wrapped(f"{number:>3}. {line.asked}:  ______", "     ")
-        if part.instead:
+        lines += _wrapped(f"{_context(letter, part)} {_ASKING if asked else _ASKED}".strip())
+        for at, line in asked:
+            lines += _wrapped(f"{at:>3}. {line.asked}:  ______", "     ")
+        if part.instead and not _shared(letter):
             lines += _wrapped(f"If that is not at hand, this would help as well: {part.instead}.")
     if letter.findings:
         lines += ["", _HEADING, "-" * len(_HEADING)]
         for question in letter.findings:
             lines += _wrapped(f"  - {question}", "    ")
-    for paragraph in _CLOSING:
+    for paragraph in _after(letter):
         lines += ["", *(wrapped for piece in paragraph.split("\n") for wrapped in _wrapped(piece))]
     return "\n".join(lines) + "\n"
 
 
+def _numbered(letter: Letter) -> Iterator[tuple[Part, list[tuple[int, Line]]]]:
+    """Each result with the numbers asked for about it, counted through the letter."""
+    count = 0
+    for part in letter.parts:
+        fresh = [line for line in part.lines if not line.again]
+        yield part, list(enumerate(fresh, count + 1))
+        count += len(fresh)
+
+
 def _subject(letter: Letter) -> str:
-    numbers = len(letter.lines)
+    numbers = len(letter.numbers)
     what = f"{numbers} number{'s' if numbers > 1 else ''}" if numbers else "a question"
     return f"Your study “{letter.study}”: {what} for a systematic review"
 
 
 def _opening(letter: Letter) -> str:
-    numbers = _NUMBERS if len(letter.lines) > 1 else _NUMBER
-    what = " and ".join(w for w, has in ((numbers, letter.lines), (_WORDS, letter.findings)) if has)
+    numbers = _NUMBERS if len(letter.numbers) > 1 else _NUMBER
+    what = " and ".join(w for w, has in ((numbers, letter.numbers), (_WORDS, letter.findings)) if has)
     return _OPENING.format(study=letter.study, what=what)
 
 
-def _context(known: str, purpose: str) -> str:
-    return f"The article gives {known}. {purpose}" if known else purpose
+def _shared(letter: Letter) -> bool:
+    """Whether the same is to be said of all of several results, and so once."""
+    return len({(part.aim, part.supposed, part.instead) for part in letter.parts}) == 1 < len(letter.parts)
+
+
+def _before(letter: Letter) -> Iterator[str]:
+    """What is said ahead of the single results."""
+    if letter.groups:
+        yield letter.groups
+    if _shared(letter):
+        yield _purpose(letter.parts[0], "these results")
+
+
+def _after(letter: Letter) -> Iterator[str]:
+    """What is said at the end."""
+    if letter.numbers:
+        if _shared(letter) and letter.parts[0].instead:
+            yield f"If these are not at hand, this would help as well, for each result: {letter.parts[0].instead}."
+        yield _UNAVAILABLE
+    yield from _CLOSING
+
+
+def _context(letter: Letter, part: Part) -> str:
+    """What the article gives for a result, and what is lacking."""
+    known = f"The article gives {part.known}." if part.known else ""
+    return " ".join(filter(None, [known, "" if _shared(letter) else _purpose(part, "this result")]))
+
+
+def _purpose(part: Part, result: str) -> str:
+    return _PURPOSE[part.aim].format(result=result, supposed=part.supposed or "what we ask for here")
 
 
 def _escaped(text: str) -> str:
@@ -111,7 +153,7 @@ def _wrapped(text: str, hang: str = "") -> list[str]:
 
 
 def log_frame(letters: Iterable[Letter]) -> pd.DataFrame:
-    """One line for every number asked for, its value and source still blank."""
+    """One line for every cell that an answer fills, its value and source still blank."""
     lines = [
         {"study": letter.study, "row": line.row, "cell": line.cell, "asked": line.asked}
         for letter in letters

@@ -14,8 +14,9 @@ from extractor.coders.matching import ABSENT
 from extractor.coders.reconcile import Reconciliation
 from extractor.groups_sheet import SHEET
 from extractor.output.consensus import Settled
-from extractor.output.sheets import save, write_table
+from extractor.output.sheets import write_table
 from extractor.output.terminal import counted
+from extractor.output.workbook import save
 from extractor.quantities import FACTS, group_heading
 from extractor.table import ObjectArray
 

@@ -7,8 +7,8 @@ import pandas as pd
 from extractor import __version__
 from extractor.api import Result
 from extractor.findings import Severity
-from extractor.output.package import Request
 from extractor.output.record import assumption_words
+from extractor.output.request import Request
 from extractor.output.terminal import counted
 from extractor.quantities import VOCABULARY
 from extractor.words import listed

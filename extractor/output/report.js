@@ -34,12 +34,43 @@
   form.addEventListener("submit", event => event.preventDefault());
   form.addEventListener("reset", () => setTimeout(show));
   form.hidden = false;
-  show();
+  said.value = articles.length + " rows";
+
+  // The lines of a route, put into the boxes of its shape. They stay in the page for those who cannot see a drawing.
+  function draw(steps) {
+    const drawing = document.getElementById(steps.dataset.shape).content.firstElementChild.cloneNode(true);
+    const boxes = drawing.querySelectorAll("text");
+    steps.textContent.split("\n").forEach((line, at) => {
+      const [value, origin] = line.split("\t");
+      const text = boxes[at];
+      text.prepend(value);
+      if (!text.closest(".leaf")) return;
+      for (const piece of origin.match(/\S.{0,33}(?= |$)|\S+/gu)) {
+        const below = document.createElementNS(text.namespaceURI, "tspan");
+        below.setAttribute("class", "how");
+        below.setAttribute("x", text.getAttribute("x"));
+        below.setAttribute("dy", "16");
+        below.textContent = piece;
+        text.append(below);
+      }
+    });
+    steps.before(drawing);
+    steps.classList.add("away");
+  }
+
+  function drawAll(within) {
+    for (const steps of within.querySelectorAll(".steps:not(.away)")) draw(steps);
+  }
+
+  document.addEventListener("toggle", event => drawAll(event.target), true);
 
   let opened = [];
   addEventListener("beforeprint", () => {
-    opened = [...document.querySelectorAll("details:not([open])")];
-    for (const details of opened) details.open = true;
+    opened = [...document.querySelectorAll("article:not([hidden]) details:not([open])")];
+    for (const details of opened) {
+      details.open = true;
+      drawAll(details);
+    }
   });
   addEventListener("afterprint", () => {
     for (const details of opened) details.open = false;

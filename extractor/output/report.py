@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import base64
 import hashlib
+import re
 from importlib import resources
 from pathlib import Path
 from typing import Any
@@ -21,12 +22,12 @@ from extractor.catalogue.relation import Grade, catalogue
 from extractor.errors import UsageError
 from extractor.findings import Severity
 from extractor.output.marks import SIGNS
-from extractor.output.package import Request
 from extractor.output.prose import conversion_log, methods
-from extractor.output.record import settings
+from extractor.output.record import settings_in_words
 from extractor.output.report_rows import Rows, sentence, shown
+from extractor.output.request import Request
 from extractor.output.route_graph import STYLE
-from extractor.output.strips import axis
+from extractor.output.strips import axis, zero_line
 from extractor.output.terminal import counted, rows_in_words
 from extractor.pooling import Glance, Line, glance
 from extractor.quantities import VOCABULARY
@@ -35,6 +36,7 @@ from extractor.words import listed, plain
 MOST = 5_000
 """Rows a browser still shows with ease."""
 
+_BREAKS = re.compile(r"\n+(?=<)")
 _TEMPLATE = "report.html.jinja"
 _STATUSES = ("converted", "bounded", "blocked")
 _SECTIONS = (
@@ -80,7 +82,13 @@ def render(result: Result, request: Request) -> str:
         trim_blocks=True,
         lstrip_blocks=True,
     )
+    environment.filters["tight"] = _tight
     return environment.get_template(_TEMPLATE).render(_context(result, request)) + "\n"
+
+
+def _tight(markup: Markup) -> Markup:
+    """Markup without line breaks between tags: a browser makes a node of each, tens of thousands in a long report."""
+    return Markup(_BREAKS.sub("", str(markup)))
 
 
 def _read(name: str) -> str:
@@ -95,8 +103,8 @@ def _context(result: Result, request: Request) -> dict[str, Any]:
     """Everything the template names."""
     metric = result.conversion.metric
     symbol = VOCABULARY[metric].symbol
-    style, script = f"{_read('report.css')}{STYLE}\n", _read("report.js")
     rows = Rows(result, request.level)
+    style, script = f"{_read('report.css')}{STYLE}{zero_line(rows.scale)}\n", _read("report.js")
     glances = _glances(result, request.level)
     log = conversion_log(result)
     fractions = ("estimate", "standard_error")
@@ -130,7 +138,7 @@ def _context(result: Result, request: Request) -> dict[str, Any]:
             for line in log.itertuples(index=False)
         ],
         "sources": [_source(name) for name in rows.numbers],
-        "settings": settings(result, request),
+        "settings": settings_in_words(result, request),
         "cautions": (*cautions.FINDINGS, *cautions.EFFECTS),
     }
 

@@ -18,11 +18,10 @@ from extractor.output.route_graph import (
     Shape,
     Step,
     ancestors,
-    in_words,
+    in_lines,
     outline,
     route_steps,
     shape,
-    values,
 )
 from extractor.output.scale import scale_of
 from extractor.output.strips import allowed, sides, strip
@@ -34,10 +33,10 @@ Line = Mapping[Hashable, Any]
 
 
 def shown(value: float) -> str:
-    """An effect as the report prints it: three decimals, more only where it is tiny, a real minus sign."""
+    """An effect as the report prints it: three decimals, where it is tiny its first digit, a real minus sign."""
     if not math.isfinite(value):
         return "–"
-    text = f"{value:.3f}" if abs(value) >= 0.0005 or value == 0 else plain(value)
+    text = f"{value:.3f}" if abs(value) >= 0.0005 or value == 0 else plain(float(f"{value:.1g}"))
     return _minus(text)
 
 
@@ -92,16 +91,17 @@ class Rows:
             if steps:
                 key = tuple((s.quantity, s.equation, s.reported, s.grade) for s in steps.values())
                 members.setdefault(key, []).append(row)
-        self.shape_of: dict[int, tuple[str, Shape]] = {}
-        self.drawn: list[tuple[str, Shape]] = []
+        self.shape_of: dict[int, str] = {}
+        self.drawn: dict[str, Shape] = {}
         for at, rows in enumerate(members.values(), 1):
-            drawn = (f"s{at}", shape([self.routes[row] for row in rows], self.metric))
-            self.drawn.append(drawn)
-            self.shape_of.update(dict.fromkeys(rows, drawn))
+            self.drawn[f"s{at}"] = shape([self.routes[row] for row in rows], self.metric)
+            self.shape_of.update(dict.fromkeys(rows, f"s{at}"))
 
     def shapes(self) -> list[dict[str, Any]]:
         """What rows of one shape share."""
-        return [{"id": name, "svg": Markup(outline(drawn, self.metric))} for name, drawn in self.drawn]
+        return [
+            {"id": name, "svg": Markup(outline(drawn, self.metric))} for name, drawn in self.drawn.items()
+        ]
 
     def by_outcome(self) -> list[dict[str, Any]]:
         """The lines of the forest plot, grouped by outcome."""
@@ -157,18 +157,14 @@ class Rows:
             "where": where,
             "sentence": self._sentence(line),
             "findings": [_finding(finding) for finding in self.findings.get(row, ())],
-            "svg": "",
+            "steps": "",
         }
         if row in self.shape_of:
-            name, drawn = self.shape_of[row]
-            steps, others = self.routes[row], self.others.get(row, [])
+            others = self.others.get(row, [])
             found |= {
                 "summary": self._summary(line, len(others)),
-                "shape": name,
-                "width": round(drawn.width),
-                "height": round(drawn.height),
-                "words": in_words(steps, self.metric),
-                "svg": Markup(values(drawn, steps)),
+                "shape": self.shape_of[row],
+                "steps": in_lines(self.routes[row].values()),
                 "variance": self._variance(line, row),
                 "others": [_other(other) for other in others],
             }

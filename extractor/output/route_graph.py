@@ -1,21 +1,19 @@
-"""One route as a drawing (SVG): from the reported cells, step by step, to the effect.
+"""One route, from the reported cells step by step to the effect: as lines of text, and as a drawing (SVG).
 
-Rows whose routes have one shape share the boxes, formulas and arrows; only the values differ. The report draws
-the shape once and refers to it, so that a thousand rows stay small.
+Rows whose routes have one shape share boxes, formulas and arrows; only the values differ. The report holds the lines
+of every row but each shape once, and its script puts the lines of a row into the shape when somebody looks, so that a
+thousand rows stay light. Without the script the lines are there to read.
 """
 
 from __future__ import annotations
 
 import math
 import re
-import textwrap
 from collections.abc import Hashable, Iterable, Mapping, Sequence
 from dataclasses import dataclass
 from html import escape
 from itertools import pairwise
 from typing import Any
-
-import pandas as pd
 
 from extractor.catalogue.relation import catalogue
 from extractor.output.layout import arrange
@@ -25,7 +23,10 @@ from extractor.words import plain
 _LETTER, _LINE, _PAD = 7.3, 16, 9
 """Width of a letter, height of a line and room around the text, in pixels."""
 _COLUMN_GAP, _ROW_GAP, _MARGIN = 36, 12, 6
-_LONGEST = 34
+_PIECE = re.compile(r"\S.{0,33}(?= |$)|\S+")
+"""A line of a box: as many words as go into 34 letters, or one long word; the script of the report breaks alike."""
+_PAPER = 960
+"""Width in pixels up to which a drawing can still be read on paper; instead of a wider one its lines are printed."""
 _SHOWN_GROUPS = 4
 _COLUMN = re.compile(r"(\[[A-Z]{1,3})\]\Z")
 """The column of a cell, whose row completes the address."""
@@ -111,9 +112,9 @@ def _step(quantity: str, part: Sequence[Record], numbers: Mapping[str, int] | No
     if relation:
         where = f"[{numbers[relation]}]" if numbers else str(first["source"])
         grade = "" if first["grade"] == "identity" else f" {first['grade']}"
-        below = (*textwrap.wrap(str(first["equation"]), _LONGEST), *textwrap.wrap(where + grade, _LONGEST))
+        below = (*_pieces(str(first["equation"])), *_pieces(where + grade))
     else:
-        below = tuple(textwrap.wrap(_origin(part), _LONGEST))
+        below = _pieces(_origin(part))
     return Step(
         quantity=quantity,
         symbol=VOCABULARY[quantity].symbol,
@@ -125,6 +126,11 @@ def _step(quantity: str, part: Sequence[Record], numbers: Mapping[str, int] | No
         source=str(first["source"]),
         equation=str(first["equation"]),
     )
+
+
+def _pieces(text: str) -> tuple[str, ...]:
+    """Text in lines of a box."""
+    return tuple(_PIECE.findall(" ".join(text.split())))
 
 
 def _origin(part: Sequence[Record]) -> str:
@@ -214,75 +220,38 @@ def _curve(points: Sequence[tuple[float, float]]) -> str:
     return "".join(parts)
 
 
+def in_lines(steps: Iterable[Step]) -> str:
+    """The route as text, one step a line: the value, a tab, and where it comes from."""
+    return "\n".join(f"{step.symbol} = {step.shown}\t{' '.join(step.lines)}" for step in steps)
+
+
 def outline(drawn: Shape, target: str) -> str:
-    """What all rows of a shape share, as an SVG group: boxes, symbols, formulas, sources, arrows."""
+    """What all rows of a shape share, as SVG: one box for each line of text, with formula and source where derived."""
+    size = f'width="{drawn.width:.0f}" height="{drawn.height:.0f}" viewBox="0 0 {drawn.width:.0f} {drawn.height:.0f}"'
     parts = [f'<path d="{arrow.path}"/>' for arrow in drawn.arrows]
     for arrow in drawn.arrows:
         parts.append(f'<path class="tip" d="M{arrow.x:.0f} {arrow.y - 4:.0f}l6 4l-6 4z"/>')
-    for box in drawn.boxes:
-        step = box.step
-        kinds = ["leaf"] if step.reported else []
-        kinds += ["aim"] if step.quantity == target else []
-        kinds += ["loss"] if step.grade != "identity" else []
-        parts.append(f'<g class="{" ".join(kinds)}">' if kinds else "<g>")
-        meaning = escape(VOCABULARY[step.quantity].meaning)
-        parts.append(
-            f'<rect x="{box.x:.0f}" y="{box.y:.0f}" width="{box.width:.0f}" height="{box.height:.0f}" rx="2">'
-            f"<title>{meaning}</title></rect>"
-        )
-        if not step.reported:
-            parts += _texts(box, step.lines, first=1)
-        parts.append("</g>")
-    return f'<g transform="translate({_MARGIN} {_MARGIN})">{"".join(parts)}</g>'
+    parts += [_box(box, target) for box in drawn.boxes]
+    group = f'<g transform="translate({_MARGIN} {_MARGIN})">{"".join(parts)}</g>'
+    kind = "route" if drawn.width <= _PAPER else "route wide"
+    return f'<svg class="{kind}" aria-hidden="true" {size}>{group}</svg>'
 
 
-def values(drawn: Shape, steps: Mapping[str, Step]) -> str:
-    """What differs from row to row, as an SVG group: values, and the cells of reported ones."""
-    parts = []
-    for box in drawn.boxes:
-        step = steps[box.step.quantity]
-        x, y = box.x + _PAD, box.y + _PAD + 9
-        parts.append(f'<text x="{x:.0f}" y="{y:.0f}">{escape(f"{step.symbol} = {step.shown}")}</text>')
-        if step.reported:
-            parts += _texts(box, step.lines, first=1)
-    return f'<g transform="translate({_MARGIN} {_MARGIN})">{"".join(parts)}</g>'
-
-
-def _texts(box: Box, lines: Iterable[str], first: int) -> list[str]:
-    return [
-        f'<text class="how" x="{box.x + _PAD:.0f}" y="{box.y + _PAD + 9 + at * _LINE:.0f}">{escape(line)}</text>'
-        for at, line in enumerate(lines, first)
-    ]
-
-
-def in_words(steps: Mapping[str, Step], target: str) -> str:
-    """The drawing in one sentence, for those who do not see it."""
-    leaves = [f"{s.symbol} = {s.shown}" for s in steps.values() if s.reported]
-    made = [f"{s.equation} gives {s.shown}" for s in steps.values() if not s.reported]
-    said = f"{VOCABULARY[target].symbol} = {steps[target].shown}, from {', '.join(leaves)}"
-    return f"{said}: {'; '.join(made)}" if made else said
-
-
-def route_svg(lines: pd.DataFrame, target: str) -> str:
-    """The route of one row as an SVG document of its own.
-
-    Parameters
-    ----------
-    lines : the row's part of the derivations table.
-    target : the metric.
-
-    Raises
-    ------
-    ValueError
-        where the row has no route to the metric.
-    """
-    steps = ancestors(route_steps(lines.to_dict("records")), target)
-    if not steps:
-        raise ValueError(f"the row has no route to {target}")
-    drawn = shape([steps], target)
+def _box(box: Box, target: str) -> str:
+    """A box with its formula; the place of the value, and below it that of the cells, is left open."""
+    step = box.step
+    kinds = ["leaf"] if step.reported else []
+    kinds += ["aim"] if step.quantity == target else []
+    kinds += ["loss"] if step.grade != "identity" else []
+    x, y = f"{box.x + _PAD:.0f}", f"{box.y + _PAD + 9:.0f}"
+    below = (
+        ""
+        if step.reported
+        else "".join(f'<tspan class="how" x="{x}" dy="{_LINE}">{escape(line)}</tspan>' for line in step.lines)
+    )
     return (
-        f'<svg xmlns="http://www.w3.org/2000/svg" class="route" width="{drawn.width:.0f}" '
-        f'height="{drawn.height:.0f}" viewBox="0 0 {drawn.width:.0f} {drawn.height:.0f}" role="img">'
-        f"<title>{escape(in_words(steps, target))}</title><style>{STYLE}</style>"
-        f"{outline(drawn, target)}{values(drawn, steps)}</svg>\n"
+        (f'<g class="{" ".join(kinds)}">' if kinds else "<g>")
+        + f'<rect x="{box.x:.0f}" y="{box.y:.0f}" width="{box.width:.0f}" height="{box.height:.0f}" rx="2">'
+        + f"<title>{escape(VOCABULARY[step.quantity].meaning)}</title></rect>"
+        + f'<text x="{x}" y="{y}">{below}</text></g>'
     )

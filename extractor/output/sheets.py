@@ -5,11 +5,9 @@ Texts are never formulas or errors, numbers keep every digit, and what a cell ca
 
 from __future__ import annotations
 
-import io
 import math
 import re
 from collections.abc import Mapping
-from pathlib import Path
 
 import pandas as pd
 from openpyxl import Workbook
@@ -20,8 +18,6 @@ from openpyxl.worksheet.properties import PageSetupProperties
 from openpyxl.worksheet.worksheet import Worksheet
 
 from extractor.output.columns import is_text, texts
-from extractor.output.files import fixed_time
-from extractor.output.workbook import _canonical
 
 PLAIN = "plain"
 """In place of a format code: whole numbers without decimals, others with four."""
@@ -31,7 +27,9 @@ SANS = "Calibri"
 
 _UNPRINTABLE = re.compile("[\x00-\x08\x0b\x0c\x0e-\x1f\ud800-\udfff\ufffe\uffff]")
 _LONGEST = 32_767
-_SENTENCE, _WIDEST, _NARROWEST = 48, 40, 8
+_WIDEST, _NARROWEST = 40, 8
+_SENTENCE, _PARAGRAPH, _LINES = 48, 96, 4
+"""Letters on a line of sentences: at least, at most, and lines beyond which the column becomes wider."""
 _LINE = 15.0
 """Height of a line of text in points."""
 _SAMPLE = 400
@@ -141,20 +139,24 @@ def _heighten(sheet: Worksheet, frame: pd.DataFrame, wrapped: tuple[str, ...]) -
     lines = [1] * len(frame)
     for name in wrapped:
         if name in frame:
-            lines = [
-                max(most, -(-len(text) // (_SENTENCE - 4)))
-                for most, text in zip(lines, texts(frame[name]), strict=True)
-            ]
+            said = texts(frame[name])
+            letters = _letters(said) - 4
+            lines = [max(most, -(-len(text) // letters)) for most, text in zip(lines, said, strict=True)]
     for row, count in enumerate(lines, 2):
         if count > 1:
             sheet.row_dimensions[row].height = _LINE * min(count, 24)
 
 
+def _letters(said: list[str]) -> int:
+    """Letters on a line of a column of sentences: long ones get longer lines, so that rows stay low."""
+    return min(max(_SENTENCE, max(map(len, said), default=0) // _LINES), _PARAGRAPH)
+
+
 def _width(column: pd.Series, wrapped: bool) -> float:
-    if wrapped:
-        longest = max((len(text) for text in texts(column)), default=0)
-        return min(max(len(str(column.name)), longest, _NARROWEST), _SENTENCE) + 2
     name = str(column.name)
+    if wrapped:
+        said = texts(column)
+        return min(max(len(name), *map(len, said), _NARROWEST), _letters(said)) + 2
     if not is_text(column):
         return max(len(name), _NARROWEST) + 3
     longest = max((len(text) for text in texts(column.iloc[:_SAMPLE])), default=0)
@@ -168,17 +170,3 @@ def free_title(book: Workbook, title: str) -> str:
     while found.casefold() in taken:
         found, count = f"{title} {count}", count + 1
     return found
-
-
-def save(book: Workbook, path: Path) -> None:
-    """Write a workbook with the same bytes every time."""
-    path.write_bytes(_canonical(saved(book)))
-
-
-def saved(book: Workbook) -> bytes:
-    """The workbook as openpyxl writes it, with a fixed date."""
-    stamp = fixed_time().replace(tzinfo=None)
-    book.properties.created = book.properties.modified = stamp
-    stream = io.BytesIO()
-    book.save(stream)
-    return stream.getvalue()

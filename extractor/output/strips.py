@@ -29,9 +29,7 @@ def strip(row: Mapping[Hashable, Any], scale: Scale, side: float) -> str:
     low, high = row["estimate_low"], row["estimate_high"]
     if row["status"] == "blocked":
         return ""
-    parts = (
-        [_line("zero", scale.share(0.0), scale.share(0.0), 0, _HEIGHT)] if scale.low < 0 < scale.high else []
-    )
+    parts = []
     if row["status"] == "bounded":
         start = scale.share(low) if math.isfinite(low) else 0.0
         end = scale.share(high) if math.isfinite(high) else 1.0
@@ -52,6 +50,15 @@ def strip(row: Mapping[Hashable, Any], scale: Scale, side: float) -> str:
             f'width="{side:.1f}" height="{side:.1f}" transform="translate(-{half:.1f} 0)"/>'
         )
     return f'<svg class="strip" aria-hidden="true">{"".join(parts)}</svg>'
+
+
+def zero_line(scale: Scale) -> str:
+    """A rule of style that draws the line of no effect behind all rows at once; "" where zero is an end."""
+    if not scale.low < 0 < scale.high:
+        return ""
+    place = f"{_percent(scale.share(0.0))} 0/1px 100% content-box"
+    line = f"linear-gradient(var(--rule),var(--rule)) {place} no-repeat"
+    return f".forest [data-row]>:nth-child(2){{background:{line}}}"
 
 
 def _line(kind: str, start: float, end: float, top: float = _MIDDLE, bottom: float = _MIDDLE) -> str:

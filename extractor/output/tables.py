@@ -19,6 +19,7 @@ from extractor.errors import UsageError
 from extractor.output.columns import is_text, texts
 from extractor.output.files import fixed_time
 from extractor.output.workbook import write_xlsx
+from extractor.table import FloatArray
 
 Writer = Callable[[pd.DataFrame, Path], list[str]]
 
@@ -54,13 +55,12 @@ def write_csv(frame: pd.DataFrame, path: Path, *, raw: bool = False) -> list[str
 
 
 def csv_lines(frame: pd.DataFrame, change: Callable[[str], str] = neutralised) -> Iterator[str]:
-    """The lines of a csv file, each with its line feed."""
+    """The lines of a csv file, many at a time, each with its line feed."""
     yield ",".join(_quoted(change(str(name))) for name in frame.columns) + "\n"
     for start in range(0, len(frame), _CHUNK):
         part = frame.iloc[start : start + _CHUNK]
         columns = [_csv_cells(part.iloc[:, at], change) for at in range(part.shape[1])]
-        for cells in zip(*columns, strict=True):
-            yield ",".join(cells) + "\n"
+        yield "\n".join(map(",".join, zip(*columns, strict=True))) + "\n"
 
 
 def _quoted(text: str) -> str:
@@ -69,13 +69,20 @@ def _quoted(text: str) -> str:
 
 def _csv_cells(column: pd.Series, change: Callable[[str], str]) -> list[str]:
     if is_text(column):
-        known: dict[str, str] = {}
         shown = texts(column)
-        for text in shown:
-            if text not in known:
-                known[text] = _quoted(change(text))
-        return [known[text] for text in shown]
+        known = {text: _quoted(change(text)) for text in dict.fromkeys(shown)}
+        return list(map(known.__getitem__, shown))
+    if column.dtype == np.float64:
+        return number_texts(column.to_numpy(), ("", "INF", "-INF"))
     return [_number(value) for value in column.astype(object)]
+
+
+def number_texts(values: FloatArray, odd: tuple[str, str, str]) -> list[str]:
+    """Shortest texts that read back exactly; ``odd`` stand for NaN, infinity and minus infinity."""
+    found = list(map(repr, values.tolist()))
+    for at in np.flatnonzero(~np.isfinite(values)).tolist():
+        found[at] = odd[0] if np.isnan(values[at]) else odd[1] if values[at] > 0 else odd[2]
+    return found
 
 
 def _number(value: object) -> str:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Hashable, Sequence
+from collections.abc import Hashable, Mapping, Sequence
 from typing import Any
 
 import pandas as pd
@@ -13,8 +13,9 @@ from extractor.asking.batch import Unlocking
 from extractor.codebook_check import Pilot
 from extractor.output.terminal import between, counted, number, rows_in_words, say
 from extractor.routes.sensitivity import Sensitivity
-from extractor.runs.changes import Comparison, in_words
-from extractor.words import listed
+from extractor.runs.changes import STILL, Comparison
+from extractor.runs.matching import KEYS
+from extractor.words import listed, plain
 
 _MOST_QUESTIONS = 8
 _MOST_STUDIES = 3
@@ -81,6 +82,8 @@ def show_sensitivity(to: Console, sensitivity: Sensitivity, routes: pd.DataFrame
     """Which assumption matters, and in which rows the choice of route does."""
     if not len(sensitivity.assumptions):
         say(to, "No effect rests on an assumption.")
+    else:
+        say(to, Text("What rests on assumptions, the one that moves an effect most first", "bold"))
     for line in sensitivity.assumptions.to_dict("records"):
         rows = counted(int(line["rows"]), "row")
         if pd.isna(line["range_low"]):
@@ -90,11 +93,11 @@ def show_sensitivity(to: Console, sensitivity: Sensitivity, routes: pd.DataFrame
         if not line["rows"]:
             say(to, f"{line['assumption']} from {span}: no effect rests on it", 0, 2)
             continue
-        most = f"{number(line['largest_swing'])} in row {line['largest_row']}"
         errors = (
             f", {number(line['largest_in_se'])} standard errors" if pd.notna(line["largest_in_se"]) else ""
         )
-        moved = f"moved by {number(line['median_swing'])} at the median and by {most}{errors}"
+        most = f"{number(line['largest_swing'])} (row {int(line['largest_row'])}{errors})"
+        moved = f"moved by {number(line['median_swing'])} at the median and by at most {most}"
         say(to, f"{line['assumption']} from {span}: {rows}, {moved}", 0, 2)
     apart = routes[routes["beyond_rounding"].astype(bool)]
     several = int((routes["routes"] > 1).sum())
@@ -115,13 +118,12 @@ def show_comparison(to: Console, comparison: Comparison) -> None:
     """Every effect that moved with its cause, then what differs between the runs as a whole."""
     if comparison.incomparable:
         say(to, Text(comparison.incomparable, "yellow"))
-    for line in comparison.effects.head(_MOST_LINES).to_dict("records"):
-        say(to, in_words(line), 0, 2)
-    if len(comparison.effects) > _MOST_LINES:
-        say(
-            to,
-            f"... and {counted(len(comparison.effects) - _MOST_LINES, 'effect')} more; --out FILE writes all of them",
-        )
+    lines = _alike(comparison.effects)
+    for some in lines[:_MOST_LINES]:
+        say(to, change_in_words(some), 0, 2)
+    more = sum(map(len, lines[_MOST_LINES:]))
+    if more:
+        say(to, f"... and {counted(more, 'effect')} more; --out FILE writes all of them")
     if not len(comparison.effects):
         say(to, "No effect moved.")
     else:
@@ -132,6 +134,27 @@ def show_comparison(to: Console, comparison: Comparison) -> None:
         )
     _show_list(to, "Changed without moving an effect", comparison.unmoved)
     _show_list(to, "Between the runs as a whole", comparison.settings)
+
+
+def _alike(effects: pd.DataFrame) -> list[list[dict[Hashable, Any]]]:
+    """Lines of the comparison, those together of which the same is to be said: no estimate moved, for one reason."""
+    found: dict[tuple[object, ...], list[dict[Hashable, Any]]] = {}
+    for at, line in enumerate(effects.to_dict("records")):
+        key = (line["change"], line["why"]) if line["change"] in STILL else (at,)
+        found.setdefault(key, []).append(line)
+    return list(found.values())
+
+
+def change_in_words(lines: Sequence[Mapping[Hashable, Any]]) -> str:
+    """Lines of the comparison that differ in their rows only, as a sentence."""
+    line = lines[0]
+    rows = rows_in_words(int(each["row"] if pd.notna(each["row"]) else each["old_row"]) for each in lines)
+    labels = ", ".join(str(line[name]) for name in KEYS if line[name]) if len(lines) == 1 else ""
+    said = f"{rows}{f' ({labels})' if labels else ''}: {line['change']}"
+    if line["change"] not in STILL and pd.notna(line["estimate_new"]):
+        before = f"{plain(line['estimate_old'])} ->" if pd.notna(line["estimate_old"]) else "now"
+        said += f", {before} {plain(line['estimate_new'])}"
+    return f"{said}. {str(line['cause']).capitalize()}: {line['why']}"
 
 
 def show_pilot(to: Console, pilot: Pilot, duplicates: pd.DataFrame, headings: Sequence[str]) -> None:

@@ -40,8 +40,6 @@ def write_xlsx(frame: pd.DataFrame, path: Path) -> list[str]:
     if len(frame) >= _MOST_ROWS:
         raise UsageError(f"--format xlsx holds at most {_MOST_ROWS - 1} rows, these are {len(frame)}")
     book = Workbook(write_only=True)
-    stamp = fixed_time().replace(tzinfo=None)
-    book.properties.created = book.properties.modified = stamp
     book.properties.creator = "Extractor"
     sheet = book.create_sheet(path.stem)
     words = _Words(sheet)
@@ -64,9 +62,7 @@ def write_xlsx(frame: pd.DataFrame, path: Path) -> list[str]:
     ]
     for cells in zip(*made, strict=True):
         sheet.append(cells)
-    stream = io.BytesIO()
-    book.save(stream)
-    path.write_bytes(_canonical(stream.getvalue()))
+    save(book, path)
     return words.notes()
 
 
@@ -116,8 +112,20 @@ def _width(column: pd.Series) -> float:
     return min(max(len(str(column.name)), longest), _WIDEST) + 2
 
 
-def _canonical(content: bytes) -> bytes:
-    """The same archive with sorted members and a fixed time in place of the clock's."""
+def save(book: Workbook, path: Path) -> None:
+    """Write a workbook with the same bytes every time."""
+    path.write_bytes(without_clock(saved(book)))
+
+
+def saved(book: Workbook) -> bytes:
+    """The workbook as openpyxl writes it, with the time of the clock in it."""
+    stream = io.BytesIO()
+    book.save(stream)
+    return stream.getvalue()
+
+
+def without_clock(content: bytes) -> bytes:
+    """A saved workbook with sorted members and a fixed time in place of the clock's: equal content, equal bytes."""
     stamp = fixed_time()
     moment = stamp.timetuple()[:6]
     dated = stamp.strftime("%Y-%m-%dT%H:%M:%SZ").encode()

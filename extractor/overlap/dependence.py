@@ -1,16 +1,7 @@
 """Effects that share participants: their covariances, and the matrix a synthesis needs.
 
-For standardised mean differences d1 = sum w_j M_j / s1 and d2 = sum u_k M_k / s2 over groups that both rows have,
-
-    Cov(d1, d2) = rho sum w_j u_j / n_j + rho² d1 d2 n_shared / (2 N1 N2)
-
-where n_shared counts the participants behind both standard deviations, N1 and N2 those behind each, and rho is the
-correlation of the two outcomes, 1 for one outcome. It contains the large-sample formulas of Gleser & Olkin (2009):
-contrasts of one analysis of variance share its whole error term, so that the last factor is 1 / (2N), and with one
-control group the sum is 1 / n_C; for two outcomes of the same groups it is rho (1/n1 + 1/n2) + rho² d1 d2 / (2N).
-For two comparisons that share only the control group, each with its own pooled standard deviation, the last factor
-follows by the delta method from Cov(s1², s2²). g takes the small-sample factors of both rows. For log odds ratios
-that share the group with cells c and d the covariance is 1/c + 1/d.
+Two rows of one study either have a covariance, by a formula of ``covariances``, or a reason why none can be computed.
+They are never taken for independent in silence. Another time of measurement counts as another outcome.
 """
 
 from __future__ import annotations
@@ -20,55 +11,69 @@ from dataclasses import dataclass
 import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
+from scipy.sparse import coo_array
+from scipy.sparse.csgraph import connected_components
 
 from extractor.api import Result
 from extractor.errors import UsageError
+from extractor.overlap.covariances import (
+    contrast_covariance,
+    correlation_covariance,
+    difference_covariance,
+    logit_covariance,
+)
+from extractor.overlap.shared_groups import Pairs, coded_groups
+from extractor.printed.reading import quoted
+from extractor.quantities import VOCABULARY
 from extractor.sampling.moments import small_sample_factor
 from extractor.table import Assumption, BoolArray, FloatArray, ObjectArray, ReportedTable
 from extractor.words import listed
 
 COLUMNS = ["row", "other_row", "covariance", "why"]
-UNRESOLVED = ["row", "other_row", "why"]
 
-_STANDARDIZED = ("cohens_d", "hedges_g")
-_SHARED_MODEL = ("two-group", "one-way", "factorial")
-"""Designs whose contrasts stand on the groups that are coded and on the error term they share."""
+_LOGISTIC = float(np.pi / np.sqrt(3))
 _SMALLEST = 1e-10
 """Smallest eigenvalue of a matrix of correlations that still counts as positive."""
+_MOST = 1_500
+"""Rows of one study beyond which not every one is paired with every other."""
+
+_UNSHARED = (
+    "cannot be computed, because no shared group is recognised in these rows of one study; give rows of one model the "
+    "same analysis, and times of the same participants different outcomes"
+)
+_NO_SIZES = "cannot be computed, because not both rows give the sizes of independent groups"
+_NO_CORRELATION = "cannot be computed, because two outcomes of the same groups need their correlation"
+_NO_CONTRAST = "cannot be computed, because not both rows say which groups they compare"
+_STANDARDIZER = (
+    "cannot be computed, because it would take the correlations of all measurements: the standardizer is not the "
+    "pooled SD in both rows"
+)
+_ONE_GROUP = "cannot be computed, because no formula is known for two correlations that share one group"
+_UNLIKE_SOURCES = "cannot be computed, because one log odds ratio comes from counts and the other does not"
+
+Answer = tuple[FloatArray, ObjectArray]
+"""Covariance of each pair, NaN where it has none, and why, or why not."""
 
 
 @dataclass(frozen=True, slots=True)
 class Dependence:
-    """Pairs of effects that share participants.
+    """Pairs of effects that share participants, or may.
 
-    pairs : ``row``, ``other_row``, ``covariance`` and ``why``; each pair once, independent rows have no entry.
-    unresolved : pairs that share participants, or may, and for which no covariance could be had, with the reason.
+    table : ``row``, ``other_row``, ``covariance`` and ``why``; each pair once, in the order of the sheet. The
+        covariance is blank where none can be computed, for the reason given. Independent rows have no entry.
     """
 
-    pairs: pd.DataFrame
-    unresolved: pd.DataFrame
+    table: pd.DataFrame
 
+    @property
+    def pairs(self) -> pd.DataFrame:
+        """Those with a covariance."""
+        return self.table[self.table["covariance"].notna()].reset_index(drop=True)
 
-def contrast_covariance(
-    weighted: FloatArray,
-    d_one: FloatArray,
-    d_two: FloatArray,
-    n_shared: FloatArray,
-    n_one: FloatArray,
-    n_two: FloatArray,
-    rho: FloatArray | float = 1.0,
-) -> FloatArray:
-    """Large-sample covariance of two standardised contrasts; all arguments of one shape.
-
-    Parameters
-    ----------
-    weighted : sum over the shared groups of w_j u_j / n_j.
-    n_shared, n_one, n_two : participants behind both standard deviations, and behind each.
-    rho : correlation of the two outcomes; 1 for one outcome.
-
-    Source: Gleser & Olkin (2009), and the delta method where only some groups are shared.
-    """
-    return np.asarray(rho * weighted + rho**2 * d_one * d_two * n_shared / (2 * n_one * n_two))
+    @property
+    def unresolved(self) -> pd.DataFrame:
+        """Those without."""
+        return self.table[self.table["covariance"].isna()].reset_index(drop=True)
 
 
 def dependence(result: Result, outcomes: Assumption | None = None) -> Dependence:
@@ -76,51 +81,60 @@ def dependence(result: Result, outcomes: Assumption | None = None) -> Dependence
 
     Parameters
     ----------
-    outcomes : correlation of two outcomes measured on the same participants, and who supplied it; without it such
-        pairs stay unresolved.
+    outcomes : correlation of two outcomes of the same participants within their groups, and who supplied it; without
+        it such pairs stay unresolved.
 
     Raises
     ------
     UsageError
         where the covariances of a study's effects do not go with their variances: the matrix would not be positive
-        definite. It names the rows.
+        definite. It names the rows. Also where a study has too many rows.
     """
-    found = _Pairs(result, outcomes)
-    answer = Dependence(*found.tables())
+    answer = Dependence(_Pairs(result, outcomes).table())
     check_positive(result.effects, answer.pairs)
     return answer
 
 
 def covariance_matrix(effects: pd.DataFrame, pairs: pd.DataFrame) -> tuple[NDArray[np.int64], FloatArray]:
-    """The row numbers of all effects with a variance, and their covariance matrix, of shape (effects, effects)."""
-    usable = effects[(effects["status"] == "converted") & (effects["variance"] > 0)]
+    """The row numbers of all effects with a variance, and their covariance matrix, of shape (effects, effects).
+
+    It is NaN for pairs whose covariance is, and 0 for those that are not listed.
+    """
+    usable = effects[_usable(effects)]
     rows = usable["row"].to_numpy(dtype=np.int64)
     matrix = np.diag(usable["variance"].to_numpy(dtype=float))
-    one, two = (np.searchsorted(rows, pairs[name].to_numpy(dtype=np.int64)) for name in ("row", "other_row"))
+    one, two = _places(rows, pairs)
     matrix[one, two] = matrix[two, one] = pairs["covariance"].to_numpy(dtype=float)
     return rows, matrix
 
 
 def check_positive(effects: pd.DataFrame, pairs: pd.DataFrame) -> None:
     """Raise ``UsageError`` unless every block of dependent effects has a positive definite covariance matrix."""
-    left = {int(row) for name in ("row", "other_row") for row in pairs[name]}
-    while left:
-        members = {min(left)}
-        while True:
-            touched = pairs["row"].isin(members) | pairs["other_row"].isin(members)
-            grown = members | set(pairs.loc[touched, "row"]) | set(pairs.loc[touched, "other_row"])
-            if grown == members:
-                break
-            members = grown
-        rows, matrix = covariance_matrix(effects[effects["row"].isin(members)], pairs[touched])
+    usable = effects[_usable(effects)]
+    rows = usable["row"].to_numpy(dtype=np.int64)
+    one, two = _places(rows, pairs)
+    links = coo_array((np.ones(len(one)), (one, two)), shape=(len(rows), len(rows)))
+    _, block = connected_components(links, directed=False)
+    block_of_pair = block[one]
+    for label in np.unique(block_of_pair):
+        found, matrix = covariance_matrix(usable[block == label], pairs[block_of_pair == label])
         scale = np.sqrt(np.diag(matrix))
         if float(np.linalg.eigvalsh(matrix / np.outer(scale, scale)).min()) < _SMALLEST:
-            named = listed([str(row) for row in rows])
             raise UsageError(
-                f"the covariance matrix of rows {named} is not positive definite: is one effect coded twice, is a "
-                "contrast the sum of others, or is the assumed correlation too high?"
+                f"the covariance matrix of rows {listed([str(row) for row in found])} is not positive definite: is one "
+                "effect coded twice, is a contrast the sum of others, or is the assumed correlation too high?"
             )
-        left -= members
+
+
+def _usable(effects: pd.DataFrame) -> BoolArray:
+    """Effects that can be pooled."""
+    return np.asarray((effects["status"] == "converted") & (effects["variance"] > 0))
+
+
+def _places(rows: NDArray[np.int64], pairs: pd.DataFrame) -> tuple[Pairs, Pairs]:
+    """Where the rows of each pair stand among ``rows``, which rise."""
+    one, two = (np.searchsorted(rows, pairs[name].to_numpy(dtype=np.int64)) for name in ("row", "other_row"))
+    return one, two
 
 
 class _Pairs:
@@ -132,61 +146,34 @@ class _Pairs:
         self.metric = result.conversion.metric
         self.row = effects["row"].to_numpy(dtype=np.int64)
         self.estimate = effects["estimate"].to_numpy(dtype=float)
-        self.usable = ((effects["status"] == "converted") & (effects["variance"] > 0)).to_numpy()
+        self.variance = effects["variance"].to_numpy(dtype=float)
+        self.n_total = effects["n_total"].to_numpy(dtype=float)
+        self.usable = _usable(effects)
         self.pooled = (effects["standardizer"] == "pooled").to_numpy()
         self.from_counts = effects["route"].str.startswith("count_a, count_b, count_c, count_d").to_numpy()
         self.study = effects["study"].astype(str).to_numpy(dtype=object)
-        self.outcome = effects["outcome"].astype(str).to_numpy(dtype=object)
-        self.analysis = table.fact("analysis").astype(str)
-        self.design: ObjectArray = np.full(len(self.row), "", dtype=object)
-        self._groups(result)
-        self.counts = np.stack([_column(table, f"count_{cell}") for cell in "abcd"], axis=1)
+        self.groups = coded_groups(result)
+        self.cells = np.stack([_column(table, f"count_{cell}") for cell in "abcd"], axis=1).reshape(-1, 2, 2)
 
-    def _groups(self, result: Result) -> None:
-        """Sizes, means, SDs and contrast weights of the coded groups: shape (rows, groups), NaN where none."""
-        blocks = [chosen.block for chosen in result.conversion.chosen]
-        widest = max((block.groups for block in blocks), default=0)
-        shape = (len(self.row), max(widest, 1))
-        self.known = {name: np.full(shape, np.nan) for name in ("n", "mean", "sd", "contrast_weight")}
-        for block in blocks:
-            self.design[block.positions] = block.design
-            for name, into in self.known.items():
-                leaf = block.leaves.get(name)
-                if leaf is not None:
-                    width = min(leaf.value.shape[1], shape[1])
-                    into[block.positions, :width] = leaf.value[:, :width]
-        flipped = result.conversion.evidence.table.fact("orientation") == "-"
-        self.known["contrast_weight"][flipped] *= -1
-        self.side = np.where(flipped, 1.0, -1.0)
-        self.complete = np.isfinite(self.known["n"]).sum(axis=1) >= 2
-
-    def tables(self) -> tuple[pd.DataFrame, pd.DataFrame]:
-        """The pairs with a covariance, and those without."""
+    def table(self) -> pd.DataFrame:
+        """Every pair of rows of one study."""
         one, two = self._candidates()
-        resolved, covariance, why = self._resolve(one, two)
-        pairs = pd.DataFrame(
-            {
-                "row": self.row[one[resolved]],
-                "other_row": self.row[two[resolved]],
-                "covariance": covariance[resolved],
-                "why": why[resolved],
-            },
-            columns=COLUMNS,
-        )
-        rest = ~resolved & (why != "")
-        unresolved = pd.DataFrame(
-            {"row": self.row[one[rest]], "other_row": self.row[two[rest]], "why": why[rest]},
-            columns=UNRESOLVED,
-        )
-        return pairs, unresolved
+        covariance, why = self._resolve(one, two)
+        columns = (self.row[one], self.row[two], covariance, why)
+        return pd.DataFrame(dict(zip(COLUMNS, columns, strict=True)), columns=COLUMNS)
 
-    def _candidates(self) -> tuple[NDArray[np.intp], NDArray[np.intp]]:
+    def _candidates(self) -> tuple[Pairs, Pairs]:
         """Pairs of usable rows of one study, the earlier row first."""
         rows = np.flatnonzero(self.usable & (self.study != ""))
         label = pd.Series(self.study[rows])
         ones, twos = [np.empty(0, dtype=np.intp)], [np.empty(0, dtype=np.intp)]
-        for _, members in sorted(label.groupby(label).groups.items()):
+        for study, members in sorted(label.groupby(label).groups.items()):
             own = rows[np.asarray(members, dtype=np.intp)]
+            if len(own) > _MOST:
+                raise UsageError(
+                    f"covariances are computed for studies of at most {_MOST} effects, {quoted(str(study))} has "
+                    f"{len(own)}: is the column study what it should be?"
+                )
             first, second = np.triu_indices(len(own), k=1)
             ones.append(own[first])
             twos.append(own[second])
@@ -194,102 +181,111 @@ class _Pairs:
         order = np.lexsort((self.row[two], self.row[one]))
         return one[order], two[order]
 
-    def _resolve(
-        self, one: NDArray[np.intp], two: NDArray[np.intp]
-    ) -> tuple[BoolArray, FloatArray, ObjectArray]:
-        """For each pair whether it has a covariance, the covariance, and why, or why not."""
-        nothing = np.full(len(one), np.nan)
+    def _resolve(self, one: Pairs, two: Pairs) -> Answer:
+        """Covariance and reason of each pair."""
+        if self.metric in ("cohens_d", "hedges_g", "mean_difference", "r", "fisher_z"):
+            return self._contrasts(one, two)
         if self.metric == "log_odds_ratio":
-            return self._odds(one, two)
-        if self.metric not in _STANDARDIZED:
-            why = np.full(len(one), "rows of one study; no covariance is known for this metric", dtype=object)
-            return np.zeros(len(one), dtype=bool), nothing, why
-        match = self._matches(one, two)
-        shares = match.any(axis=(1, 2))
-        w, u = self.known["contrast_weight"][one], self.known["contrast_weight"][two]
-        n = self.known["n"][one]
-        with np.errstate(invalid="ignore"):
-            products = np.where(match, w[:, :, None] * u[:, None, :] / n[:, :, None], 0.0)
-            shared = np.where(match.any(axis=2), n, 0.0).sum(axis=1)
-        sizes = np.nansum(self.known["n"], axis=1)
-        factor = np.ones(len(self.row))
-        if self.metric == "hedges_g":
-            factor = small_sample_factor(sizes - np.isfinite(self.known["n"]).sum(axis=1))
-        same = self.outcome[one] == self.outcome[two]
+            counted = self.from_counts[one].astype(int) + self.from_counts[two]
+            unlike = (np.full(len(one), np.nan), np.full(len(one), _UNLIKE_SOURCES, dtype=object))
+            choices = (self._contrasts(one, two), unlike, self._odds(one, two))
+            covariance, why = (np.choose(counted, [choice[part] for choice in choices]) for part in (0, 1))
+            return covariance, why
+        symbol = VOCABULARY[self.metric].symbol
+        why = np.full(len(one), f"cannot be computed, because no formula is known for {symbol}", dtype=object)
+        return np.full(len(one), np.nan), why
+
+    def _contrasts(self, one: Pairs, two: Pairs) -> Answer:
+        """Contrasts of groups of which some are shared."""
+        match = self.groups.matches(one, two)
+        same = self.groups.outcome[one] == self.groups.outcome[two]
         rho = np.where(same, 1.0, self.outcomes.value if self.outcomes else np.nan)
+        weighted, shared = self.groups.weighted(one, two, match)
         with np.errstate(all="ignore"):
-            d = self.estimate / factor
-            plain = contrast_covariance(
-                products.sum(axis=(1, 2)), d[one], d[two], shared, sizes[one], sizes[two], rho
-            )
-            covariance = plain * factor[one] * factor[two]
-        fits = self.pooled[one] & self.pooled[two]
-        resolved = shares & fits & np.isfinite(covariance)
-        return resolved, covariance, self._words(match, same, fits, resolved)
+            if self.metric == "mean_difference":
+                sd = np.sqrt(self.variance / self.groups.squared())
+                covariance = difference_covariance(weighted, sd[one], sd[two], rho)
+            elif self._correlates:
+                covariance = self._correlations(one, two, np.sign(weighted), rho)
+            else:
+                scale = self._scale()
+                d, sizes = self.estimate / scale, self.groups.sizes
+                covariance = contrast_covariance(
+                    weighted, d[one], d[two], shared, sizes[one], sizes[two], rho
+                )
+                covariance *= scale[one] * scale[two]
+        return self._judged(one, two, match, same, covariance)
 
-    def _matches(self, one: NDArray[np.intp], two: NDArray[np.intp]) -> BoolArray:
-        """Which group of the one row is which of the other: shape (pairs, groups, groups).
+    def _scale(self) -> FloatArray:
+        """What d is multiplied by to give the estimate."""
+        if self.metric == "log_odds_ratio":
+            return np.full(len(self.row), _LOGISTIC)
+        if self.metric == "hedges_g":
+            return np.asarray(small_sample_factor(self.groups.sizes - self.groups.counted))
+        return np.ones(len(self.row))
 
-        In rows of one analysis, and in rows of unlike outcomes, groups of the same sizes correspond by number, unless
-        their means or SDs say otherwise. In other rows with two groups each, a group is the same where its n, mean
-        and SD are printed and equal.
-        """
-        n, other = self.known["n"][one], self.known["n"][two]
-        alike = ((n == other) | (np.isnan(n) & np.isnan(other))).all(axis=1) & self.complete[one]
-        designs = np.isin(self.design[one], _SHARED_MODEL) & (self.design[one] == self.design[two])
-        labelled = (self.analysis[one] != "") & (self.analysis[one] == self.analysis[two])
-        unlike = self.outcome[one] != self.outcome[two]
-        numbered = alike & designs & ((labelled & ~self._contradict(one, two)) | unlike)
-        identity = np.eye(n.shape[1], dtype=bool)[None] & np.isfinite(n)[:, :, None]
-        equal = np.ones((len(one), n.shape[1], n.shape[1]), dtype=bool)
-        for name in ("n", "mean", "sd"):
-            equal &= self.known[name][one][:, :, None] == self.known[name][two][:, None, :]
-        two_groups = designs & (self.design[one] == "two-group")
-        printed = equal & (two_groups & ~numbered & ~unlike)[:, None, None]
-        return np.asarray((identity & numbered[:, None, None]) | printed)
+    def _correlations(self, one: Pairs, two: Pairs, side: FloatArray, rho: FloatArray) -> FloatArray:
+        """Correlations of two outcomes with the same two groups; side is -1 where one of the contrasts is turned."""
+        r = self.estimate if self.metric == "r" else np.tanh(self.estimate)
+        first, second = r[one], side * r[two]
+        covariance = side * correlation_covariance(first, second, rho)
+        if self.metric == "r":
+            return np.asarray(covariance / (self.n_total[one] - 1))
+        return np.asarray(covariance / ((1 - first**2) * (1 - second**2) * (self.n_total[one] - 3)))
 
-    def _contradict(self, one: NDArray[np.intp], two: NDArray[np.intp]) -> BoolArray:
-        """Whether a group of one number has one mean or SD in the one row and another in the other."""
-        found = np.zeros(len(one), dtype=bool)
-        for name in ("mean", "sd"):
-            here, there = self.known[name][one], self.known[name][two]
-            found |= (np.isfinite(here) & np.isfinite(there) & (here != there)).any(axis=1)
-        return found
-
-    def _words(self, match: BoolArray, same: BoolArray, fits: BoolArray, resolved: BoolArray) -> ObjectArray:
-        """Why a pair has its covariance, or has none."""
+    def _judged(
+        self, one: Pairs, two: Pairs, match: BoolArray, same: BoolArray, covariance: FloatArray
+    ) -> Answer:
+        """The covariances that stand, and the reasons."""
         groups = match.sum(axis=(1, 2))
-        every = groups == np.maximum(groups, 2)
-        said = np.full(len(same), "rows of one study in which no shared group is recognised", dtype=object)
-        said[same & every] = "contrasts of the same groups"
-        said[same & (groups == 1)] = "one group has the same n, mean and SD in both rows"
-        if self.outcomes is not None:
-            rho = f"correlation {self.outcomes.value:g} ({self.outcomes.by})"
-            said[~same & every] = f"two outcomes of the same groups, {rho}"
-        else:
-            said[~same & every] = "two outcomes of the same groups; their correlation is needed"
-        unlike = ~resolved & (groups > 0) & ~fits
-        said[unlike] = "the standardizers are not both the pooled SD, for which alone the covariance is known"
-        return said
-
-    def _odds(
-        self, one: NDArray[np.intp], two: NDArray[np.intp]
-    ) -> tuple[BoolArray, FloatArray, ObjectArray]:
-        """Log odds ratios from counts that share the second group."""
-        counts = self.from_counts[one] & self.from_counts[two] & (self.outcome[one] == self.outcome[two])
-        same = (self.counts[one, 2:] == self.counts[two, 2:]).all(axis=1)
-        # the sign of the second group in each contrast
-        side = np.sign(self.known["contrast_weight"][:, 1]) if self.known["n"].shape[1] > 1 else self.side
-        side = np.where(np.isfinite(side), side, self.side)
-        with np.errstate(all="ignore"):
-            covariance = side[one] * side[two] * (1 / self.counts[one, 2:]).sum(axis=1)
-        resolved = counts & same & np.isfinite(covariance)
-        why = np.where(
-            resolved,
-            "the second group has the same cells in both rows",
-            "rows of one study in which no shared group is recognised",
+        fits = np.ones(len(one), dtype=bool)
+        if self._correlates:
+            fits = groups != 1
+        elif self.metric in ("cohens_d", "hedges_g"):
+            fits = self.pooled[one] & self.pooled[two]
+        known = (groups > 0) & fits & np.isfinite(covariance)
+        said = [
+            (known & (groups == 1), "one group has the same n, mean and SD in both rows"),
+            (known & same, "contrasts of the same groups"),
+            (known, self._two_outcomes()),
+            ((groups > 0) & ~fits, _ONE_GROUP if self._correlates else _STANDARDIZER),
+            ((groups > 0) & ~same, self._two_outcomes()),
+            (groups > 0, _NO_CONTRAST),
+            (self.groups.sized[one] & self.groups.sized[two], _UNSHARED),
+        ]
+        why = np.select(
+            [those for those, _ in said], [np.array(word, dtype=object) for _, word in said], _NO_SIZES
         )
-        return resolved, covariance, np.asarray(why, dtype=object)
+        return np.where(known, covariance, np.nan), np.asarray(why, dtype=object)
+
+    @property
+    def _correlates(self) -> bool:
+        return self.metric in ("r", "fisher_z")
+
+    def _two_outcomes(self) -> str:
+        """Why two outcomes of the same groups have a covariance, or have none."""
+        if self.outcomes is None:
+            return _NO_CORRELATION
+        return f"two outcomes of the same groups, correlation {self.outcomes.value:g} ({self.outcomes.by})"
+
+    def _odds(self, one: Pairs, two: Pairs) -> Answer:
+        """Log odds ratios from counts: of one outcome with a group in common, or of two outcomes of the same groups."""
+        here, there = self.cells[one], self.cells[two]
+        same = self.groups.outcome[one] == self.groups.outcome[two]
+        second = (here[:, 1] == there[:, 1]).all(axis=1)
+        first = (here[:, 0] == there[:, 0]).all(axis=1) & ~second
+        sized = (here.sum(axis=2) == there.sum(axis=2)).all(axis=1)
+        phi = self.outcomes.value if self.outcomes else np.nan
+        with np.errstate(all="ignore"):
+            shared = logit_covariance(here, here)
+            both = logit_covariance(here, there, phi).sum(axis=1)
+        choices = [same & second, same & first, ~same & sized]
+        side = self.groups.side[one] * self.groups.side[two]
+        covariance = np.select(choices, [shared[:, 1], shared[:, 0], both], np.nan) * side
+        words = [f"the {which} group has the same cells in both rows" for which in ("second", "first")]
+        said = [np.array(word, dtype=object) for word in (*words, self._two_outcomes())]
+        why = np.select(choices, said, _UNSHARED)
+        return np.where(np.isfinite(covariance), covariance, np.nan), np.asarray(why, dtype=object)
 
 
 def _column(table: ReportedTable, name: str) -> FloatArray:

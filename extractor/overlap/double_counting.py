@@ -8,18 +8,22 @@ belong rows of one study, and tests of different studies that were coded without
 from __future__ import annotations
 
 from collections.abc import Iterator, Sequence
+from typing import TYPE_CHECKING
 
 import numpy as np
-import pandas as pd
 from numpy.typing import NDArray
 
 from extractor.audit.support import finding_at, groups_in, shown, value_of
-from extractor.coders.matching import compared, plain_label
 from extractor.contrast import contrast_weights
+from extractor.distinct import distinct, together
 from extractor.evidence import Evidence
 from extractor.findings import Finding, Severity
+from extractor.labels import compared, plain_label
 from extractor.table import BoolArray, FloatArray, ReportedTable, Variable
 from extractor.words import listed
+
+if TYPE_CHECKING:
+    import pandas as pd
 
 ARM, CONTRASTS, SAMPLE, TEST = (
     "same arm in several rows",
@@ -37,9 +41,11 @@ _DIGITS = 3
 """A test statistic with fewer significant digits is the same in two studies by chance."""
 
 
-def double_counted(evidence: Evidence) -> Iterator[Finding]:
-    """Notes on rows that may rest on the same arm or the same participants."""
+def double_counted(evidence: Evidence, across: bool = True) -> Iterator[Finding]:
+    """Notes on rows that may rest on the same arm or the same participants; ``across`` studies where asked for."""
     table = evidence.table
+    if table.rows < 2:
+        return
     labels = _Labels(table)
     arms = _shared_arms(table, labels)
     yield from arms.values()
@@ -47,7 +53,7 @@ def double_counted(evidence: Evidence) -> Iterator[Finding]:
     said = np.zeros(table.rows, dtype=bool)
     said[list(arms)] = True
     yield from _same_sizes(table, labels, said)
-    yield from _same_tests(table, labels, said)
+    yield from _same_tests(table, labels, said, across)
 
 
 class _Labels:
@@ -64,15 +70,14 @@ class _Labels:
         return [r for r in rows if r != row and (own == "" or self.analysis[r] != own)]
 
 
-def _clusters(keys: pd.DataFrame, rows: NDArray[np.intp]) -> Iterator[list[int]]:
+def _clusters(keys: Sequence[NDArray[np.generic]], rows: NDArray[np.intp]) -> Iterator[list[int]]:
     """Rows with equal keys, two or more distinct ones at a time, in the order of the sheet; the first of very many."""
-    again = keys.duplicated(keep=False).to_numpy()
-    for _, members in pd.Series(rows[again]).groupby(
-        keys[again].groupby(list(keys), sort=False).ngroup().to_numpy()
-    ):
-        distinct = sorted(set(members.tolist()))
-        if len(distinct) > 1:
-            yield distinct[:_LARGEST]
+    _, codes = distinct(list(zip(*(key.tolist() for key in keys), strict=True)))
+    again = np.bincount(codes, minlength=1)[codes] > 1
+    for members in together(rows[again], codes[again]):
+        several = sorted(set(members.tolist()))
+        if len(several) > 1:
+            yield several[:_LARGEST]
 
 
 def _named(table: ReportedTable, rows: Sequence[int]) -> str:
@@ -89,6 +94,8 @@ def _note(table: ReportedTable, row: int, rule: str, cells: Sequence[Variable], 
 
 def _arms(table: ReportedTable, labels: _Labels) -> pd.DataFrame:
     """One line per group whose size, mean and SD or SE are printed, not all of them whole numbers."""
+    import pandas as pd
+
     parts = []
     for group in groups_in(table):
         n, mean, sd, se = (value_of(table, (name, group)) for name in ("n", "mean", "sd", "se"))
@@ -147,7 +154,7 @@ def _shared_groups(table: ReportedTable, labels: _Labels) -> Iterator[Finding]:
         for name in ("n", "mean"):
             groups[np.isfinite(value_of(table, (name, group)))] = group
     rows = np.flatnonzero((labels.analysis != "") & (groups > 2))
-    keys = pd.DataFrame({"study": labels.study[rows], "analysis": labels.analysis[rows]})
+    keys = (labels.study[rows], labels.analysis[rows])
     for cluster in _clusters(keys, rows):
         used = {row: _weighed(contrast[row], int(groups[row])) for row in cluster}
         for row in cluster:
@@ -185,8 +192,8 @@ def _same_sizes(table: ReportedTable, labels: _Labels, said: BoolArray) -> Itera
     total = np.where(sized, np.nan, _total(table))
     rows = np.flatnonzero((labels.study != "") & (sized | np.isfinite(total)))
     sizes = np.sort(np.where(sized[:, None], n, np.nan), axis=1)
-    keys = pd.DataFrame(np.nan_to_num(np.column_stack([sizes, total])[rows], nan=-1.0))
-    keys.insert(0, "study", labels.study[rows])
+    printed = {name: np.isfinite(value_of(table, (name, None))) for name in ("n_total", "df_error", "df")}
+    keys = (labels.study[rows], *np.nan_to_num(np.column_stack([sizes, total])[rows], nan=-1.0).T)
     for cluster in _clusters(keys, rows):
         for row in cluster:
             others = [r for r in labels.others(cluster, row) if not (said[r] and said[row])]
@@ -196,8 +203,7 @@ def _same_sizes(table: ReportedTable, labels: _Labels, said: BoolArray) -> Itera
             cells: list[Variable] = [("n", g) for g, _ in sizes_of]
             what = f"group sizes {listed([size for _, size in sizes_of])} stand"
             if not sized[row]:
-                printed = [name for name in ("n_total", "df_error", "df") if _has(table, name, row)]
-                cells = [(printed[0], None)]
+                cells = [(next(name for name, given in printed.items() if given[row]), None)]
                 what = f"{total[row]:g} participants stand"
             asked = "if they are the same people, these effects are not independent"
             message = f"{what} in {_named(table, others)} of this study, too: {asked}"
@@ -215,11 +221,7 @@ def _total(table: ReportedTable) -> FloatArray:
     return np.where(np.isnan(printed), implied, printed)
 
 
-def _has(table: ReportedTable, name: str, row: int) -> bool:
-    return bool(np.isfinite(value_of(table, (name, None))[row]))
-
-
-def _same_tests(table: ReportedTable, labels: _Labels, said: BoolArray) -> Iterator[Finding]:
+def _same_tests(table: ReportedTable, labels: _Labels, said: BoolArray, across: bool) -> Iterator[Finding]:
     """The same F or t on the same dfs: in rows of one study, or of different ones that were coded without means."""
     means = sum((np.isfinite(value_of(table, ("mean", g))).astype(int) for g in groups_in(table)), 0)
     without = np.broadcast_to(np.asarray(means) < 2, table.rows)
@@ -229,7 +231,7 @@ def _same_tests(table: ReportedTable, labels: _Labels, said: BoolArray) -> Itera
         with np.errstate(invalid="ignore", divide="ignore"):
             exact = np.abs(value) >= 10.0 ** (_DIGITS - 1) * unit
         rows = np.flatnonzero(exact & np.isfinite(degrees).all(axis=1) & (labels.study != "") & ~said)
-        keys = pd.DataFrame(np.column_stack([value, degrees])[rows])
+        keys = [*np.column_stack([value, degrees])[rows].T, *(() if across else (labels.study[rows],))]
         for cluster in _clusters(keys, rows):
             for row in cluster:
                 others = [

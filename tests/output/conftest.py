@@ -11,7 +11,7 @@ import pytest
 from openpyxl import Workbook
 
 from extractor.api import Result, convert
-from extractor.output.package import Request
+from extractor.output.request import Request
 
 HEADINGS = [
     "study", "outcome", "effect", "design", "contrast", "f_value", "df_effect", "df_error", "p_value", "t_value",

@@ -2,9 +2,6 @@
 
 from __future__ import annotations
 
-import os
-import subprocess
-import sys
 import zipfile
 from collections.abc import Callable
 from pathlib import Path
@@ -15,14 +12,13 @@ import pytest
 from openpyxl import Workbook, load_workbook
 from openpyxl.comments import Comment
 
-import extractor
 from extractor.api import Result, convert
 from extractor.errors import UsageError
 from extractor.findings import Finding, Severity
 from extractor.output import annotated
 from extractor.output.annotated import write_annotated
 from extractor.output.marks import _signed
-from extractor.output.package import Request
+from extractor.output.request import Request
 from extractor.output.sheets import put_number, put_text
 
 Converted = Callable[[str], tuple[Result, Request]]
@@ -85,29 +81,6 @@ def test_annotating_again_replaces_what_the_first_run_added(converted: Converted
         other = two["coded"][cell.coordinate]
         assert other.number_format == cell.number_format
         assert (other.comment and other.comment.text) == (cell.comment and cell.comment.text)
-
-
-def test_same_bytes_under_another_hash_seed_and_clock(
-    converted: Converted, coded: Path, tmp_path: Path
-) -> None:
-    _, path = annotate(converted, tmp_path)
-    script = (
-        "import sys, time; from pathlib import Path; from extractor.api import convert;"
-        "from extractor.output.annotated import write_annotated; from extractor.output.package import Request;"
-        "result = convert(sys.argv[1], to='omega_squared');"
-        "write_annotated(result, Request(sheet=sys.argv[1], metric='omega_squared'), Path(sys.argv[2]))"
-    )
-    for seed in ("1", "77"):
-        other = tmp_path / f"seed{seed}.xlsx"
-        environment = {
-            **os.environ,
-            "PYTHONPATH": str(Path(extractor.__file__).parent.parent),
-            "PYTHONHASHSEED": seed,
-            "TZ": "Pacific/Auckland",
-            "LC_ALL": "C",
-        }
-        subprocess.run([sys.executable, "-c", script, coded, other], check=True, env=environment)
-        assert other.read_bytes() == path.read_bytes()
 
 
 def test_no_text_is_a_formula_or_an_error(converted: Converted, tmp_path: Path) -> None:

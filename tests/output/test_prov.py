@@ -7,8 +7,8 @@ from collections.abc import Callable
 from pathlib import Path
 
 from extractor.api import Result
-from extractor.output.package import Request
 from extractor.output.prov import write_prov
+from extractor.output.request import Request
 
 
 def test_every_reference_is_declared(

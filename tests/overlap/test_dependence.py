@@ -1,4 +1,8 @@
-"""Covariances of effects that share participants, against simulated studies and identities."""
+"""Covariances of effects that share participants, against simulated studies and identities.
+
+No worked example with printed covariances was at hand, so the formulas are held against Monte Carlo studies drawn
+from raw scores or from the sampling distributions of means and variances, which know nothing of them.
+"""
 
 from __future__ import annotations
 
@@ -8,12 +12,8 @@ import pytest
 
 from extractor.api import Result, convert
 from extractor.errors import UsageError
-from extractor.overlap.dependence import (
-    check_positive,
-    contrast_covariance,
-    covariance_matrix,
-    dependence,
-)
+from extractor.overlap.covariances import contrast_covariance, correlation_covariance, logit_covariance
+from extractor.overlap.dependence import check_positive, covariance_matrix, dependence
 from extractor.sampling.moments import small_sample_factor
 from extractor.table import Assumption
 
@@ -46,7 +46,7 @@ def three_groups(contrast: str, **more: object) -> dict[str, object]:
 
 
 def converted(rows: list[dict[str, object]], metric: str = "cohens_d") -> Result:
-    result = convert(sheet(rows), to=metric, variance="large-sample")
+    result = convert(sheet(rows), to=metric, variance=None if metric == "mean_difference" else "large-sample")
     assert set(result.effects["status"]) == {"converted"}
     return result
 
@@ -98,7 +98,7 @@ def test_two_outcomes_need_their_correlation() -> None:
     without = dependence(result)
     assert without.pairs.empty
     assert without.unresolved["why"].tolist() == [
-        "two outcomes of the same groups; their correlation is needed"
+        "cannot be computed, because two outcomes of the same groups need their correlation"
     ]
     found = dependence(result, HALF).pairs
     # n 30 and 25, d .4 and .6, rho .5 give .0372121 by the formula (two routes agree)
@@ -157,7 +157,7 @@ def test_effects_without_a_formula_stay_unresolved() -> None:
     result = convert(sheet([three_groups("1 - 3"), three_groups("2 - 3")]), to="omega_squared")
     found = dependence(result)
     assert found.pairs.empty
-    assert "no covariance is known for this metric" in found.unresolved["why"][0]
+    assert found.unresolved["why"].tolist() == ["cannot be computed, because no formula is known for ω²"]
 
 
 def two_by_two(a: int, b: int, **more: str) -> dict[str, object]:
@@ -276,3 +276,121 @@ def test_simulated_outcomes_covary_as_the_formula_says() -> None:
     )[0]
     found, error = covariance_with_error(d[0], d[1])
     assert abs(found - expected) < 4 * error + expected * 3 / 88
+
+
+def test_simulated_correlations_of_two_outcomes_covary_as_the_formula_says() -> None:
+    """Two outcomes and one further variable of the same participants, all normal, as the variance of r assumes too."""
+    rng = np.random.default_rng(9)
+    size, r_one, r_two, within = 80, 0.5, 0.3, 0.6
+    overall = within * np.sqrt((1 - r_one**2) * (1 - r_two**2)) + r_one * r_two
+    root = np.linalg.cholesky([[1, r_one, r_two], [r_one, 1, overall], [r_two, overall, 1]])
+    scores = np.einsum("ij,jdn->idn", root, rng.normal(size=(3, 40_000, size)))
+    centred = scores - scores.mean(axis=2, keepdims=True)
+    norms = np.sqrt((centred**2).sum(axis=2))
+    r = [(centred[0] * centred[k]).sum(axis=1) / (norms[0] * norms[k]) for k in (1, 2)]
+    times_n = correlation_covariance(np.array(r_one), np.array(r_two), within)
+    for transform, scale in (
+        (lambda x: x, 1 / (size - 1)),
+        (np.arctanh, 1 / ((1 - r_one**2) * (1 - r_two**2) * (size - 3))),
+    ):
+        found, error = covariance_with_error(*(transform(each) for each in r))
+        assert abs(found - times_n * scale) < 4 * error + times_n * scale * 3 / size
+
+
+def test_correlation_of_an_outcome_with_itself_gives_its_variance() -> None:
+    r = np.array([-0.7, 0.0, 0.4])
+    assert correlation_covariance(r, r, 1.0) == pytest.approx((1 - r**2) ** 2, rel=1e-12)
+
+
+def test_simulated_log_odds_of_two_outcomes_covary_as_the_formula_says() -> None:
+    rng = np.random.default_rng(10)
+    size, p_one, p_two, phi = 200, 0.4, 0.3, 0.5
+    both = p_one * p_two + phi * np.sqrt(p_one * (1 - p_one) * p_two * (1 - p_two))
+    cells = rng.multinomial(size, [both, p_one - both, p_two - both, 1 - p_one - p_two + both], DRAWS)
+    one, two = cells[:, 0] + cells[:, 1], cells[:, 0] + cells[:, 2]
+    found, error = covariance_with_error(np.log(one / (size - one)), np.log(two / (size - two)))
+    tables = (np.array([size * p, size * (1 - p)]) for p in (p_one, p_two))
+    expected = float(logit_covariance(*tables, phi))
+    assert abs(found - expected) < 4 * error + expected * 5 / size
+
+
+OUTCOMES = [
+    two_groups("Site 8", "recall", n=(30, 25), mean=("5.4", "5.0"), sd=("1.0", "1.0")),
+    two_groups("Site 8", "speed", n=(30, 25), mean=("11.2", "10.0"), sd=("2.0", "2.0")),
+]
+
+
+def test_raw_differences_covary_as_linear_combinations_of_means() -> None:
+    """w' S u with S the covariance of the group means: textbook algebra, no approximation but the estimated SDs."""
+    result = converted([three_groups("1 - 3"), three_groups("2 - 3")], "mean_difference")
+    one, two = result.effects["variance"]
+    spread = one / (1 / 24 + 1 / 18)
+    assert spread == pytest.approx(two / (1 / 30 + 1 / 18), rel=1e-9)
+    assert dependence(result).pairs["covariance"][0] == pytest.approx(spread / 18, rel=1e-9)
+    outcomes = dependence(converted(OUTCOMES, "mean_difference"), HALF).pairs
+    assert outcomes["covariance"][0] == pytest.approx(0.5 * 1.0 * 2.0 * (1 / 30 + 1 / 25), rel=1e-9)
+
+
+@pytest.mark.parametrize("metric", ["r", "fisher_z"])
+def test_correlations_of_two_outcomes(metric: str) -> None:
+    """Pearson & Filon (1898): with a within-group correlation near 1 and equal r the covariance is the variance."""
+    alike = [OUTCOMES[0], {**OUTCOMES[0], "outcome": "speed"}]
+    near = dependence(converted(alike, metric), Assumption(0.999, "review protocol"))
+    variance = converted(alike, metric).effects["variance"][0]
+    assert near.pairs["covariance"][0] == pytest.approx(variance, rel=2e-3)
+    turned = [alike[0], {**alike[1], "orientation": "-"}]
+    turned_pairs = dependence(converted(turned, metric), Assumption(0.999, "review protocol")).pairs
+    assert turned_pairs["covariance"][0] == pytest.approx(-near.pairs["covariance"][0], rel=1e-9)
+    assert dependence(converted(alike, metric)).unresolved["why"].tolist() == [
+        "cannot be computed, because two outcomes of the same groups need their correlation"
+    ]
+
+
+def test_correlations_with_one_group_in_common_have_no_formula() -> None:
+    rows = [
+        two_groups("Site 3", "recall", n=(20, 22), mean=("5.4", "5.0"), sd=("1.1", "1.2")),
+        two_groups("Site 3", "recall", n=(24, 22), mean=("5.9", "5.0"), sd=("1.0", "1.2")),
+    ]
+    assert dependence(converted(rows, "r")).unresolved["why"].tolist() == [
+        "cannot be computed, because no formula is known for two correlations that share one group"
+    ]
+
+
+def test_log_odds_ratios_that_stand_for_d_covary_as_d_does() -> None:
+    d = dependence(converted(OUTCOMES), HALF).pairs["covariance"][0]
+    odds = dependence(converted(OUTCOMES, "log_odds_ratio"), HALF).pairs["covariance"][0]
+    assert odds == pytest.approx(d * np.pi**2 / 3, rel=1e-9)
+
+
+def test_log_odds_ratios_of_two_outcomes_and_with_the_first_group_in_common() -> None:
+    rows = [two_by_two(20, 80), two_by_two(30, 70, count_c="15", count_d="85", outcome="arrest")]
+    found = dependence(converted(rows, "log_odds_ratio"), HALF).pairs["covariance"][0]
+    logits = [0.5 * 100 / np.sqrt(20 * 80 * 30 * 70), 0.5 * 100 / np.sqrt(10 * 90 * 15 * 85)]
+    assert found == pytest.approx(sum(logits), rel=1e-9)
+    shared = [two_by_two(20, 80), two_by_two(20, 80, count_c="15", count_d="85")]
+    pairs = dependence(converted(shared, "log_odds_ratio")).pairs
+    assert pairs["covariance"][0] == pytest.approx(1 / 20 + 1 / 80, rel=1e-9)
+    assert pairs["why"][0] == "the first group has the same cells in both rows"
+
+
+def test_repeated_measurements_say_what_their_covariance_would_take() -> None:
+    pair = {"study": "Site 9", "design": "paired", "n_total": "30", "correlation": "0.6"}
+    values = groups(mean=("5.4", "5.0"), sd=("1.1", "1.2"))
+    rows = [{**pair, **values, "outcome": name} for name in ("recall", "speed")]
+    why = dependence(converted(rows), HALF).unresolved["why"].tolist()
+    assert why == ["cannot be computed, because not both rows give the sizes of independent groups"]
+
+
+def test_matrix_is_blank_where_a_covariance_is_unknown_and_rows_line_up() -> None:
+    rows = [*OUTCOMES, two_groups("Site 7", "recall", n=(20, 22), mean=("5.4", "5.0"), sd=("1.1", "1.2"))]
+    result = converted(rows)
+    numbers, matrix = covariance_matrix(result.effects, dependence(result).table)
+    assert numbers.tolist() == [2, 3, 4]
+    assert np.isnan(matrix[[0, 1], [1, 0]]).all()
+    assert matrix[2].tolist() == [0, 0, result.effects["variance"][2]]
+
+
+def test_a_study_of_too_many_rows_is_refused(monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setattr("extractor.overlap.dependence._MOST", 1)
+    with pytest.raises(UsageError, match="'Site 8' has 2"):
+        dependence(converted(OUTCOMES), HALF)
