@@ -10,7 +10,6 @@ import re
 import tomllib
 from collections.abc import Iterator
 from dataclasses import dataclass
-from pathlib import Path
 
 import numpy as np
 import pandas as pd
@@ -214,21 +213,3 @@ def misreadable(table: ReportedTable, codebook: Codebook) -> list[str]:
         if numbers.place.column and heading not in exact and alike and canonical(heading) is None:
             found.append(f"{quoted(heading)} was taken for {quoted(alike[0])}")
     return found
-
-
-def text_of(path: Path) -> str:
-    """The text of a codebook file.
-
-    Raises
-    ------
-    InvalidCodebook : it cannot be opened or is no UTF-8 text.
-    """
-    name = quoted(path, 200)
-    try:
-        return path.read_text(encoding="utf-8-sig")
-    except FileNotFoundError as fault:
-        raise InvalidCodebook(f"codebook {name}: no such file") from fault
-    except OSError as fault:
-        raise InvalidCodebook(f"codebook {name} cannot be opened: {fault.strerror}") from fault
-    except ValueError as fault:
-        raise InvalidCodebook(f"codebook {name} is not UTF-8 text; save it as UTF-8") from fault

@@ -13,22 +13,23 @@ from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, fields, replace
 from pathlib import Path
 
-from openpyxl.utils import get_column_letter
+import numpy as np
 
-from extractor.codebook import Codebook, normalised
+from extractor.codebook import MOST_GROUPS, Codebook, canonical, canonical_names, normalised
 from extractor.errors import UnreadableInput
 from extractor.findings import Finding, Severity
-from extractor.printed.reading import Reading, quoted
+from extractor.printed.reading import BLANK, Reading, quoted, tidy
 from extractor.printed.reported import read_number
-from extractor.quantities import VOCABULARY
-from extractor.source.grid import Grid, NoRows, heading_text, is_blank
+from extractor.quantities import VOCABULARY, close_matches
+from extractor.source.columns import numbers_from
+from extractor.source.grid import Grid, NoRows, column_letters, heading_text, is_blank
 from extractor.source.reader import read_grid
-from extractor.source.workbook import sheet_names
-from extractor.table import Numbers, ReportedTable, Variable
+from extractor.table import Numbers, Place, ReportedTable, Variable
 from extractor.words import listed, printed_text
 
 SHEET = "decisions"
 COLUMNS = ("row", "cell", "decision", "value", "source", "by", "on", "why")
+DIRECTION = "direction"
 KEEP, CORRECT, WAIVE = WORDS = ("keep", "correct", "waive")
 _NEEDED = {KEEP: ("by",), CORRECT: ("cell", "value", "source", "by"), WAIVE: ("by", "why")}
 _ADDRESS = re.compile(
@@ -87,8 +88,11 @@ def read_decisions(path: str | Path) -> list[Decision]:
     UnreadableInput : the file cannot be read, or a column or line is not valid; the message names the cell.
     """
     workbook = Path(path).is_file() and zipfile.is_zipfile(path)
-    if workbook and SHEET not in sheet_names(Path(path)):
-        return []
+    if workbook:
+        from extractor.source.workbook import sheet_names
+
+        if SHEET not in sheet_names(Path(path)):
+            return []
     try:
         grid = read_grid(path, lambda heading: normalised(heading) in COLUMNS, (SHEET,))
     except NoRows:
@@ -99,7 +103,7 @@ def read_decisions(path: str | Path) -> list[Decision]:
     for index, heading in enumerate(grid.headings):
         name = normalised(heading)
         if name in at or (name and name not in COLUMNS):
-            address = f"{get_column_letter(index + 1)}{grid.header_row}"
+            address = f"{column_letters(index)}{grid.header_row}"
             problem = "stands twice" if name in at else f"is none of the columns {', '.join(COLUMNS)}"
             raise UnreadableInput(f"{grid.where}, cell {address}: {quoted(heading)} {problem}")
         if name:
@@ -130,7 +134,7 @@ def _decision(grid: Grid, at: Mapping[str, int], line: int) -> Decision:
         on=texts["on"],
         why=texts["why"],
         where=grid.where,
-        addresses={n: f"{get_column_letter(i + 1)}{grid.row_numbers[line]}" for n, i in at.items()},
+        addresses={n: f"{column_letters(i)}{grid.row_numbers[line]}" for n, i in at.items()},
     )
     if row is None:
         raise found.fault("row", f"{quoted(texts['row'])} is no row number of the coded sheet")
@@ -153,10 +157,18 @@ def apply_decisions(
 ) -> tuple[ReportedTable, list[str]]:
     """The table with every correction made, and a note on each that keeps what was printed.
 
+    A correction may name a quantity for which the sheet has no column, as authors' replies often do; the table
+    then gets one. Of the coded words the direction alone can be corrected.
+
     Raises UnreadableInput where a decision names no row or cell of the table, or a correction is no number.
     """
-    numbers, notes = dict(table.numbers), list[str]()
+    table = _with_columns(table, decisions, codebook)
+    numbers, notes, facts = dict(table.numbers), list[str](), dict(table.facts)
     settled: set[tuple[int, str]] = set()
+    for decision, position in _turned(table, decisions, codebook):
+        facts[DIRECTION] = facts.get(DIRECTION, table.fact(DIRECTION)).copy()
+        facts[DIRECTION][position] = _sign(decision)
+        notes.append(f"{_direction_cell(decision)} {_redirected(table, decision, position)}")
     for decision, position, variables in _resolved(table, decisions, codebook):
         if decision.decision != CORRECT:
             continue
@@ -177,7 +189,8 @@ def apply_decisions(
         if not any((row, cell) in settled for cell in cells.split("; "))
     ]
     settings = {**table.settings, "conflicts": conflicts}
-    return replace(table, numbers=numbers, settings=settings, notes=[*table.notes, *notes]), notes
+    notes_now = [*table.notes, *notes]
+    return replace(table, numbers=numbers, facts=facts, settings=settings, notes=notes_now), notes
 
 
 def mark(
@@ -189,6 +202,7 @@ def mark(
     Every correction is added as a note, and so is a decision that no longer has a finding.
     ``table`` is the one that was read, before ``apply_decisions``.
     """
+    table = _with_columns(table, decisions, codebook)
     marked = list(findings)
     by_row: dict[int, list[int]] = {}
     for i, finding in enumerate(findings):
@@ -216,6 +230,11 @@ def mark(
             printed = printed_text(table, variables[0], position) if variables else ""
             place = tuple(sorted(cells))
             marked.append(Finding(decision.row, study, Severity.NOTE, rule, place, printed, message, said))
+    for decision, position in _turned(table, decisions, codebook):
+        study, before = (str(table.fact(name)[position]) for name in ("study", DIRECTION))
+        place, said = (_direction_cell(decision),), f"{_DONE[CORRECT]} {decision.signed}"
+        message = _redirected(table, decision, position)
+        marked.append(Finding(decision.row, study, Severity.NOTE, "corrected", place, before, message, said))
     return sorted(marked, key=lambda f: (f.row, -f.severity, f.rule, f.cells))
 
 
@@ -249,6 +268,8 @@ def _resolved(
     seen: set[tuple[int, frozenset[Variable]]] = set()
     found = []
     for decision in decisions:
+        if _turns(decision, codebook):
+            continue
         if decision.row not in position_of:
             raise decision.fault("row", f"the coded sheet has no row {decision.row}")
         variables = _variables(table, decision, codebook)
@@ -263,17 +284,76 @@ def _resolved(
     return found
 
 
+def _turned(
+    table: ReportedTable, decisions: Sequence[Decision], codebook: Codebook
+) -> list[tuple[Decision, int]]:
+    """The corrections of directions, each with its position in the table."""
+    found = [decision for decision in decisions if _turns(decision, codebook)]
+    position_of = {int(row): i for i, row in enumerate(table.row_numbers)}
+    for decision in found:
+        if decision.row not in position_of:
+            raise decision.fault("row", f"the coded sheet has no row {decision.row}")
+        if [other.row for other in found].count(decision.row) > 1:
+            raise decision.fault("cell", f"the direction of row {decision.row} is decided twice")
+        if _sign(decision) not in ("+", "-"):
+            raise decision.fault("value", f"direction {quoted(_text(decision.value))} is neither + nor -")
+    return [(decision, position_of[decision.row]) for decision in found]
+
+
+def _turns(decision: Decision, codebook: Codebook) -> bool:
+    return decision.decision == CORRECT and codebook.meaning(_named(decision.cell)[0]) == DIRECTION
+
+
+def _sign(decision: Decision) -> str:
+    # csv files of this program put an apostrophe before a sign, which spreadsheets take for a formula
+    return tidy(_text(decision.value).removeprefix("'"))
+
+
+def _direction_cell(decision: Decision) -> str:
+    return f"{_named(decision.cell)[0]} [row {decision.row}]"
+
+
+def _redirected(table: ReportedTable, decision: Decision, position: int) -> str:
+    before = str(table.fact(DIRECTION)[position]) or "blank"
+    return f"corrected from {before} to {_sign(decision)} {decision.signed}"
+
+
+def _with_columns(table: ReportedTable, decisions: Sequence[Decision], codebook: Codebook) -> ReportedTable:
+    """The table with blank columns for the quantities that corrections name and the sheet lacks."""
+    numbers = dict(table.numbers)
+    letters = {n.place.column for n in numbers.values()}
+    for decision in decisions:
+        heading, spot = _named(decision.cell)
+        meaning, address = codebook.meaning(heading), _ADDRESS.fullmatch(spot)
+        if decision.decision != CORRECT or not isinstance(meaning, tuple) or meaning in numbers:
+            continue
+        if address and address["column"] and address["column"].upper() in letters:
+            continue
+        if (meaning[1] or 0) > MOST_GROUPS:
+            raise decision.fault("cell", f"{quoted(heading)}: a row holds at most {MOST_GROUPS} groups")
+        blank = np.zeros(table.rows, dtype=np.int64)
+        heading = heading.strip()
+        place = Place(normalised(heading) if canonical(heading) == meaning else heading, "")
+        numbers[meaning] = numbers_from([BLANK], blank, place)
+    return replace(table, numbers=numbers) if len(numbers) > len(table.numbers) else table
+
+
+def _named(cell: str) -> tuple[str, str]:
+    """Heading and address of a cell as findings write it; elsewhere the whole text may be either."""
+    named = _NAMED.fullmatch(cell) if len(cell) <= _LONGEST else None
+    return (named["heading"], named["address"]) if named else (cell, cell)
+
+
 def _variables(table: ReportedTable, decision: Decision, codebook: Codebook) -> list[Variable]:
     """What stands in the decision's cell; several numbers where it is running text."""
     text = decision.cell
     if not text:
         return []
-    named = _NAMED.fullmatch(text) if len(text) <= _LONGEST else None
-    heading, spot = (named["heading"], named["address"]) if named else (text, text)
+    heading, spot = _named(text)
     meaning, address = codebook.meaning(heading), _ADDRESS.fullmatch(spot)
     known = isinstance(meaning, tuple) and meaning in table.numbers
     same = [v for v, n in table.numbers.items() if normalised(n.place.heading) == normalised(heading)]
-    if address and (named or not (known or same)):
+    if address and (spot != heading or not (known or same)):
         row = int(address["row"] or address["only"])
         if row != decision.row:
             raise decision.fault(
@@ -282,9 +362,20 @@ def _variables(table: ReportedTable, decision: Decision, codebook: Codebook) -> 
     if isinstance(meaning, tuple) and known:
         return [meaning]
     if not same and address and address["column"]:
+        if meaning is not None and spot == heading:
+            advice = f"write it as '{heading} [row {decision.row}]', or the column's heading"
+            raise decision.fault("cell", f"{quoted(text)} is an address and the name of a quantity; {advice}")
         column = address["column"].upper()
         same = [v for v, n in table.numbers.items() if n.place.column == column]
     if not same:
-        advice = "words are corrected in the sheet itself"
-        raise decision.fault("cell", f"{quoted(text)} is no heading or address of a number; {advice}")
+        raise decision.fault("cell", _unknown(text, heading, meaning, codebook))
     return same
+
+
+def _unknown(text: str, heading: str, meaning: object, codebook: Codebook) -> str:
+    """Why nothing stands in a cell, and what to write instead."""
+    if isinstance(meaning, str):
+        return f"{quoted(text)} is no heading or address of a number; words are corrected in the sheet itself"
+    near = close_matches(normalised(heading), [*canonical_names(), *codebook.folded])[:1]
+    advice = f"did you mean {near[0]}?" if near else "name a heading of the sheet or a quantity, such as n_1"
+    return f"{quoted(text)} is no heading or address of a number; {advice}"

@@ -9,8 +9,8 @@ import pytest
 from click.testing import CliRunner
 
 from extractor.api import read
-from extractor.codebook import Codebook, parse_codebook, ready_codebooks
-from extractor.codebook_check import faults, misreadable, pilot, text_of
+from extractor.codebook import Codebook, codebook_text, parse_codebook, ready_codebooks
+from extractor.codebook_check import faults, misreadable, pilot
 from extractor.commands.codebook import command
 from extractor.errors import InvalidCodebook
 from extractor.overlap.duplicates import duplicate_reports
@@ -95,10 +95,10 @@ def test_one_fault_is_what_loading_says() -> None:
 
 def test_a_codebook_that_cannot_be_read(tmp_path: Path) -> None:
     with pytest.raises(InvalidCodebook, match="no such file"):
-        text_of(tmp_path / "x.toml")
+        codebook_text(tmp_path / "x.toml")
     (tmp_path / "x.toml").write_bytes(b"title = '\xff'\n")
     with pytest.raises(InvalidCodebook, match="not UTF-8"):
-        text_of(tmp_path / "x.toml")
+        codebook_text(tmp_path / "x.toml")
 
 
 # ---- the pilot -------------------------------------------------------------------------------------------

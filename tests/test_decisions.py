@@ -7,7 +7,7 @@ import openpyxl
 import pandas as pd
 import pytest
 
-from extractor.audit.contradictions import contradictions
+from extractor.audit.run import audit_evidence
 from extractor.audit.support import unsupported
 from extractor.codebook import default_codebook, parse_codebook
 from extractor.decisions import apply_decisions, mark, read_decisions
@@ -37,11 +37,8 @@ def decided(tmp_path, *lines, headings=HEADINGS):
 
 
 def audited(table):
-    evidence = gather(table)
-    found = list(unsupported(evidence))
-    for block in evidence.blocks:
-        found += contradictions(block, table)
-    return found
+    found = audit_evidence(gather(table), None).findings
+    return [f for f in found if f.severity >= Severity.INCONSISTENT]
 
 
 def finding(row=2, cells=("f_value [C2]",), severity=Severity.INCONSISTENT):
@@ -185,7 +182,21 @@ def test_numbers_of_running_text_are_named_one_by_one(tmp_path):
     ("line", "cell", "said"),
     [
         ("9,f_value,keep,,,AB,,", "A2", "no row 9"),
-        ("2,f_valeu,keep,,,AB,,", "B2", "'f_valeu' is no heading or address of a number"),
+        (
+            "2,f_valeu,keep,,,AB,,",
+            "B2",
+            "'f_valeu' is no heading or address of a number; did you mean f_value",
+        ),
+        (
+            "2,beauty,correct,5,p. 5,AB,,",
+            "B2",
+            "'beauty' is no heading or address of a number; name a heading",
+        ),
+        ("2,t_value,keep,,,AB,,", "B2", "'t_value' is no heading or address of a number"),
+        ("2,n_2000,correct,5,p. 5,AB,,", "B2", "a row holds at most"),
+        ("2,sd,correct,5,p. 5,AB,,", "B2", "'sd' is no heading or address of a number"),
+        ("2,direction,correct,up,p. 5,AB,,", "D2", "direction 'up' is neither"),
+        ("9,direction,correct,+,p. 5,AB,,", "A2", "no row 9"),
         ("2,design,keep,,,AB,,", "B2", "'design' is no heading or address of a number"),
         ("2,ZZ2,keep,,,AB,,", "B2", "'ZZ2' is no heading or address"),
         ("2,C3,keep,,,AB,,", "B2", "'C3' is in row 3, the decision in row 2"),
@@ -200,7 +211,59 @@ def test_decisions_that_cannot_be_applied(tmp_path, line, cell, said):
     assert f"cell {cell}: " in str(fault.value)
 
 
+@pytest.mark.parametrize("cell", ["n_4", "N_4", "n_4 [new column]", "n_4 [row 2]"])
+def test_a_correction_brings_along_a_column_that_the_sheet_lacks(tmp_path, cell):
+    table = sheet()
+    lines = [
+        f"2,{cell},correct,21,e-mail,AB,,",
+        "2,mean_4,correct,5.9,e-mail,AB,,",
+        "2,sd_4,correct,1.1,e-mail,AB,,",
+    ]
+    decisions = decided(tmp_path, *lines)
+    corrected, notes = apply_decisions(table, decisions, BOOK)
+    assert corrected.numbers["n", 4].value.tolist() == [21, pytest.approx(np.nan, nan_ok=True)]
+    assert corrected.numbers["n", 4].given.tolist() == [True, False]
+    assert notes[0].endswith("[row 2] corrected from blank to 21 by AB (e-mail)")
+    assert ("n", 4) not in table.numbers
+    # the row now has four groups, which its df of three groups contradict; the other row is as it was
+    assert {f.row for f in audited(corrected)} == {2}
+    added = [f.cells for f in mark([], decisions, table, BOOK) if f.rule == "corrected"]
+    assert added == [("mean_4 [row 2]",), ("n_4 [row 2]",), ("sd_4 [row 2]",)]
+
+
+def test_a_name_that_is_also_an_address_is_not_guessed_at(tmp_path):
+    book = parse_codebook('[columns]\nf_value = "A"\nmean_2 = "A2"', "letters")
+    table = read_table(pd.DataFrame([{"A": "4.31", "design": "one-way"}], dtype=object), book)
+    with pytest.raises(UnreadableInput, match="cell B2: 'A2' is an address and the name of a quantity"):
+        apply_decisions(table, decided(tmp_path, "2,A2,correct,5.1,p. 5,AB,,"), book)
+    corrected, _ = apply_decisions(table, decided(tmp_path, "2,A2 [row 2],correct,5.1,p. 5,AB,,"), book)
+    assert corrected.numbers["mean", 2].value[0] == 5.1
+
+
+@pytest.mark.parametrize("written", ["-", "\u2212", "'-"])
+def test_a_direction_is_corrected_like_a_number(tmp_path, written):
+    row = {
+        "study": "Study 1",
+        "design": "two-group",
+        "t_value": "2.31",
+        "n_1": "20",
+        "n_2": "20",
+        "direction": "+",
+    }
+    table = read_table(pd.DataFrame([row, row], dtype=object), BOOK)
+    decisions = decided(tmp_path, f"2,direction,correct,{written},e-mail,AB,,")
+    corrected, notes = apply_decisions(table, decisions, BOOK)
+    assert corrected.fact("direction").tolist() == ["-", "+"]
+    assert table.fact("direction").tolist() == ["+", "+"]
+    assert notes == ["direction [row 2] corrected from + to - by AB (e-mail)"]
+    (note,) = mark([], decisions, table, BOOK)
+    assert (note.row, note.rule, note.printed) == (2, "corrected", "+")
+
+
 def test_one_cell_is_decided_once(tmp_path):
+    lines = ["2,direction,correct,+,p. 5,AB,,", "2,direction,correct,-,p. 6,AB,,"]
+    with pytest.raises(UnreadableInput, match="the direction of row 2 is decided twice"):
+        apply_decisions(sheet(), decided(tmp_path, *lines), BOOK)
     lines = ["2,f_value,keep,,,AB,,", "2,C2,waive,,,AB,,corrected test"]
     with pytest.raises(UnreadableInput, match="cell B3: 'C2' of row 2 is decided twice"):
         apply_decisions(sheet(), decided(tmp_path, *lines), BOOK)

@@ -9,13 +9,14 @@ import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
 
-from extractor.asking.questions import Aim, Asked, Offer, questions
+from extractor.asking.questions import Aim, Asked, Offer, burden, questions
 from extractor.asking.situation import GROUPED
+from extractor.codebook import MOST_GROUPS
 from extractor.evidence import Block
 from extractor.quantities import FACTS, VOCABULARY, group_heading
 from extractor.routes.conversion import Conversion
 from extractor.routes.sensitivity import TOGETHER, sensitivity
-from extractor.routes.unlock import EASE, Ease
+from extractor.routes.unlock import EASE
 from extractor.table import FloatArray, ObjectArray, ReportedTable, Variable
 from extractor.words import listed
 
@@ -68,15 +69,15 @@ def unlocking(
     return Unlocking(rows, _batch(conversion, asked))
 
 
-def places_of(table: ReportedTable, block: Block, offer: Offer, groups: int) -> list[Variable | str]:
-    """Where the numbers of an offer go: variables, or the names of facts; known groups are left out.
+def places_of(table: ReportedTable, block: Block, asked: frozenset[str], groups: int) -> list[Variable | str]:
+    """Where numbers that are asked for go: variables, or the names of facts; known groups are left out.
 
     Parameters
     ----------
     groups : number of groups of the row; 0 where it is not known, and then two stand for all.
     """
     found: list[Variable | str] = []
-    for name in _in_order(offer.asked):
+    for name in _in_order(asked):
         if name in FACTS:
             found.append(name)
         elif name in _WRITTEN_AS:
@@ -90,7 +91,7 @@ def places_of(table: ReportedTable, block: Block, offer: Offer, groups: int) -> 
 
 
 def groups_of(block: Block) -> NDArray[np.int64]:
-    """Number of groups of each row of a block, 0 where nothing says it; shape (rows,)."""
+    """Number of groups of each row of a block, 0 where nothing says it or no sheet has so many; shape (rows,)."""
     size = len(block.positions)
     if block.groups >= 2 or block.design == "one-way-partial":
         return np.full(size, max(block.groups, 2))
@@ -99,7 +100,7 @@ def groups_of(block: Block) -> NDArray[np.int64]:
     for name, more in (("k_groups", 0), ("df_effect", 1)):
         if name in block.leaves:
             value = block.leaves[name].value
-            return np.asarray(np.where(np.isfinite(value), value + more, 0), dtype=np.int64)
+            return np.asarray(np.where(value + more <= MOST_GROUPS, value + more, 0), dtype=np.int64)
     return np.zeros(size, dtype=np.int64)
 
 
@@ -127,7 +128,7 @@ def _known(table: ReportedTable, block: Block, member: Variable) -> bool:
 def question_of(table: ReportedTable, block: Block, offer: Offer, groups: int) -> str:
     """An offer in words: "t; M of groups 1 and 2; SD of group 2"."""
     said: dict[str, list[int]] = {}
-    for place in places_of(table, block, offer, groups):
+    for place in places_of(table, block, offer.asked, groups):
         name, group = (place, None) if isinstance(place, str) else place
         said.setdefault(name, []).extend([] if group is None else [group])
     words = []
@@ -167,7 +168,7 @@ def _lines(
         at = asked.positions[count == groups]
         now = reach if asked.aim in (Aim.TIGHTENS, Aim.FREES) else {}
         for choice, offer in enumerate(asked.offers[:most], 1):
-            places = places_of(table, block, offer, groups)
+            places = places_of(table, block, offer.asked, groups)
             low, high = (now[end][at] if now else np.full(len(at), np.nan) for end in ("low", "high"))
             yield _about(
                 conversion,
@@ -266,30 +267,37 @@ def _batch(conversion: Conversion, asked: list[Asked]) -> pd.DataFrame:
                 "rows": len(rows),
                 "studies": len(set(table.fact("study")[rows].tolist())),
                 "row_numbers": table.row_numbers[rows].tolist(),
-                "size": len(one),
-                "ease": max(EASE[name] for name in one),
+                "cost": (burden(one, _USUAL_GROUPS), max(EASE[name] for name in one)),
             }
         )
-    lines.sort(key=lambda line: [-int(str(line[w])) for w in (*_COUNTED.values(), "rows")] + [_cost(line)])
+    lines.sort(key=lambda line: (*(-int(str(line[w])) for w in (*_COUNTED.values(), "rows")), _cost(line)))
     kept: list[dict[str, object]] = []
     for line in lines:
-        if not any(_covers(other, line) for other in lines if other is not line):
+        # lines that do as much at the same cost are one choice, of which the first is named
+        if not any(_covers(other, line) for other in [*kept, *(o for o in lines if _cost(o) < _cost(line))]):
             kept.append(line)
     return pd.DataFrame(kept, columns=BATCH_COLUMNS)
 
 
 _NO_ROWS = np.empty(0, dtype=np.intp)
+_USUAL_GROUPS = 2
 
 
-def _cost(line: dict[str, object]) -> int:
-    ease, size = line["ease"], line["size"]
-    return (int(ease) if isinstance(ease, Ease) else 0) * 10 + int(str(size))
+def _cost(line: dict[str, object]) -> tuple[int, ...]:
+    """What the question costs the authors, then how readily the hardest of its numbers is to be had."""
+    found = line["cost"]
+    return found if isinstance(found, tuple) else ()
 
 
 def _covers(other: dict[str, object], line: dict[str, object]) -> bool:
-    """Whether another question does all that this one does and costs less."""
+    """Whether another question does all that this one does and costs no more."""
     does = all(int(str(other[w])) >= int(str(line[w])) for w in _COUNTED.values())
-    return does and other["row_numbers"] == line["row_numbers"] and _cost(other) < _cost(line)
+    return does and _cost(other) <= _cost(line) and _rows(other) >= _rows(line)
+
+
+def _rows(line: dict[str, object]) -> set[int]:
+    found = line["row_numbers"]
+    return set(found) if isinstance(found, list) else set()
 
 
 def _general(name: str) -> str:

@@ -1,14 +1,14 @@
 """What to ask about each row: the cheapest sets of numbers that open it, tighten it or free it from an assumption.
 
 A set is offered only when it does what is promised whatever the answer is, and when no part of it would do. Sets are
-ranked by how readily they are to be had, then by how many numbers they are, then by what they still leave to an
-assumption, then by how much rounding would leave.
+ranked by what their numbers cost to be had, then by how readily the hardest of them is, then by what they still leave
+to an assumption, then by how much rounding would leave.
 """
 
 from __future__ import annotations
 
 from collections.abc import Iterator
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from enum import Enum
 from functools import lru_cache
 from itertools import combinations
@@ -27,6 +27,7 @@ from extractor.routes.conversion import Conversion
 from extractor.routes.engine import Engine, Estimate
 from extractor.routes.planner import Route
 from extractor.routes.unlock import (
+    BURDEN,
     EASE,
     Ease,
     any_point,
@@ -41,6 +42,11 @@ from extractor.table import BoolArray, ReportedTable
 
 _CANDIDATES = 10
 _CLASSICAL = frozenset({"f_value", "t_value", "p_value", "df_effect", "df_error"})
+
+
+def burden(asked: frozenset[str], groups: int) -> int:
+    """What a set costs the authors of a study with so many groups."""
+    return sum(BURDEN[name] * (groups if name in GROUPED else 1) for name in asked)
 
 
 class Aim(Enum):
@@ -58,7 +64,8 @@ class Offer:
 
     assuming : whether the effect would still rest on something nobody reported.
     rounding : width that rounding would leave in a typical study, as a share of the effect.
-    also : what the sampling variance would need beyond the set.
+    also : what the sampling variance would need beyond the set. whole : the fewest of both from which estimate and
+    variance follow, since what the variance needs may make a number of the set superfluous.
     """
 
     aim: Aim
@@ -66,6 +73,7 @@ class Offer:
     assuming: bool
     rounding: float
     also: frozenset[str]
+    whole: frozenset[str]
 
     @property
     def ease(self) -> Ease:
@@ -177,10 +185,14 @@ class _Said:
             # the row compares more than two levels, and no answer makes it a difference of two
             askable = frozenset()
         one = int(_one_df(block)[first])
+        start = block.start
+        if block.design == "one-way-partial" and block.groups < 2:
+            # a single group of unknown company says nothing until another one is coded
+            start = replace(start, known=start.known - GROUPED)
         return Situation(
             design=block.design,
             groups=block.groups,
-            start=block.start,
+            start=start,
             askable=askable,
             without=_sterile(chosen, rows) if index == NOTHING else frozenset(),
             counted=block.groups > 1 or bool({"df_effect", "k_groups"} & block.leaves.keys()),
@@ -223,14 +235,23 @@ def _sterile(chosen: Chosen, rows: NDArray[np.intp]) -> frozenset[str]:
 def _offers(situation: Situation, wanted: Wanted, aim: Aim, most: int) -> tuple[Offer, ...]:
     groups = situation.groups or (2 if situation.design != "one-way" else 3)
 
-    def cost(asked: frozenset[str]) -> tuple[Ease, int, bool, list[str]]:
-        numbers = sum(groups if name in GROUPED else 1 for name in asked)
-        return max(EASE[name] for name in asked), numbers, _assuming(situation, wanted, asked), sorted(asked)
+    def cost(asked: frozenset[str]) -> tuple[int, Ease, bool, list[str]]:
+        hardest = max(EASE[name] for name in asked)
+        return burden(asked, groups), hardest, _assuming(situation, wanted, asked), sorted(asked)
 
-    sets = sorted(_sets(situation, wanted, aim), key=cost)[: 2 * most]
-    offers = [Offer(aim, asked, cost(asked)[2], *_left(situation, wanted, asked)) for asked in sets]
+    sets = sorted(_sets(situation, wanted, aim), key=cost)
+    offers = [
+        Offer(aim, asked, cost(asked)[2], *_left(situation, wanted, asked)) for asked in sets[: 2 * most]
+    ]
     # rounding decides between sets that cost the same
-    return tuple(sorted(offers, key=lambda o: (*cost(o.asked)[:3], o.rounding, sorted(o.asked)))[:most])
+    offers.sort(key=lambda o: (*cost(o.asked)[:3], o.rounding, sorted(o.asked)))
+    kept = offers[:most]
+    if kept and all(o.asked & kept[0].asked for o in kept[1:]):
+        # whoever lacks a number of the first set is to be shown one without it
+        other = next((asked for asked in sets if not asked & kept[0].asked), None)
+        if other is not None:
+            kept[most - 1 :] = [Offer(aim, other, cost(other)[2], *_left(situation, wanted, other))]
+    return tuple(kept)
 
 
 def _sets(situation: Situation, wanted: Wanted, aim: Aim) -> list[frozenset[str]]:
@@ -315,8 +336,10 @@ def _assuming(situation: Situation, wanted: Wanted, asked: frozenset[str]) -> bo
     return not all(wanted.free(world, surely=True) for world in worlds(situation, asked))
 
 
-def _left(situation: Situation, wanted: Wanted, asked: frozenset[str]) -> tuple[float, frozenset[str]]:
-    """The rounding that would be left, and the cheapest set that the variance would need in addition."""
+def _left(
+    situation: Situation, wanted: Wanted, asked: frozenset[str]
+) -> tuple[float, frozenset[str], frozenset[str]]:
+    """The rounding that would be left, the cheapest set that the variance would need in addition, and the whole."""
     after = next(worlds(situation, asked))
     relations = graph(after.design, any_point, after.without, None)
     used = after.points
@@ -326,4 +349,19 @@ def _left(situation: Situation, wanted: Wanted, asked: frozenset[str]) -> tuple[
     needs = [way.used(frozenset()) for way in wanted.precisions(after)]
     goals = frozenset([wanted.metric]).union(*needs[:1])
     more = smallest_sets(after.points, situation.askable, relations, goals, 1)
-    return width_left(situation.design, used, wanted.metric), more[0] if more else frozenset()
+    also = more[0] if more else frozenset()
+    return width_left(situation.design, used, wanted.metric), also, _fewest(situation, wanted, asked, also)
+
+
+def _fewest(
+    situation: Situation, wanted: Wanted, asked: frozenset[str], also: frozenset[str]
+) -> frozenset[str]:
+    """A set and what its variance needs, without the numbers of the set that are then superfluous."""
+    whole = asked | also
+    for name in sorted(asked, key=lambda q: (-EASE[q], q)) if also else ():
+        each = list(worlds(situation, whole - {name}))
+        if all(wanted.complete(world, surely=True) for world in each) and all(
+            planned(world, wanted.metric, wanted.standardizer, free=False) for world in each
+        ):
+            whole -= {name}
+    return whole

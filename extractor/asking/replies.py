@@ -13,10 +13,11 @@ from openpyxl.utils import get_column_letter
 from extractor import decisions
 from extractor.asking.letters import LOG_COLUMNS
 from extractor.codebook import Codebook, normalised
+from extractor.contrast import contrast_weights
 from extractor.errors import UnreadableInput
 from extractor.printed.reading import is_missing, quoted, tidy
 from extractor.printed.reported import read_number
-from extractor.quantities import FACTS, VOCABULARY
+from extractor.quantities import VOCABULARY
 from extractor.source.grid import Grid, heading_text, is_blank
 from extractor.source.reader import read_grid
 from extractor.table import ReportedTable
@@ -24,6 +25,7 @@ from extractor.words import listed
 
 _NEEDED = ("row", "cell", "value")
 _DECLINED = re.compile(r"(?i)(no longer |not )?(available|known|reported)|lost|unavailable|declined|\?")
+_HIGHER = re.compile(r"(?i)(?:the )?(?:group|condition) (\d{1,2})(?: had the higher mean)?")
 
 
 @dataclass(frozen=True)
@@ -31,9 +33,9 @@ class Replies:
     """A log of replies.
 
     decisions : corrections with their source, in the columns of the sheet ``decisions``.
-    words : (row, cell, reply) for coded facts such as the direction, which are typed into the sheet itself.
+    words : (row, cell, reply) for coded words, which are typed into the sheet itself, and directions not understood.
     declined : (row, cell) of numbers that the authors could not give. waiting : lines without a reply.
-    new_columns : headings that the sheet lacks; a correction needs the column, even an empty one.
+    new_columns : headings that the sheet lacks; the decisions add them to the reading, not to the file.
     """
 
     decisions: pd.DataFrame
@@ -70,27 +72,50 @@ def read_replies(path: str | Path, table: ReportedTable, codebook: Codebook) -> 
             continue
         row, cell = reply.row(known), reply.text("cell")
         value = reply.text("value")
+        heading = cell.partition(" [")[0]
+        meaning = codebook.meaning(heading)
+        # a minus sign is an answer here, and a code for a missing number elsewhere
+        if meaning == decisions.DIRECTION and (sign := _sign(value, table, row)):
+            lines.append(_decision(reply, row, cell, sign))
+            continue
         if is_missing(tidy(value), codebook.missing) or _DECLINED.fullmatch(value):
             declined.append((row, cell))
             continue
-        heading = cell.partition(" [")[0]
-        meaning = codebook.meaning(heading)
-        if isinstance(meaning, str) and meaning in FACTS:
+        if isinstance(meaning, str):
             words.append((row, heading, value))
             continue
         if meaning is None:
             raise reply.fault("cell", f"{quoted(cell)} is no heading of the sheet or name of a quantity")
-        name, _ = meaning if isinstance(meaning, tuple) else (meaning, None)
         reading = read_number(
-            reply.raw("value"), VOCABULARY[name], decimal_mark=codebook.decimal_mark, missing=codebook.missing
+            reply.raw("value"),
+            VOCABULARY[meaning[0]],
+            decimal_mark=codebook.decimal_mark,
+            missing=codebook.missing,
         )
         if not reading.given:
             raise reply.fault("value", reading.problem or f"{quoted(value)} is no number")
-        if isinstance(meaning, tuple) and meaning not in table.numbers:
+        if meaning not in table.numbers:
             missing[heading] = None
         lines.append(_decision(reply, row, cell, value))
     frame = pd.DataFrame(lines, columns=list(decisions.COLUMNS))
     return Replies(frame, words, declined, waiting, list(missing))
+
+
+def _sign(value: str, table: ReportedTable, row: int) -> str:
+    """The direction that an answer such as "group 2" or "+" gives the coded contrast; "" where it gives none."""
+    text = tidy(value)
+    if text in ("+", "-"):
+        return text
+    named = _HIGHER.fullmatch(text)
+    contrast = str(table.fact("contrast")[table.row_numbers.tolist().index(row)])
+    try:
+        weights, _ = contrast_weights(contrast, max(map(int, re.findall(r"\d+", contrast)), default=2))
+    except ValueError:
+        return ""
+    if named is None or int(named[1]) > len(weights):
+        return ""
+    weight = weights[int(named[1]) - 1]
+    return "+" if weight > 0 else "-" if weight < 0 else ""
 
 
 def _decision(reply: _Reply, row: int, cell: str, value: str) -> dict[str, object]:

@@ -17,18 +17,10 @@ from extractor.routes.choice import STANDARDIZED
 from extractor.routes.planner import Start, search
 from extractor.routes.unlock import any_point, follows, graph, no_assumption
 from extractor.sampling.precision import limits_of, standardizer_of, variances_of
+from extractor.study.terms import SUMS
 
 GROUPED = frozenset(name for name, quantity in VOCABULARY.items() if quantity.shape is Shape.GROUP)
-_OF_TERMS = frozenset(
-    {
-        "df_others",
-        "explained_by_others",
-        "ss_others",
-        "ss_measured",
-        "explained_by_measured",
-        "ss_strata",
-    }
-)
+_OF_TERMS = frozenset(SUMS)
 """Sums over the other rows of a model, which may exist as soon as the row itself is filled."""
 _OWN_TERM = frozenset({"f_value", "df_effect", "ss_effect", "ss_error", "ss_subjects"})
 _SIGN_OF_F = "t_of_one_df"
@@ -115,7 +107,8 @@ def _designs(situation: Situation, asked: frozenset[str]) -> tuple[str, ...]:
     ):
         return ("one-way", "two-group")
     if situation.design == "one-way-partial" and situation.groups < 2 and grouped:
-        return ("one-way-partial", "one-way", "two-group")
+        # without a number of groups, those that are coded are all there are
+        return (*(("one-way-partial",) if situation.counted else ()), "one-way", "two-group")
     return (situation.design,)
 
 

@@ -26,25 +26,15 @@ from extractor.coders.matching import ABSENT, Printed, alike
 from extractor.quantities import DESIGNS, STANDARDIZERS
 from extractor.table import BoolArray, FloatArray
 
-COLUMNS = [
-    "variable",
-    "kind",
-    "rows",
-    "all_agree",
-    "one_blank",
+FRACTIONS = (
     "raw_agreement",
-    "kappa",
-    "kappa_low",
-    "kappa_high",
-    "ac1",
-    "ac1_low",
-    "ac1_high",
-    "icc",
-    "icc_low",
-    "icc_high",
+    *("kappa", "kappa_low", "kappa_high"),
+    *("ac1", "ac1_low", "ac1_high"),
+    *("icc", "icc_low", "icc_high"),
     "alpha",
-    "marginals",
-]
+)
+"""Columns of shares and coefficients."""
+COLUMNS = ["variable", "kind", "rows", "all_agree", "one_blank", *FRACTIONS, "marginals"]
 _CHOICES = {
     "design": len(DESIGNS),
     "direction": 2,

@@ -7,18 +7,17 @@ row. Rows with the same labels are told apart by their numbers.
 
 from __future__ import annotations
 
-import re
-import unicodedata
 from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass
 from zlib import crc32
 
 import numpy as np
-import pandas as pd
 from numpy.typing import NDArray
-from scipy.optimize import linear_sum_assignment
 
 from extractor.coders.stack import Stack
+from extractor.distinct import distinct
+from extractor.labels import compared as compared
+from extractor.labels import plain_label as plain_label
 from extractor.printed.reading import tidy
 from extractor.quantities import VOCABULARY
 from extractor.study.terms import factors_of
@@ -35,9 +34,6 @@ _MOST_PAIRS = 4_000_000
 """Pairs of rows of one study above which only rows with the same labels are matched."""
 _TOUCH = 1e-6
 """Share of the narrower rounding interval by which two must overlap; neighbours such as 3.4 and 3.5 only touch."""
-_BETWEEN_DIGITS = re.compile(r"(?<=\d)[\W_]+(?=\d)")
-_APART = "\x1f"
-_LETTER = re.compile(r"[^\W_]")
 _BLANK, _POINT, _BELOW, _ABOVE = 0, 1, 2, 3
 
 
@@ -105,17 +101,6 @@ def alike(one: Printed, other: Printed, tolerance: float = 0.0) -> BoolArray:
     return np.asarray((one.kind == other.kind) & said)
 
 
-def plain_label(text: str) -> str:
-    """A label as labels are compared: letters and digits alone, in lower case; signs where there is nothing else.
-
-    Numbers stay apart: 1.2 is not 12.
-    """
-    folded = unicodedata.normalize("NFKC", tidy(text)).casefold()
-    if _LETTER.search(folded) is None:
-        return folded
-    return "".join(c for c in _BETWEEN_DIGITS.sub(_APART, folded) if c.isalnum() or c == _APART)
-
-
 def _term(text: str) -> str:
     return " x ".join(sorted(plain_label(factor) for factor in factors_of(text)))
 
@@ -134,12 +119,6 @@ PLAIN: dict[str, Callable[[str], str]] = {
     "contrast": _contrast,
 }
 """How the words of each label are compared."""
-
-
-def compared(words: ObjectArray, plain: Callable[[str], str]) -> NDArray[np.str_]:
-    """Words as they are compared; each distinct one is worked out once."""
-    codes, distinct = pd.factorize(words)
-    return np.array([plain(str(word)) for word in distinct], dtype=np.str_)[codes]
 
 
 def match(given: Stack) -> Matching:
@@ -237,7 +216,7 @@ class _Pool:
         if not len(known) or not len(new):
             return
         every = np.concatenate([known, new])
-        codes = pd.factorize(pd.MultiIndex.from_arrays([self.keys[key][every] for key in keys]))[0]
+        codes = distinct(list(zip(*(self.keys[key][every].tolist() for key in keys), strict=True)))[1]
         size = int(codes.max(initial=-1)) + 1
         one, other = _Grouping(codes[: len(known)], size), _Grouping(codes[len(known) :], size)
         single = (one.sizes == 1) & (other.sizes == 1) & (keys == KEYS)
@@ -263,6 +242,8 @@ class _Pool:
         """As many allowed pairs as possible, then the most agreeing numbers, then the order of the sheets."""
         if not allowed.any():
             return
+        from scipy.optimize import linear_sum_assignment
+
         same, both = self._agreeing(known, new, list(self.numbers))
         order = np.abs(np.arange(len(known))[:, None] - np.arange(len(new))[None, :])
         score = np.where(allowed, 2.0 * len(self.numbers) + 1 + (2 * same - both) - 1e-6 * order, 0.0)

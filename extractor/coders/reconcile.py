@@ -70,6 +70,7 @@ def reconcile(
     level: float = 0.95,
     standardizer: str = "",
     tolerance: float = 0.0,
+    groups: Sequence[str | Path | pd.DataFrame] = (),
 ) -> Reconciliation:
     """Compare the sheets of two or more coders who coded the same studies.
 
@@ -80,6 +81,7 @@ def reconcile(
     variance, level, standardizer : as for ``extractor.convert``; ``level`` is also that of the coefficients' limits.
     tolerance : numbers also agree when they differ by at most this share of the larger; at 0 they agree where their
         rounding intervals overlap.
+    groups : the lines of groups of every sheet, in the order of the sheets, where they stand in files of their own.
 
     Raises
     ------
@@ -88,6 +90,10 @@ def reconcile(
     """
     if not 2 <= len(sources) <= len(ascii_uppercase):
         raise UsageError(f"a comparison takes 2 to {len(ascii_uppercase)} sheets, these are {len(sources)}")
+    if groups and len(groups) != len(sources):
+        raise UsageError(
+            f"{len(sources)} sheets need {len(sources)} sheets of groups, in the same order, or none"
+        )
     if not 0 <= tolerance < 1:
         raise UsageError(f"tolerance {tolerance:g} is not a share from 0 to below 1, such as 0.01")
     if to is not None:
@@ -98,7 +104,8 @@ def reconcile(
         book = default_codebook()
     else:
         book = codebook if isinstance(codebook, Codebook) else load_codebook(codebook)
-    sheets = tuple(read_sheet(source, book) for source in sources)
+    of_groups = groups or (None,) * len(sources)
+    sheets = tuple(read_sheet(source, book, lines) for source, lines in zip(sources, of_groups, strict=True))
     coders = tuple(ascii_uppercase[: len(sheets)])
     given = stack([sheet.table for sheet in sheets])
     matching = match(given)
@@ -127,11 +134,16 @@ def reconcile(
     )
 
 
-def read_sheet(source: str | Path | pd.DataFrame, codebook: Codebook) -> Sheet:
-    """A coded sheet with its lines of groups, and the columns its words stand in; raises as ``read_table`` does."""
+def read_sheet(
+    source: str | Path | pd.DataFrame, codebook: Codebook, groups: str | Path | pd.DataFrame | None = None
+) -> Sheet:
+    """A coded sheet with its lines of groups, and the columns its words stand in; raises as ``read_table`` does.
+
+    ``groups`` : the lines, where they are not a sheet of the source itself.
+    """
     if not isinstance(source, pd.DataFrame) and str(source) == "-":
         raise UsageError("sheets to be compared are read from files, not from standard input")
-    table = with_groups(read_table(source, codebook), source, codebook, None)
+    table = with_groups(read_table(source, codebook), source, codebook, groups)
     stem = Path(codebook.path).stem if codebook.path else ""
     grid = read_grid(source, lambda heading: codebook.meaning(heading) is not None, (stem, codebook.title))
     places: dict[str, Place] = {}

@@ -72,7 +72,7 @@ def stack(tables: Sequence[ReportedTable]) -> Stack:
         row_numbers=np.arange(len(coder), dtype=np.int64),
         numbers={v: _joined(v, tables) for v in variables},
         facts=facts,
-        extras=pd.DataFrame(index=pd.RangeIndex(len(coder))),
+        carried={},
         cells={
             f"{c}{_SEPARATOR}{label}": cells for c, t in enumerate(tables) for label, cells in t.cells.items()
         },
@@ -147,7 +147,7 @@ def swapped(given: Stack, swaps: Sequence[Swap]) -> tuple[ReportedTable, NDArray
         row_numbers=np.arange(len(index), dtype=np.int64),
         numbers=numbers,
         facts=facts,
-        extras=pd.DataFrame(index=pd.RangeIndex(len(index))),
+        carried={},
         cells={**table.cells, **_patched(given, swaps)},
     )
     return batch, members, which

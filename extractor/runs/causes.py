@@ -48,6 +48,9 @@ class Causes:
             for n in _OPTIONS
             if old.settings.get(n) != new.settings.get(n)
         ]
+        self.metric = [arrow("metric", old.settings.get("metric"), new.settings.get("metric"))] * (
+            old.settings.get("metric") != new.settings.get("metric")
+        )
         self.reading = [
             arrow(f"codebook, {n}", old.settings.get(n), new.settings.get(n))
             for n in _READING
@@ -71,7 +74,11 @@ class Causes:
         if any(differ(before[n], after[n]) for n in ("variance", "ci_low", "ci_high")) or bool(
             before["standardizer"] != after["standardizer"]
         ):
-            found["options"] = self.options
+            found["options"] = list(self.options)
+        found["options"] += self.metric
+        found["input"] += [
+            arrow(n, before[n], after[n]) for n in ("study", "outcome", "effect") if before[n] != after[n]
+        ]
         said = [(word, texts) for word, texts in found.items() if texts]
         if said:
             return " and ".join(word for word, _ in said), [text for _, texts in said for text in texts]

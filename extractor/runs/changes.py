@@ -17,14 +17,15 @@ import pandas as pd
 
 from extractor.runs.causes import Causes, arrow, differ, value_of
 from extractor.runs.folder import NUMBERS, WORDS, Run
+from extractor.runs.matching import KEYS, pairs
 from extractor.table import BoolArray
-from extractor.words import plain
 
 COLUMNS = [
     *("row", "old_row", "study", "outcome", "effect", "change", "estimate_old", "estimate_new", "shift"),
     *("shift_in_se", "status_old", "status_new", "cause", "why"),
 ]
-_KEYS = ["study", "outcome", "effect"]
+STILL = PRECISION, WORDING, LABELS = "precision", "route or wording", "labels"
+"""Changes that leave the estimate where it was."""
 _SAME = 1e-9
 """Numbers closer than this, relatively, are the same number computed on another machine."""
 
@@ -44,12 +45,12 @@ class Comparison:
 
 
 def compare(old: Run, new: Run) -> Comparison:
-    """Compare two runs of one review, rows matched by their numbers and labels."""
-    pairs = _pairs(old.effects, new.effects)
+    """Compare two runs of one review, effects matched as ``matching.pairs`` says."""
+    found = pairs(old, new)
     settings = _settings(old, new)
     metrics = [str(run.settings.get("metric", "")) for run in (old, new)]
     incomparable = f"the metrics differ: {metrics[0]} and {metrics[1]}" if metrics[0] != metrics[1] else ""
-    both = pairs[pairs["at_old"].notna() & pairs["at_new"].notna()].astype(int)
+    both = found[found["at_old"].notna() & found["at_new"].notna()].astype(int)
     rows = [
         run.effects["row"].to_numpy()[both[at]].tolist() for run, at in ((old, "at_old"), (new, "at_new"))
     ]
@@ -57,8 +58,8 @@ def compare(old: Run, new: Run) -> Comparison:
     causes = Causes(old, new, matched)
     moved = _moved(old.effects, new.effects, both)
     lines = [_line(old, new, pair, causes) for pair in both[moved].to_dict("records")]
-    lines += [_lone(new.effects, int(at), "appeared") for at in pairs.loc[pairs["at_old"].isna(), "at_new"]]
-    lines += [_lone(old.effects, int(at), "gone") for at in pairs.loc[pairs["at_new"].isna(), "at_old"]]
+    lines += [_lone(new.effects, int(at), "appeared") for at in found.loc[found["at_old"].isna(), "at_new"]]
+    lines += [_lone(old.effects, int(at), "gone") for at in found.loc[found["at_new"].isna(), "at_old"]]
     frame = pd.DataFrame(lines, columns=COLUMNS)
     still = [pair for pair, changed in zip(matched, moved, strict=True) if not changed]
     unmoved = [text for pair in still for text in causes.cells(*pair)]
@@ -72,31 +73,16 @@ def compare(old: Run, new: Run) -> Comparison:
     )
 
 
-def _pairs(old: pd.DataFrame, new: pd.DataFrame) -> pd.DataFrame:
-    """Positions of the same effect in both tables: same row and labels first, then same labels in sheet order."""
-    keys = [
-        frame[_KEYS].assign(**{f"at_{name}": np.arange(len(frame)), "number": frame["row"].to_numpy()})
-        for frame, name in ((old, "old"), (new, "new"))
-    ]
-    same = keys[0].merge(keys[1], on=[*_KEYS, "number"])
-    left = [
-        k[~k[f"at_{name}"].isin(same[f"at_{name}"])] for k, name in zip(keys, ("old", "new"), strict=True)
-    ]
-    left = [k.assign(turn=k.groupby(_KEYS).cumcount()) for k in left]
-    rest = left[0].merge(left[1], on=[*_KEYS, "turn"], how="outer")
-    return pd.concat([same[["at_old", "at_new"]], rest[["at_old", "at_new"]]], ignore_index=True)
-
-
-def _moved(old: pd.DataFrame, new: pd.DataFrame, pairs: pd.DataFrame) -> BoolArray:
-    """Which pairs differ in a number or a word of their effect; shape (pairs,)."""
-    before, after = old.iloc[pairs["at_old"]], new.iloc[pairs["at_new"]]
-    moved = np.zeros(len(pairs), dtype=bool)
+def _moved(old: pd.DataFrame, new: pd.DataFrame, both: pd.DataFrame) -> BoolArray:
+    """Which pairs differ in a number, a word or a label of their effect; shape (pairs,)."""
+    before, after = old.iloc[both["at_old"]], new.iloc[both["at_new"]]
+    moved = np.zeros(len(both), dtype=bool)
     for name in NUMBERS:
         a, b = before[name].to_numpy(dtype=float), after[name].to_numpy(dtype=float)
         with np.errstate(invalid="ignore"):
             near = np.abs(a - b) <= _SAME * np.maximum(np.abs(a), np.abs(b))
         moved |= ~(near | (np.isnan(a) & np.isnan(b)) | (a == b))
-    for name in WORDS:
+    for name in (*WORDS, *KEYS):
         moved |= before[name].to_numpy() != after[name].to_numpy()
     return moved
 
@@ -109,7 +95,7 @@ def _line(old: Run, new: Run, pair: Mapping[Hashable, Any], causes: Causes) -> d
     return {
         "row": int(after["row"]),
         "old_row": int(before["row"]),
-        **{name: after[name] for name in _KEYS},
+        **{name: after[name] for name in KEYS},
         "change": _change(before, after, shift),
         "estimate_old": before["estimate"],
         "estimate_new": after["estimate"],
@@ -128,7 +114,7 @@ def _lone(frame: pd.DataFrame, at: int, change: str) -> dict[str, object]:
     side = "new" if new else "old"
     return {
         ("row" if new else "old_row"): int(row["row"]),
-        **{name: row[name] for name in _KEYS},
+        **{name: row[name] for name in KEYS},
         "change": change,
         f"estimate_{side}": row["estimate"],
         f"status_{side}": row["status"],
@@ -142,8 +128,9 @@ def _change(before: pd.Series, after: pd.Series, shift: float) -> str:
         return f"{before['status']} -> {after['status']}"
     if abs(shift) > _SAME * max(abs(before["estimate"]), abs(after["estimate"]), 1e-300):
         return "moved"
-    numbers = any(differ(before[name], after[name]) for name in NUMBERS)
-    return "precision" if numbers else "route or wording"
+    if any(differ(before[name], after[name]) for name in NUMBERS):
+        return PRECISION
+    return WORDING if any(before[name] != after[name] for name in WORDS) else LABELS
 
 
 def _settings(old: Run, new: Run) -> list[str]:
@@ -170,15 +157,3 @@ def _settings(old: Run, new: Run) -> list[str]:
         if pair[0] != pair[1]:
             said.append(f"the {title} is not the same file")
     return said
-
-
-def in_words(line: Mapping[Hashable, Any]) -> str:
-    """One line of the comparison as a sentence."""
-    labels = ", ".join(str(line[name]) for name in _KEYS if line[name])
-    row = line["row"] if pd.notna(line["row"]) else line["old_row"]
-    said = f"row {int(row)}{f' ({labels})' if labels else ''}: {line['change']}"
-    if pd.notna(line["estimate_old"]) and pd.notna(line["estimate_new"]):
-        said += f", {plain(line['estimate_old'])} -> {plain(line['estimate_new'])}"
-    elif pd.notna(line["estimate_new"]):
-        said += f", now {plain(line['estimate_new'])}"
-    return f"{said}. {str(line['cause']).capitalize()}: {line['why']}"

@@ -80,11 +80,11 @@ def read_run(folder: Path) -> Run:
     return Run(
         str(folder),
         _effects(folder / "effects.csv", package),
-        {int(row["row"]): row for row in rows},
+        _by_number(rows, folder / "derivations.json"),
         relations,
         settings,
         str(software.get("version", "")),
-        sources if isinstance(sources, list) else [],
+        [each for each in sources if isinstance(each, dict)] if isinstance(sources, list) else [],
         [str(note) for note in notes] if isinstance(notes, list) else [],
     )
 
@@ -94,7 +94,7 @@ def _json(path: Path) -> dict[str, object]:
         found = json.loads(path.read_text(encoding="utf-8"))
     except OSError as fault:
         raise UnreadableInput(f"{quoted(path, 200)} cannot be opened: {fault.strerror}") from fault
-    except ValueError as fault:
+    except (ValueError, RecursionError) as fault:
         raise UnreadableInput(f"{quoted(path, 200)} is damaged: it is not JSON") from fault
     if not isinstance(found, dict):
         raise UnreadableInput(f"{quoted(path, 200)} was not written by extractor convert")
@@ -115,12 +115,39 @@ def _effects(path: Path, package: dict[str, object]) -> pd.DataFrame:
             f"{quoted(path, 200)} has no column {', '.join(lacking)}; write it anew with convert --out"
         )
     frame = frame[list(_NEEDED)].copy()
-    frame["row"] = pd.to_numeric(frame["row"]).astype(int)
-    for name in NUMBERS:
-        frame[name] = pd.to_numeric(frame[name].replace("", None))
+    try:
+        frame["row"] = pd.to_numeric(frame["row"]).astype(int)
+        for name in NUMBERS:
+            frame[name] = pd.to_numeric(frame[name].replace("", None)).astype(float)
+    except (TypeError, ValueError) as fault:
+        raise UnreadableInput(
+            f"{quoted(path, 200)} is damaged: words where numbers belong; write it anew with convert --out"
+        ) from fault
     for name in _LABELS:
         frame[name] = frame[name].str.replace(_NEUTRAL, "", regex=True)
     return frame
+
+
+def _by_number(rows: list[object], path: Path) -> dict[int, dict[str, object]]:
+    """What is said of each row, by its number."""
+    found: dict[int, dict[str, object]] = {}
+    for row in rows:
+        number = row.get("row") if isinstance(row, dict) else None
+        if not isinstance(row, dict) or not isinstance(number, int) or not _well_formed(row):
+            raise UnreadableInput(f"{quoted(path, 200)} is damaged; write it anew with convert --out")
+        found[number] = row
+    return found
+
+
+def _well_formed(row: dict[str, object]) -> bool:
+    """Whether steps and cells are of the kind that the comparison looks into."""
+    steps, cells = row.get("steps", []), row.get("cells", {})
+    return (
+        isinstance(steps, list)
+        and all(isinstance(step, dict) and isinstance(step.get("quantity"), str) for step in steps)
+        and isinstance(cells, dict)
+        and all(isinstance(text, str) for text in cells.values())
+    )
 
 
 def _canonical(package: dict[str, object]) -> dict[str, str]:
@@ -128,7 +155,13 @@ def _canonical(package: dict[str, object]) -> dict[str, str]:
     found: dict[str, str] = {}
     resources = package.get("resources")
     for resource in resources if isinstance(resources, list) else []:
-        if resource.get("name") == "effects":
-            for field in resource.get("schema", {}).get("fields", []):
-                found[field["name"]] = field.get("extractor:column", field["name"])
+        schema = resource.get("schema") if isinstance(resource, dict) else None
+        fields = (
+            schema.get("fields") if isinstance(schema, dict) and resource.get("name") == "effects" else None
+        )
+        for field in fields if isinstance(fields, list) else []:
+            name = field.get("name") if isinstance(field, dict) else None
+            own = field.get("extractor:column") if isinstance(field, dict) else None
+            if isinstance(name, str) and isinstance(own, str):
+                found[name] = own
     return found

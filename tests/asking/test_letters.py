@@ -2,12 +2,13 @@
 
 from __future__ import annotations
 
+import json
 import re
 from pathlib import Path
 
 import pandas as pd
 import pytest
-from click.testing import CliRunner
+from click.testing import CliRunner, Result
 from openpyxl import Workbook
 
 from extractor.api import Reading, read
@@ -15,6 +16,7 @@ from extractor.asking.letters import LOG_COLUMNS, PHRASES, Letter, letters
 from extractor.asking.questions import Aim, questions
 from extractor.asking.replies import read_replies
 from extractor.codebook import default_codebook
+from extractor.commands.main import cli
 from extractor.commands.unlock import command
 from extractor.decisions import COLUMNS, apply_decisions, read_decisions
 from extractor.errors import UnreadableInput, UsageError
@@ -116,9 +118,34 @@ def test_groups_are_named_by_what_the_article_says_of_them() -> None:
     assert "n = 20 and M = 10.2" in text
     assert "n = 22 and M = 8.6" in text
     # a single number of the whole row needs no groups
-    assert drafted("eta_squared", [{"study": "A", "design": "one-way", "df_effect": "2", "df_error": "57"}])[
-        0
-    ].groups
+    row = {"study": "A", "design": "one-way", "df_effect": "2", "df_error": "57"}
+    (single,) = drafted("eta_squared", [row])
+    assert [line.asked for line in single.lines] == [PHRASES["f_value"]]
+    assert single.groups == ""
+
+
+def test_numbers_of_a_whole_model_are_asked_for_once_and_go_into_every_row() -> None:
+    model = {"study": "A", "outcome": "sleep", "design": "factorial", "analysis": "m"}
+    terms = [("diet", "12.40", "1"), ("season", "3.10", "2"), ("diet x season", "1.80", "2")]
+    rows = [
+        model | {"term": term, "f_value": f, "df_effect": df, "df_error": "84", "ss_total": ""}
+        for term, f, df in terms
+    ]
+    (letter,) = drafted("omega_squared", rows)
+    asked = [(title, line.asked) for title, line in letter.numbers]
+    assert asked == [
+        ("sleep, diet", PHRASES["ss_effect"]),
+        ("sleep, diet", PHRASES["ss_total"]),
+        ("sleep, season", PHRASES["ss_effect"]),
+        ("sleep, diet x season", PHRASES["ss_effect"]),
+    ]
+    totals = log_frame([letter])["cell"]
+    assert totals[totals.str.startswith("ss_total")].tolist() == [f"ss_total [I{row}]" for row in (2, 3, 4)]
+    # what holds of all results is said once
+    for text in (markdown(letter), plain_text(letter)):
+        assert text.count("we have had to assume so far") == 1
+        assert " ".join(text.split()).count("cells of equal size") == 1
+    assert "| 3 | sleep, season | sum of squares of this effect | |" in markdown(letter)
 
 
 def test_words_of_the_sheet_are_not_taken_for_markup() -> None:
@@ -209,16 +236,44 @@ def test_replies_in_a_workbook(tmp_path: Path) -> None:
     sheet.append([2, "direction", "+", ""])
     book.save(tmp_path / "replies.xlsx")
     found = read_replies(tmp_path / "replies.xlsx", reading().table, default_codebook())
-    assert found.decisions["source"].tolist() == ["e-mail of 4 March"]
+    sheet.append([3, "orientation", "lower is better", ""])
+    book.save(tmp_path / "replies.xlsx")
+    found = read_replies(tmp_path / "replies.xlsx", reading().table, default_codebook())
+    assert found.decisions["source"].tolist() == ["e-mail of 4 March", "reply of the authors"]
+    assert found.decisions["cell"].tolist() == ["sd_1 [I2]", "direction"]
     assert found.declined == [(2, "sd_2 [J2]")]
-    assert found.words == [(2, "direction", "+")]
+    assert found.words == [(3, "orientation", "lower is better")]
+
+
+@pytest.mark.parametrize(
+    ("contrast", "reply", "sign"),
+    [
+        ("", "group 1", "+"),
+        ("", "Group 2", "-"),
+        ("2 - 1", "the group 1 had the higher mean", "-"),
+        ("1 - 3", "condition 3", "-"),
+        ("", "−", "-"),
+        ("1 - 3", "group 2", ""),
+        ("", "the treated ones", ""),
+    ],
+)
+def test_which_group_was_higher_gives_the_direction_of_the_contrast(
+    tmp_path: Path, contrast: str, reply: str, sign: str
+) -> None:
+    """A contrast a - b is positive where group a has the higher mean (its definition)."""
+    (tmp_path / "r.csv").write_text(f"row,cell,value\n2,direction,{reply}\n", encoding="utf-8")
+    found = read_replies(
+        tmp_path / "r.csv", reading([ROWS[1] | {"contrast": contrast}]).table, default_codebook()
+    )
+    assert found.decisions["value"].tolist() == ([sign] if sign else [])
+    assert found.words == ([] if sign else [(2, "direction", reply)])
 
 
 def test_a_reply_for_a_column_that_the_sheet_lacks_says_so(tmp_path: Path) -> None:
     (tmp_path / "r.csv").write_text("row,cell,value\n2,correlation,.5\n", encoding="utf-8")
-    assert read_replies(tmp_path / "r.csv", reading().table, default_codebook()).new_columns == [
-        "correlation"
-    ]
+    found = read_replies(tmp_path / "r.csv", reading().table, default_codebook())
+    assert found.new_columns == ["correlation"]
+    assert found.decisions["cell"].tolist() == ["correlation"]
 
 
 @pytest.mark.parametrize(
@@ -261,10 +316,66 @@ def test_the_command_shows_questions_and_drafts_letters(coded: str) -> None:
 
 
 def test_the_command_turns_a_log_into_decisions_on_standard_output(coded: str, tmp_path: Path) -> None:
-    Path("r.csv").write_text("row,cell,value,by\n2,sd_1 [I2],3.1,coder 1\n2,direction,+,\n", encoding="utf-8")
+    Path("r.csv").write_text(
+        "row,cell,value,by\n2,sd_1 [I2],3.1,coder 1\n2,direction,?!,\n", encoding="utf-8"
+    )
     shown = CliRunner().invoke(command, [coded, "--to", "cohens_d", "--log", "r.csv"], catch_exceptions=False)
     assert shown.stdout.splitlines()[0] == ",".join(COLUMNS)
     assert shown.stdout.splitlines()[1].startswith("2,sd_1 [I2],correct,3.1,reply of the authors,coder 1")
-    assert "type '+' into the sheet" in shown.stderr
+    assert "row 2: direction is no number; type '?!' into the sheet" in shown.stderr
     both = CliRunner().invoke(command, [coded, "--to", "cohens_d", "--log", "r.csv", "--letters", "x"])
     assert isinstance(both.exception, UsageError)
+
+
+def test_the_whole_way_from_letters_to_converted_rows(
+    tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """Gaps, letters, replies typed into the log, decisions: every row converts and says where its numbers are from."""
+    monkeypatch.chdir(tmp_path)
+    rows = [
+        {
+            "study": "North",
+            "design": "one-way",
+            "page": "7",
+            "f_value": "",
+            "df_effect": "2",
+            "df_error": "57",
+        },
+        {"study": "South", "design": "two-group", "f_value": "4.31", "df_error": "38"},
+        {"study": "West", "design": "one-way", "f_value": "", "n_1": "20", "mean_1": "5.1", "sd_1": "1.2"},
+    ]
+    pd.DataFrame(rows).fillna("").to_csv("coded.csv", index=False)
+    coded = Path("coded.csv").read_bytes()
+
+    def run(*words: str) -> Result:
+        found = CliRunner().invoke(cli, list(words), catch_exceptions=False)
+        assert found.exit_code == 0, found.stderr
+        return found
+
+    def converted(*more: str) -> pd.DataFrame:
+        found = run("convert", "coded.csv", "--to", "hedges_g", "--out", "out", "--force", *more)
+        assert found
+        return pd.read_csv("out/effects.csv", keep_default_na=False)
+
+    assert set(converted()["status"]) == {"blocked"}
+    run("unlock", "coded.csv", "--to", "hedges_g", "--letters", "letters")
+    log = pd.read_csv(f"letters/{LOG}", dtype=str, keep_default_na=False)
+    # the sheet has none of these columns
+    assert {"t_value", "direction"} <= set(log["cell"])
+    answers = {"t_value": "2.31", "direction": "group 2", "n": "20", "mean": "5.6", "sd": "1.10"}
+    log["value"] = [answers[re.sub(r"_\d+$", "", cell.partition(" [")[0])] for cell in log["cell"]]
+    log["source"] = "e-mail of 4 March"
+    log.to_csv(f"letters/{LOG}", index=False)
+    replies = run("unlock", "coded.csv", "--to", "hedges_g", "--log", f"letters/{LOG}")
+    Path("decisions.csv").write_text(replies.stdout, encoding="utf-8")
+    effects = converted("--decisions", "decisions.csv")
+    assert effects["status"].tolist() == ["converted"] * 3
+    # two groups of 20 by an F of 4.31 against the second (J = 1 - 3/(4 df - 1), g = J * 2t/sqrt(N))
+    south = -(4.31**0.5) * 2 / 40**0.5 * (1 - 3 / (4 * 38 - 1))
+    assert effects["estimate"][1] == pytest.approx(south, abs=2e-3)
+    trail = json.loads(Path("out/derivations.json").read_text(encoding="utf-8"))
+    said = json.dumps(trail["rows"][0])
+    assert "corrected from blank to 2.31 by authors of North (e-mail of 4 March" in said
+    findings = pd.read_csv("out/findings.csv", keep_default_na=False)
+    assert (findings["rule"] == "corrected").sum() == len(log)
+    assert Path("coded.csv").read_bytes() == coded

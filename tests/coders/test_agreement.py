@@ -6,11 +6,15 @@ import itertools
 import math
 
 import numpy as np
+import pandas as pd
 import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 from hypothesis.extra.numpy import arrays
 from scipy import stats
+from sklearn.metrics import cohen_kappa_score
+from statsmodels.formula.api import ols
+from statsmodels.stats.anova import anova_lm
 from statsmodels.stats.inter_rater import cohens_kappa as reference_cohen
 from statsmodels.stats.inter_rater import fleiss_kappa as reference_fleiss
 
@@ -140,6 +144,7 @@ def test_cohens_kappa_is_the_reference_library_s(codes: np.ndarray, level: float
     with np.errstate(all="ignore"):
         reference = reference_cohen(cross)
     assert found.value == pytest.approx(reference.kappa, abs=1e-10)
+    assert found.value == pytest.approx(cohen_kappa_score(*codes.T), abs=1e-10)
     half = stats.norm.ppf((1 + level) / 2) * reference.std_kappa
     # below that the reference's own variance is what cancellation left
     if reference.std_kappa > 1e-4:
@@ -253,6 +258,20 @@ def test_icc_from_the_two_way_table(values: np.ndarray, level: float) -> None:
     f = stats.f.ppf((1 + level) / 2, n - 1, v)
     low = n * (msr - f * mse) / (f * (k * msc + (k * n - k - n) * mse) + n * msr)
     assert found.low == pytest.approx(low, rel=1e-6, abs=1e-9)
+
+
+def test_icc_from_a_reference_library_s_analysis_of_variance() -> None:
+    """ICC(2,1) = (MSR - MSE) / (MSR + (k - 1) MSE + k (MSC - MSE) / n) (Shrout & Fleiss 1979), the mean squares being
+    statsmodels' two-way analysis of variance without interaction."""
+    rng = np.random.default_rng(5)
+    for n, k in ((5, 2), (12, 3), (40, 4)):
+        values = rng.normal(10, 3, n)[:, None] + rng.normal(0, 1, k) + rng.normal(0, 1.5, (n, k))
+        long = pd.DataFrame(values).melt(ignore_index=False, var_name="coder", value_name="score")
+        long["row"] = long.index
+        table = anova_lm(ols("score ~ C(row) + C(coder)", long).fit())
+        msr, msc, mse = (table["sum_sq"] / table["df"]).to_numpy()
+        expected = (msr - mse) / (msr + (k - 1) * mse + k * (msc - mse) / n)
+        assert icc_agreement(values).value == pytest.approx(expected, abs=1e-10)
 
 
 def test_icc_limits_cover() -> None:

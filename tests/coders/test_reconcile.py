@@ -8,7 +8,6 @@ from pathlib import Path
 import numpy as np
 import pandas as pd
 import pytest
-from scipy import stats
 
 import extractor
 from extractor.coders.agreement import cohens_kappa, icc_agreement
@@ -27,54 +26,16 @@ from tests.double_coding import (
     slip,
     workbook,
 )
+from tests.evidence.double_coding import measured
 
 
 @pytest.mark.parametrize("seed", range(5))
 def test_disputes_stand_in_the_order_of_the_slips_true_displacements(seed: int) -> None:
-    """300 effects coded twice with known slips, up to two in a row and each with either coder.
-
-    The true displacement of a slip is that of the effect of the truth when only this slip is made. The rank
-    correlations are printed (pytest -rP shows them).
-    """
-    rng = np.random.default_rng(seed)
-    truth = random_sheet(rng, 300)
-    coders = [truth.copy(), truth.copy()]
-    slips: list[tuple[int, str, str]] = []
-    for i in range(len(truth)):
-        filled = [
-            name
-            for name in truth.columns
-            if truth.loc[i, name] and name not in ("study", "outcome", "design")
-        ]
-        for name in rng.choice(filled, rng.choice([0, 1, 2], p=[0.65, 0.25, 0.1]), replace=False):
-            slips.append((i, str(name), slip(rng, truth.loc[i], str(name))))
-            coders[rng.integers(2)].loc[i, name] = slips[-1][2]
-    alone = truth.loc[[i for i, _, _ in slips]].reset_index(drop=True)
-    alone = changed(alone, *((at, name, text) for at, (_, name, text) in enumerate(slips)))
-    before = extractor.convert(truth, TO).effects["estimate"].to_numpy()[[i for i, _, _ in slips]]
-    after = extractor.convert(alone, TO).effects["estimate"].to_numpy()
-    assert np.isfinite(before).all()
-    # a slip such as a negative SD leaves no effect at all, which is further than any distance
-    displacement = np.where(np.isnan(after), np.inf, np.abs(after - before))
-
-    found = reconcile([coders[0], coders[1].sample(frac=1, random_state=seed).reset_index(drop=True)], TO)
-    lines = found.disputes
-    order = {
-        key: at
-        for at, key in enumerate(zip(lines["study"], lines["outcome"], lines["variable"], strict=True))
-    }
-    at = np.array([order[truth.loc[i, "study"], truth.loc[i, "outcome"], name] for i, name, _ in slips])
-    assert len(lines) == len(slips)
-    rank_correlation = float(stats.spearmanr(displacement, -at).statistic)
-    touching = displacement > 0
-    among_touching = float(stats.spearmanr(displacement[touching], -at[touching]).statistic)
-    print(
-        f"{len(slips)} slips: rank correlation {rank_correlation:.3f}, of those that touch {among_touching:.3f}"
-    )
-    assert rank_correlation > 0.9
-    assert among_touching > 0.95
-    # the ten that matter most are among the first twenty
-    assert (at[np.argsort(-displacement)[:10]] < 20).all()
+    found = measured(seed)
+    assert found.disputes == found.slips
+    assert found.ranks > 0.9
+    assert found.touching > 0.95
+    assert found.top == 10
 
 
 @pytest.mark.parametrize("seed", range(2))

@@ -6,6 +6,7 @@ import json
 from collections.abc import Callable
 from dataclasses import replace
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 import pandas as pd
@@ -16,9 +17,11 @@ from extractor.api import Result, read
 from extractor.codebook import Codebook, load_codebook
 from extractor.commands.changes import command
 from extractor.errors import UnreadableInput
-from extractor.output.package import Request, write_conversion
+from extractor.output.package import write_conversion
+from extractor.output.request import Request
+from extractor.output.teamwork import change_in_words
 from extractor.routes.conversion import convert_evidence
-from extractor.runs.changes import Comparison, compare, in_words
+from extractor.runs.changes import Comparison, compare
 from extractor.runs.folder import Run, read_run
 from extractor.runs.recorded import recorded_cells
 from extractor.table import Assumption
@@ -76,29 +79,10 @@ class Runs:
         (path / "derivations.json").write_text(json.dumps(derivations), encoding="utf-8")
 
     def run(
-        self,
-        frame: Frame,
-        metric: str = "omega_squared",
-        book: Codebook | None = None,
-        *,
-        recorded: bool = True,
-        decisions: str | None = None,
-        level: float = 0.95,
-        codebook: str | None = None,
-        rename: dict[str, str] | None = None,
+        self, frame: Frame, metric: str = "omega_squared", book: Codebook | None = None, **how: Any
     ) -> Run:
-        return read_run(
-            self.write(
-                frame,
-                metric,
-                book,
-                recorded=recorded,
-                decisions=decisions,
-                level=level,
-                codebook=codebook,
-                rename=rename,
-            )
-        )
+        """Written as ``write`` does, and read back."""
+        return read_run(self.write(frame, metric, book, **how))
 
 
 @pytest.fixture
@@ -336,7 +320,7 @@ def test_a_folder_that_is_not_there(tmp_path: Path) -> None:
 
 def test_words(runs: Runs) -> None:
     found = compare(runs.run(sheet()), runs.run(changed(sheet(), 1, "f_value", "5.20")))
-    assert in_words(found.effects.iloc[0].to_dict()) == (
+    assert change_in_words([found.effects.iloc[0].to_dict()]) == (
         "row 3 (South, a): moved, 0.05882 -> 0.1489. Input: f_value [D3]: 2.50 -> 5.20"
     )
 
