@@ -14,6 +14,26 @@ NO_CONTRAST = "none"
 """The contrast of a term that compares more than two levels."""
 
 _DIRECTIONS = {"+": 1.0, "-": -1.0}
+_CODED_AS = {
+    "one-sample": "paired",
+    "one sample": "paired",
+    "crossover": "paired",
+    "cross-over": "paired",
+    "matched": "paired",
+    "paired": "paired",
+    "split": "mixed",
+    "independent": "two-group",
+    "parallel": "two-group",
+    "cluster": "two-group",
+    "repeated": "within",
+    "covarian": "ancova",
+    "pretest": "pre-post-control",
+    "pre-post": "pre-post-control",
+    "two-way": "factorial",
+    "three-way": "factorial",
+}
+"""Parts of other words for a design, and the word by which it is coded."""
+
 _POOLED_UNLESS_SAID = frozenset({"two-group"})
 """Designs in which a d of unsaid standardizer is taken as the pooled one; elsewhere several are in use."""
 
@@ -44,7 +64,7 @@ class Coding:
         """The design words; blocks rows whose word is unknown or missing."""
         coded = self.table.fact("design")
         for word in {str(w) for w in coded} - DESIGNS.keys():
-            near = close_matches(word, DESIGNS)
+            near = [_CODED_AS[w] for w in _CODED_AS if w in word.lower()] or close_matches(word, DESIGNS)
             hint = f" (did you mean {near[0]}?)" if near else ""
             known = ", ".join(DESIGNS)
             why = (
@@ -122,4 +142,6 @@ class Coding:
 def leaf_of_d(standardizer: str, design: str) -> str:
     """The quantity a printed d stands for."""
     usual = DEFAULT.get(design, "pooled")
+    if design == "factorial" and standardizer == usual:
+        return "d_restored"
     return "cohens_d" if standardizer == usual == "pooled" else f"d_{standardizer}"

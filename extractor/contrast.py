@@ -41,6 +41,8 @@ def contrast_weights(text: str, groups: int) -> tuple[FloatArray, str]:
         ) from None
     if len(given) != groups:
         raise ValueError(f"contrast '{text}' has {len(given)} weights for {groups} coded groups")
+    if not np.isfinite(given).all():
+        raise ValueError(f"contrast '{text}' has a weight that is no number")
     if abs(given.sum()) > 1e-6 * np.abs(given).sum() or not (given > 0).any():
         raise ValueError(f"contrast '{text}' has weights that do not sum to zero")
     shown = ", ".join(f"{w:.3g}" for w in given)

@@ -13,7 +13,7 @@ from extractor.evidence import Block, coded_k
 from extractor.quantities import VOCABULARY
 from extractor.table import FloatArray, ReportedTable, Variable
 
-_FACTS = ("contrast_weight", "direction", "k_groups", "tails", "df_effect", "one_factor")
+_FACTS = ("contrast_weight", "direction", "k_groups", "tails", "df_effect", "one_factor", "only_factor")
 
 
 @dataclass(frozen=True, slots=True)

@@ -3,43 +3,61 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
+from dataclasses import dataclass
+from functools import lru_cache
 
 import numpy as np
 from numpy.typing import NDArray
 
-from extractor.audit.constraints import Cell, Constraints, constraints_of
+from extractor.audit.conflict import conflicts
+from extractor.audit.constraints import Cell, Constraints
 from extractor.audit.diagnosis import Suspect, pairs, slack, suspects
 from extractor.audit.fits import LIKELY, Fit, fits_of
-from extractor.audit.propagation import judges_of, propagate
-from extractor.evidence import Block
+from extractor.audit.propagation import judges_of
+from extractor.audit.support import shown
+from extractor.audit.together import contradictory
+from extractor.evidence import Evidence
 from extractor.findings import Finding, Severity
 from extractor.quantities import VOCABULARY
 from extractor.routes.planner import Start, search
-from extractor.table import ReportedTable
+from extractor.table import BoolArray, ReportedTable
 from extractor.words import listed, plain, printed_text
 
 
-def contradictions(block: Block, table: ReportedTable) -> Iterator[Finding]:
-    """Findings of one block."""
-    constraints = constraints_of(block, table)
-    if not constraints.cells:
-        return
-    bad = np.flatnonzero(propagate(constraints.design, constraints.domain.copy()))
-    for start in range(0, len(bad), 2_000):
-        some = bad[start : start + 2_000]
-        yield from _diagnosed(constraints.take(some), block.positions[some], table)
+@dataclass(frozen=True, slots=True)
+class _Diagnosis:
+    """What is known of one contradictory row.
+
+    single, couples : the cells that alone, or two together, could be at fault. fits : repairs that put it right.
+    clash : printed quantities that cannot hold together, where no printed value by itself is out of place.
+    """
+
+    single: list[Suspect]
+    couples: list[tuple[Cell, Cell]]
+    fits: list[Fit]
+    clash: list[str]
 
 
-def checks_of(block: Block, table: ReportedTable) -> int:
-    """How many printed quantities of each row the others imply: 0 where nothing can be checked."""
-    constraints = constraints_of(block, table)
+def contradictions(evidence: Evidence, constraints: Sequence[Constraints]) -> Iterator[Finding]:
+    """Findings about rows whose numbers exclude each other; ``constraints`` are those of the evidence's blocks."""
+    wrong = contradictory(constraints)
+    for block, own, rows in zip(evidence.blocks, constraints, wrong, strict=True):
+        bad = np.flatnonzero(rows)
+        for start in range(0, len(bad), 2_000):
+            some = bad[start : start + 2_000]
+            yield from _diagnosed(own.take(some), block.positions[some], evidence.table)
+
+
+def checks_of(constraints: Constraints) -> int:
+    """How many printed quantities of each row of a block the others imply: 0 where nothing can be checked."""
     printed = {cell.quantity for cell in constraints.cells}
     others = constraints.domain.low.keys() - printed
-    return sum(_implied(constraints.design, (printed - {q}) | others, q) for q in sorted(printed))
+    return sum(_implied(constraints.design, frozenset((printed - {q}) | others), q) for q in sorted(printed))
 
 
-def _implied(design: str, known: set[str], wanted: str) -> bool:
+@lru_cache(maxsize=65_536)
+def _implied(design: str, known: frozenset[str], wanted: str) -> bool:
     reached = set(known)
     while wanted not in reached:
         new = {r.gives for r in judges_of(design) if r.routes and reached.issuperset(r.needs)} - reached
@@ -60,46 +78,74 @@ def _diagnosed(
         freed |= suspect.frees
     stuck = np.flatnonzero(~freed & np.array([not f for f in fits], dtype=bool))
     couples = pairs(constraints, stuck) if len(stuck) else []
+    clashes = _clashes(constraints, single)
     for row in range(constraints.rows):
-        chosen = [s for s in single if s.frees[row]]
-        together = [(a, b) for a, b, rows in couples if row in rows]
-        yield _finding(
-            constraints, row, int(positions[row]), table, stretch[row], chosen, fits[row], together
+        known = _Diagnosis(
+            [s for s in single if s.frees[row]],
+            [(a, b) for a, b, rows in couples if row in rows],
+            _distinct(fits[row]),
+            clashes.get(row, []),
         )
+        yield _finding(constraints, row, int(positions[row]), table, stretch[row], known)
+
+
+def _clashes(constraints: Constraints, single: list[Suspect]) -> dict[int, list[str]]:
+    """By row, what cannot hold together, where a suspect's printed value lies within what the others allow."""
+    within = np.zeros(constraints.rows, dtype=bool)
+    for suspect in single:
+        within |= suspect.frees & ~_displaced(constraints, suspect)
+    rows = np.flatnonzero(within)
+    takes_part = conflicts(constraints, rows) if len(rows) else {}
+    return {int(row): [name for name, part in takes_part.items() if part[at]] for at, row in enumerate(rows)}
+
+
+def _displaced(constraints: Constraints, suspect: Suspect) -> BoolArray:
+    low, high = constraints.interval(suspect.cell)
+    return np.asarray((suspect.low > high) | (suspect.high < low))
+
+
+def _distinct(fits: list[Fit]) -> list[Fit]:
+    """Without those that only free more cells for the same reason."""
+    return [
+        fit
+        for at, fit in enumerate(fits)
+        if not any(f.repair.words == fit.repair.words and set(f.cells) < set(fit.cells) for f in fits[:at])
+    ]
 
 
 def _finding(
-    constraints: Constraints,
-    row: int,
-    position: int,
-    table: ReportedTable,
-    stretch: float,
-    single: list[Suspect],
-    fits: list[Fit],
-    couples: list[tuple[Cell, Cell]],
+    constraints: Constraints, row: int, position: int, table: ReportedTable, stretch: float, known: _Diagnosis
 ) -> Finding:
-    weak = [fit for fit in fits if fit.chance > LIKELY]
+    single = known.single
+    weak = [fit for fit in known.fits if fit.chance > LIKELY]
     # where no cell alone accounts for the row, a weak explanation is better than none
-    fits = [fit for fit in fits if fit.chance <= LIKELY or not single]
+    fits = [fit for fit in known.fits if fit.chance <= LIKELY or not single]
     order = {cell: rank for rank, cell in reversed(list(enumerate(c for fit in fits for c in fit.cells)))}
     single = sorted(single, key=lambda s: (order.get(s.cell, math.inf), _displacement(constraints, s, row)))
     # a cell that only a repair of several cells could put right is under suspicion too, after the others
     also = (cell for fit in [*fits, *weak] for cell in fit.cells)
     named = list(dict.fromkeys([*(fits[0].cells if fits else ()), *(s.cell for s in single), *also]))
     if not named:
-        named = list(dict.fromkeys(c for couple in couples for c in couple)) or list(constraints.cells)
+        named = list(dict.fromkeys(c for couple in known.couples for c in couple)) or list(constraints.cells)
     number = int(table.row_numbers[position])
     first = next((s for s in single if s.cell == named[0]), None)
+    inside = first is not None and not _displaced(constraints, first)[row]
     if fits and len(fits[0].cells) > 1:
         message = _together(fits[0].cells, bool(single))
+    elif first is not None and inside:
+        message = _clash(constraints, table, position, known.clash)
     elif first is not None:
         message = _apart(constraints, table, position, first, row, {c.quantity for c in named})
     else:
-        message = _stuck(named, bool(couples))
+        message = _stuck(named, bool(known.couples))
     repair = _repair_words(fits[0]) if fits else "no single-cell explanation among the usual slips"
-    severity = Severity.DOUBTFUL if stretch <= 1 else Severity.INCONSISTENT
+    # a row that holds together as another design is a question about the design, not about its numbers
+    elsewhere = any(fit.repair.design for fit in fits if fit.chance <= LIKELY)
+    severity = Severity.DOUBTFUL if stretch <= 1 or elsewhere else Severity.INCONSISTENT
     if stretch <= 1:
         message += f"; widening every printed value by {stretch:.2g} units in its last place reconciles them"
+    expected = (math.nan, math.nan) if first is None or inside else (first.low[row], first.high[row])
+    low, high = (float(end) if np.isfinite(end) else math.nan for end in expected)
     return Finding(
         row=number,
         study=str(table.fact("study")[position]),
@@ -109,8 +155,8 @@ def _finding(
         printed=printed_text(table, named[0].variable, position),
         message=f"{message}; {repair}" if single or fits else message,
         explanation=_explanation(fits),
-        expected_low=float(first.low[row]) if first and np.isfinite(first.low[row]) else math.nan,
-        expected_high=float(first.high[row]) if first and np.isfinite(first.high[row]) else math.nan,
+        expected_low=low,
+        expected_high=high,
         slack=float(stretch),
     )
 
@@ -153,8 +199,25 @@ def _apart(
     return f"{evidence} {verb} {symbol} {allowed}; printed is {printed}"
 
 
+def _clash(constraints: Constraints, table: ReportedTable, position: int, names: list[str]) -> str:
+    """Which printed values exclude each other, in words."""
+    cells = {name: [c for c in constraints.cells if c.quantity == name] for name in names}
+    said = [
+        shown(table, each[0].variable, position)
+        if each[0].column is None
+        else f"the {_SAID.get(name) or _symbol_of(name)}"
+        for name, each in cells.items()
+    ]
+    # two or more measurements of one person meet through their correlation alone
+    repeated = constraints.design in ("paired", "within") and "sd" in names
+    changed = {"sd_change", "sd_pre", "sd_post"} <= set(names)
+    implied = (repeated or changed) and not {"correlation", "d_average"} & set(names)
+    why = ": no correlation of the measurements gives them" if implied else ""
+    return f"{listed(said)} cannot hold together{why}"
+
+
 _SAID = {"n": "ns", "mean": "means", "sd": "SDs", "se": "SEs", "df_effect": "dfs", "df_error": "dfs"}
-_UNSAID = frozenset({"contrast_weight", "k_groups", "tails", "direction", "one_factor"})
+_UNSAID = frozenset({"contrast_weight", "k_groups", "tails", "direction", "one_factor", "only_factor"})
 
 
 def _evidence(design: str, known: frozenset[str], cell: Cell, named: set[str]) -> str:

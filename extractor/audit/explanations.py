@@ -8,48 +8,34 @@ often, and so does one whose cell the other numbers hardly pin down; a repair sa
 from __future__ import annotations
 
 from collections.abc import Callable, Iterator
-from dataclasses import dataclass
 from itertools import combinations
 
 import numpy as np
 
 from extractor.audit.constraints import Cell, Constraints
-from extractor.audit.propagation import Domain, judges_of
+from extractor.audit.other_designs import another_design
+from extractor.audit.propagation import judges_of
+from extractor.audit.repair import (
+    Changes,
+    Kind,
+    Repair,
+    cells_of,
+    free,
+    is_bound,
+    is_count,
+    middle,
+    relation_of,
+    repair_of,
+)
 from extractor.audit.welch import welch_marks
 from extractor.catalogue.branches import square_image
-from extractor.catalogue.relation import ONE_FACTOR, Interval, Relation
+from extractor.catalogue.relation import ONE_FACTOR
 from extractor.catalogue.solving_for_groups import MOST_GROUPS
 from extractor.quantities import VOCABULARY
 from extractor.table import BoolArray, FloatArray
 from extractor.words import listed
 
-Changes = dict[Cell, Interval]
-
-
-@dataclass(frozen=True, slots=True)
-class Repair:
-    """One way of undoing one slip, for all rows of a block.
-
-    cells : the cells it changes. domain : the repaired intervals. value : what the first cell would say, shape
-    (rows,), NaN where there is no single number. applies : rows in which the repair is another reading at all.
-    gauge : the quantity in whose interval, once the cells are freed, a chance match is measured.
-    readings : how many readings of this kind are tried on these cells, shape (rows,).
-    share : how often a random wrong value would fit, where the gauge does not tell; shape (rows,) or None.
-    """
-
-    kind: str
-    words: str
-    cells: tuple[Cell, ...]
-    domain: Domain
-    value: FloatArray
-    applies: BoolArray
-    gauge: str
-    readings: FloatArray
-    share: FloatArray | None = None
-
-
-Kind = Callable[[Constraints], Iterator[Repair]]
-KINDS: list[Kind] = []
+KINDS: list[Kind] = [another_design]
 
 _WORDS = {
     "eta_squared": "eta squared",
@@ -88,81 +74,30 @@ def repairs(constraints: Constraints) -> Iterator[Repair]:
         yield from found
 
 
-def _middle(low: FloatArray, high: FloatArray) -> FloatArray:
-    return (low + high) / 2
-
-
-def _repair(
-    constraints: Constraints,
-    kind: str,
-    words: str,
-    changes: Changes,
-    *,
-    readings: float | FloatArray = 1.0,
-    applies: BoolArray | None = None,
-    gauge: str = "",
-    share: FloatArray | None = None,
-) -> Repair:
-    domain = constraints.domain.copy()
-    for cell, (low, high) in changes.items():
-        constraints.put(domain, cell, low, high)
-    first = next(iter(changes))
-    low, high = changes[first]
-    # a bound repaired is still a bound, not a number
-    value = np.where(_is_bound(constraints, first), np.nan, _middle(low, high))
-    if applies is None:
-        applies = np.ones(len(value), dtype=bool)
-    tried = np.broadcast_to(np.asarray(readings, dtype=float), value.shape)
-    return Repair(kind, words, tuple(changes), domain, value, applies, gauge or first.quantity, tried, share)
-
-
-def _cells(constraints: Constraints, quantity: str) -> list[Cell]:
-    return [cell for cell in constraints.cells if cell.quantity == quantity]
-
-
-def _is_count(cell: Cell) -> bool:
-    return VOCABULARY[cell.quantity].exact
-
-
-def _is_bound(constraints: Constraints, cell: Cell) -> BoolArray:
-    """Rows in which the cell is printed as an inequality."""
-    low, high = constraints.interval(cell)
-    return np.asarray(high - low > 1.5 * constraints.units[cell])
-
-
-def _free(like: FloatArray) -> Interval:
-    return np.full_like(like, -np.inf), np.full_like(like, np.inf)
-
-
-def _relation(design: str, gives: str, *needs: str) -> Relation | None:
-    """The relation of a design that gives a quantity from exactly these."""
-    return next((r for r in judges_of(design) if r.gives == gives and set(r.needs) == set(needs)), None)
-
-
 @_kind
 def decimal_slip(constraints: Constraints) -> Iterator[Repair]:
     """The decimal point moved by one or two places."""
     for cell in constraints.cells:
         low, high = constraints.interval(cell)
         usual = _usual_unit(constraints, cell)
-        for places in (-1, 1) if _is_count(cell) else (-1, 1, -2, 2):
+        for places in (-1, 1) if is_count(cell) else (-1, 1, -2, 2):
             factor = 10.0**places
             new = low * factor, high * factor
-            applies = new[0] == np.round(new[0]) if _is_count(cell) else ~_is_bound(constraints, cell)
+            applies = new[0] == np.round(new[0]) if is_count(cell) else ~is_bound(constraints, cell)
             moved = "one place" if abs(places) == 1 else "two places"
             # the digits stay when a point moves, so the number of decimals tells on it
             unit = constraints.units[cell]
             odd = ~np.isclose(unit, usual) & np.isclose(unit * factor, usual)
             readings = np.where(odd, 4 * _ODD_DECIMALS, 4.0)
             words = f"a decimal point moved {moved}"
-            yield _repair(
+            yield repair_of(
                 constraints, "decimal point", words, {cell: new}, readings=readings, applies=applies
             )
 
 
 def _usual_unit(constraints: Constraints, cell: Cell) -> FloatArray:
     """One unit in the last place of most other groups' cells of the quantity; NaN where there are none."""
-    others = [constraints.units[c] for c in _cells(constraints, cell.quantity) if c != cell]
+    others = [constraints.units[c] for c in cells_of(constraints, cell.quantity) if c != cell]
     if not others:
         return np.full_like(constraints.units[cell], np.nan)
     return np.asarray(np.median(np.column_stack(others), axis=1))
@@ -174,10 +109,10 @@ def swapped_digits(constraints: Constraints) -> Iterator[Repair]:
     for cell in constraints.cells:
         low, high = constraints.interval(cell)
         unit = np.where(constraints.units[cell] > 0, constraints.units[cell], 1.0)
-        digits = np.round(np.abs(_middle(low, high)) / unit)
-        plain = np.isfinite(digits) & (digits < 10.0**_SWAPS) & ~_is_bound(constraints, cell)
+        digits = np.round(np.abs(middle(low, high)) / unit)
+        plain = np.isfinite(digits) & (digits < 10.0**_SWAPS) & ~is_bound(constraints, cell)
         digits = np.where(plain, digits, 0.0)
-        sign = np.where(_middle(low, high) < 0, -1.0, 1.0)
+        sign = np.where(middle(low, high) < 0, -1.0, 1.0)
         half = (high - low) / 2
         swaps = []
         for place in range(_SWAPS):
@@ -190,7 +125,7 @@ def swapped_digits(constraints: Constraints) -> Iterator[Repair]:
         readings = np.sum([applies for _, applies in swaps], axis=0)
         for value, applies in swaps:
             if applies.any():
-                yield _repair(
+                yield repair_of(
                     constraints,
                     "swapped digits",
                     "two adjacent digits swapped",
@@ -204,28 +139,28 @@ def swapped_digits(constraints: Constraints) -> Iterator[Repair]:
 def lost_sign(constraints: Constraints) -> Iterator[Repair]:
     """A minus sign lost or gained."""
     for cell in constraints.cells:
-        if VOCABULARY[cell.quantity].low < 0 and not _is_count(cell):
+        if VOCABULARY[cell.quantity].low < 0 and not is_count(cell):
             low, high = constraints.interval(cell)
-            yield _repair(constraints, "sign", "a lost or added minus sign", {cell: (-high, -low)})
+            yield repair_of(constraints, "sign", "a lost or added minus sign", {cell: (-high, -low)})
 
 
 @_kind
 def one_tailed(constraints: Constraints) -> Iterator[Repair]:
     """A one-tailed p printed as if two-tailed."""
     for name in ("p_value", "p_contrast"):
-        for cell in _cells(constraints, name):
+        for cell in cells_of(constraints, name):
             low, high = constraints.interval(cell)
-            yield _repair(constraints, "one-tailed p", "a one-tailed p", {cell: (2 * low, 2 * high)})
+            yield repair_of(constraints, "one-tailed p", "a one-tailed p", {cell: (2 * low, 2 * high)})
 
 
 @_kind
 def another_test(constraints: Constraints) -> Iterator[Repair]:
     """A statistic and its p from another test than the coded one: a suspicion, since any two numbers would fit."""
     for name in ("f_value", "t_value"):
-        for cell in _cells(constraints, name):
-            for companion in (*_cells(constraints, "p_value"), *_cells(constraints, "p_contrast")):
+        for cell in cells_of(constraints, name):
+            for companion in (*cells_of(constraints, "p_value"), *cells_of(constraints, "p_contrast")):
                 free = np.full(constraints.rows, -np.inf), np.full(constraints.rows, np.inf)
-                yield _repair(
+                yield repair_of(
                     constraints,
                     "another test",
                     "statistic and p of another test",
@@ -241,18 +176,18 @@ def mislabelled_index(constraints: Constraints) -> Iterator[Repair]:
     implied = {relation.gives for relation in judges_of(constraints.design)}
     known = {cell.quantity for cell in constraints.cells}
     for name in _WORDS:
-        for cell in _cells(constraints, name):
+        for cell in cells_of(constraints, name):
             low, high = constraints.interval(cell)
             unrelated = known | {_classical(name)} if one_factor else known
             others = [other for other in (_ONE_NAME if one_factor else _WORDS) if other not in unrelated]
             for other in others:
                 if other not in implied:
                     continue
-                repair = _repair(
+                repair = repair_of(
                     constraints,
                     "index label",
                     f"{_WORDS[other]} labelled {_WORDS[name]}",
-                    {cell: _free(low)},
+                    {cell: free(low)},
                     readings=len(others) + 1,
                     gauge=other,
                 )
@@ -263,7 +198,11 @@ def mislabelled_index(constraints: Constraints) -> Iterator[Repair]:
             if name in _ROOTED:
                 squared = np.maximum(low, 0) ** 2, high**2
                 words = f"an unsquared index labelled {_WORDS[name]}"
-                yield _repair(constraints, "index label", words, {cell: squared}, readings=len(others) + 1)
+                yield repair_of(constraints, "index label", words, {cell: squared}, readings=len(others) + 1)
+            if name == "cohens_f":
+                root = np.sqrt(np.maximum(low, 0)), np.sqrt(high)
+                words = "Cohen's f squared labelled Cohen's f"
+                yield repair_of(constraints, "index label", words, {cell: root}, readings=len(others) + 1)
 
 
 def _classical(name: str) -> str:
@@ -274,17 +213,17 @@ def _classical(name: str) -> str:
 @_kind
 def t_and_f(constraints: Constraints) -> Iterator[Repair]:
     """t printed as F, or F printed as t, where the effect has one df."""
-    if _relation(constraints.design, "f_value", "t_value") is None:
+    if relation_of(constraints.design, "f_value", "t_value") is None:
         return
-    for cell in _cells(constraints, "f_value"):
-        yield _repair(
+    for cell in cells_of(constraints, "f_value"):
+        yield repair_of(
             constraints, "t as F", "t printed as F", {cell: square_image(constraints.interval(cell))}
         )
-    for cell in _cells(constraints, "t_value"):
+    for cell in cells_of(constraints, "t_value"):
         low, high = constraints.interval(cell)
         root = np.sqrt(np.maximum(low, 0)), np.sqrt(np.maximum(high, 0))
         for change in (root, (-root[1], -root[0])):
-            yield _repair(
+            yield repair_of(
                 constraints, "F as t", "F printed as t", {cell: change}, readings=2, applies=high >= 0
             )
 
@@ -294,7 +233,7 @@ def _all_groups(
 ) -> Changes:
     """The same change to a quantity in every group; it may use the group sizes."""
     changes = {}
-    for cell in _cells(constraints, name):
+    for cell in cells_of(constraints, name):
         low, high = constraints.interval(cell)
         if "n" in constraints.domain.low and cell.column is not None:
             n = constraints.domain.low["n"][:, cell.column]
@@ -318,13 +257,13 @@ def spread_labels(constraints: Constraints) -> Iterator[Repair]:
         ("variance for SD", "variances labelled SD", lambda s, n: np.sqrt(s)),
         ("population SD", "SDs with divisor n", lambda s, n: s * np.sqrt(n / (n - 1))),
     ]
-    if _cells(constraints, "sd"):
+    if cells_of(constraints, "sd"):
         for kind, words, change in labels:
             changes = _all_groups(constraints, "sd", change)
-            yield _repair(constraints, kind, words, changes, applies=_known(changes), gauge="ms_error")
-    if _cells(constraints, "se"):
+            yield repair_of(constraints, kind, words, changes, applies=_known(changes), gauge="ms_error")
+    if cells_of(constraints, "se"):
         changes = _all_groups(constraints, "se", lambda s, n: s / np.sqrt(n))
-        yield _repair(
+        yield repair_of(
             constraints, "SD for SE", "SDs labelled SE", changes, applies=_known(changes), gauge="ms_error"
         )
 
@@ -335,10 +274,10 @@ def error_df(constraints: Constraints) -> Iterator[Repair]:
     if constraints.design not in _TOTAL_DF:
         return
     for name in ("df_error", "df"):
-        for cell in _cells(constraints, name):
+        for cell in cells_of(constraints, name):
             low, _ = constraints.interval(cell)
             for words, added in (("N - 1 printed as error df", 1.0), ("N printed as error df", 0.0)):
-                repair = _repair(constraints, "total df", words, {cell: _free(low)}, readings=2)
+                repair = repair_of(constraints, "total df", words, {cell: free(low)}, readings=2)
                 total = low + added
                 ends = repair.domain.low.get("n_total", total), repair.domain.high.get("n_total", total)
                 repair.domain.low["n_total"] = np.maximum(ends[0], total)
@@ -349,33 +288,33 @@ def error_df(constraints: Constraints) -> Iterator[Repair]:
 @_kind
 def swapped_dfs(constraints: Constraints) -> Iterator[Repair]:
     """Numerator and denominator df changed places."""
-    for first in _cells(constraints, "df_effect"):
-        for second in _cells(constraints, "df_error"):
+    for first in cells_of(constraints, "df_effect"):
+        for second in cells_of(constraints, "df_error"):
             changes = {first: constraints.interval(second), second: constraints.interval(first)}
             different = constraints.interval(first)[0] != constraints.interval(second)[0]
-            yield _repair(constraints, "swapped dfs", "the two df swapped", changes, applies=different)
+            yield repair_of(constraints, "swapped dfs", "the two df swapped", changes, applies=different)
 
 
 @_kind
 def before_exclusions(constraints: Constraints) -> Iterator[Repair]:
     """N of those recruited in the place of N analysed: up to half of them lost."""
-    for cell in _cells(constraints, "n_total"):
+    for cell in cells_of(constraints, "n_total"):
         low, _ = constraints.interval(cell)
         analysed = np.ceil(low / 2), low - 1
         # every N in that range would be explained
         readings = np.maximum(analysed[1] - analysed[0] + 1, 1)
         words = "N counted before exclusions"
-        yield _repair(constraints, "N before exclusions", words, {cell: analysed}, readings=readings)
+        yield repair_of(constraints, "N before exclusions", words, {cell: analysed}, readings=readings)
 
 
 @_kind
 def swapped_sizes(constraints: Constraints) -> Iterator[Repair]:
     """Two groups' ns changed places."""
-    cells = _cells(constraints, "n")
+    cells = cells_of(constraints, "n")
     couples = list(combinations(cells, 2)) if len(cells) <= MOST_GROUPS else []
     for first, second in couples:
         one, two = constraints.interval(first), constraints.interval(second)
-        yield _repair(
+        yield repair_of(
             constraints,
             "swapped ns",
             "the ns of two groups swapped",
@@ -388,8 +327,8 @@ def swapped_sizes(constraints: Constraints) -> Iterator[Repair]:
 @_kind
 def welch_test(constraints: Constraints) -> Iterator[Repair]:
     """F, p or error df of a Welch test, or several of them, in the place of the classical ones."""
-    welch_f = _relation(constraints.design, "welch_f", "n", "mean", "sd")
-    welch_df = _relation(constraints.design, "welch_df_error", "n", "sd")
+    welch_f = relation_of(constraints.design, "welch_f", "n", "mean", "sd")
+    welch_df = relation_of(constraints.design, "welch_df_error", "n", "sd")
     if welch_f is None or welch_df is None:
         return
     marks = welch_marks(constraints, welch_f, welch_df)
@@ -405,11 +344,11 @@ def welch_test(constraints: Constraints) -> Iterator[Repair]:
             ("df" if c in dfs else "F" if c in tests else "p"): marks[c.quantity].share for c in cells
         }
         said = list(dict.fromkeys("df" if c in dfs else VOCABULARY[c.quantity].symbol for c in cells))
-        yield _repair(
+        yield repair_of(
             constraints,
             "Welch test",
             f"{listed(said)} of a Welch test",
-            dict.fromkeys(cells, _free(constraints.interval(cells[0])[0])),
+            dict.fromkeys(cells, free(constraints.interval(cells[0])[0])),
             applies=fits,
             share=np.prod(list(measured.values()), axis=0),
         )

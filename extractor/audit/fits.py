@@ -10,7 +10,8 @@ from numpy.typing import NDArray
 
 from extractor.audit.constraints import Cell, Constraints
 from extractor.audit.diagnosis import Suspect, attempt, interval_of
-from extractor.audit.explanations import Repair, repairs
+from extractor.audit.explanations import repairs
+from extractor.audit.repair import Repair
 from extractor.quantities import VOCABULARY
 from extractor.table import BoolArray, FloatArray
 

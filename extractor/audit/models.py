@@ -5,12 +5,12 @@ from __future__ import annotations
 from collections.abc import Iterator
 
 import numpy as np
-import pandas as pd
 
+from extractor.distinct import distinct, together
 from extractor.evidence import Evidence
 from extractor.findings import Finding, Severity
 from extractor.study.cells import TermFromCells, balanced, error_of, terms_of
-from extractor.study.terms import analysis_ids, factors_of
+from extractor.study.terms import TERM_DESIGNS, analysis_ids, factors_of
 from extractor.table import Cells, Numbers
 from extractor.words import listed, plain, printed_text
 
@@ -93,9 +93,9 @@ def shares_of_the_total(evidence: Evidence) -> Iterator[Finding]:
     if printed is None:
         return
     ids = analysis_ids(table, table.fact("design"))
-    frame = pd.DataFrame({"id": ids, "low": np.where(printed.given, printed.low, 0.0)})
-    sums = frame.groupby("id")["low"].transform("sum").to_numpy()
-    first = ~frame.duplicated("id").to_numpy()
+    sums = np.bincount(ids + 1, np.where(printed.given, printed.low, 0.0))[ids + 1]
+    first = np.zeros(table.rows, dtype=bool)
+    first[np.unique(ids, return_index=True)[1]] = True
     for row in np.flatnonzero((ids >= 0) & (sums > 1 + _CLOSE) & first):
         members = np.flatnonzero((ids == ids[row]) & printed.given)
         numbers = [int(table.row_numbers[m]) for m in members]
@@ -112,4 +112,45 @@ def shares_of_the_total(evidence: Evidence) -> Iterator[Finding]:
             message=f"the eta squared of the terms of one model add up to at least {plain(float(sums[row]))}, "
             "more than the whole",
             explanation="partial eta squared labelled eta squared",
+        )
+
+
+def two_error_terms(evidence: Evidence) -> Iterator[Finding]:
+    """One term of one study with two F on different error df: two analyses of one data set, no contradiction."""
+    table = evidence.table
+    printed = [table.numbers.get((name, None)) for name in ("f_value", "df_error", "df_effect", "n_total")]
+    tests = [numbers for numbers in printed if numbers is not None]
+    if table.rows < 2 or len(tests) < len(printed):
+        return
+    _, error, effect, size = tests
+    study, outcome, term = (table.fact(name) for name in ("study", "outcome", "term"))
+    rows = np.flatnonzero(
+        np.logical_and.reduce([numbers.given for numbers in tests])
+        & np.isin(table.fact("design"), TERM_DESIGNS)
+        & (study != "")
+        & (term != "")
+    )
+    keys = [
+        (study[i], outcome[i], factors_of(str(term[i])), effect.value[i], size.value[i])
+        for i in rows.tolist()
+    ]
+    for members in together(rows, distinct(keys)[1]):
+        if len(set(error.value[members].tolist())) < 2:
+            continue
+        first = int(members[0])
+        said = [
+            f"{printed_text(table, ('f_value', None), i)} on {plain(effect.value[i])} and "
+            f"{plain(error.value[i])} df (row {table.row_numbers[i]})"
+            for i in members.tolist()
+        ]
+        yield Finding(
+            row=int(table.row_numbers[first]),
+            study=str(study[first]),
+            severity=Severity.NOTE,
+            rule="two error terms",
+            cells=tuple(table.where(("df_error", None), i) for i in members.tolist()),
+            printed=printed_text(table, ("f_value", None), first),
+            message=f"F of {term[first]} is {listed(said)}: one data set has both where a term is tested "
+            "against the error term of its own stratum and against a pooled one; use one of them",
+            explanation="error terms of two strata, as in a within and a split-plot analysis",
         )

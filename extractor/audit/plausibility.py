@@ -5,19 +5,25 @@ Most of these checks look across the sheet: at the other studies of an outcome, 
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Mapping
 from itertools import islice
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
-import pandas as pd
 from numpy.typing import NDArray
 
 from extractor.audit.support import beyond, ends, finding_at, groups_in, positions, shown, value_of
+from extractor.distinct import distinct, together
 from extractor.evidence import Evidence
 from extractor.findings import Finding, Severity
 from extractor.quantities import VOCABULARY
 from extractor.table import BoolArray, FloatArray, ReportedTable, Variable
 from extractor.words import listed, plain, printed_text
+
+if TYPE_CHECKING:
+    import pandas as pd
+
+Effects = Mapping[str, NDArray[Any]]
 
 _LARGE = 3.0
 _NEAR = 0.2
@@ -26,26 +32,29 @@ _SMALLEST_N = 5.0
 """Below this, sqrt(n) is a ratio that SDs of two studies may well have."""
 _OTHER_STUDIES = 3
 _OTHER_EFFECTS = 4
+_TELLING_DIGITS = 3.0
+"""Digits of all means of a row together, from which on equal means of two studies are worth a look."""
 _FAR = 3.5
 _BETWEEN_GROUPS = ("one-way", "two-group")
 
 
-def implausible(evidence: Evidence) -> Iterator[Finding]:
-    """Findings of every plausibility check that needs no effects."""
+def implausible(evidence: Evidence, across: bool = True) -> Iterator[Finding]:
+    """Findings of every plausibility check that needs no effects; ``across`` studies, too, where asked for."""
     table = evidence.table
     yield from _large_effects(table)
-    yield from _unlike_spreads(table)
     for name in ("sd", "se"):
         yield from _identical_spreads(table, name)
-    yield from _coded_twice(table)
+    if across:
+        yield from _unlike_spreads(table)
+        yield from _coded_twice(table)
 
 
-def outlying(evidence: Evidence, effects: pd.DataFrame) -> Iterator[Finding]:
+def outlying(evidence: Evidence, effects: Effects) -> Iterator[Finding]:
     """Effects far from the other studies of their outcome.
 
     Parameters
     ----------
-    effects : the effect table before any renaming, one row per row of the sheet and in its order.
+    effects : the columns of the effect table, one row per row of the sheet and in its order.
 
     Each effect is compared with the inverse-variance mean of the other studies' effects on the same outcome.
     The spread to be expected includes their between-study variance (DerSimonian & Laird 1986) and the mean's
@@ -53,8 +62,8 @@ def outlying(evidence: Evidence, effects: pd.DataFrame) -> Iterator[Finding]:
     """
     z, mean, others = _left_out(evidence.table, effects)
     for i in positions(np.abs(z) > _FAR):
-        metric, outcome = str(effects["metric"].iloc[i]), str(effects["outcome"].iloc[i])
-        value, distance = float(effects["estimate"].iloc[i]), abs(float(z[i]))
+        metric, outcome, value = (effects[name][i] for name in ("metric", "outcome", "estimate"))
+        distance = abs(float(z[i]))
         said = (
             f"{VOCABULARY[metric].symbol} = {plain(value)} lies {plain(distance)} standard deviations from "
             f"{plain(float(mean[i]))}, the mean of the {others[i]:.0f} other studies of '{outcome}' "
@@ -66,9 +75,9 @@ def outlying(evidence: Evidence, effects: pd.DataFrame) -> Iterator[Finding]:
         )
 
 
-def _left_out(table: ReportedTable, effects: pd.DataFrame) -> tuple[FloatArray, FloatArray, FloatArray]:
+def _left_out(table: ReportedTable, effects: Effects) -> tuple[FloatArray, FloatArray, FloatArray]:
     """Standardised distance from the other studies, their mean and number, each (rows,); NaN if too few."""
-    estimate, variance = (effects[name].to_numpy(dtype=float) for name in ("estimate", "variance"))
+    estimate, variance = (np.asarray(effects[name], dtype=float) for name in ("estimate", "variance"))
     outcome = table.fact("outcome").astype(str)
     with np.errstate(invalid="ignore"):
         usable = np.isfinite(estimate) & (variance > 0) & np.isfinite(variance) & (outcome != "")
@@ -76,8 +85,8 @@ def _left_out(table: ReportedTable, effects: pd.DataFrame) -> tuple[FloatArray, 
     if not usable.any():
         return z, means, others
     y, v = estimate[usable], variance[usable]
-    groups, _ = pd.factorize(outcome[usable])
-    cells, first = _pairs(groups, pd.factorize(_studies(table)[usable])[0])
+    groups = distinct(outcome[usable])[1]
+    cells, first = _pairs(groups, distinct(_studies(table)[usable])[1])
     studies = np.bincount(groups[first])[groups] - 1.0
     w = 1 / v
     # about the mean of the outcome, so that the differences of sums below lose no digits
@@ -217,6 +226,10 @@ def _median_of_others(table: ReportedTable, values: FloatArray) -> tuple[FloatAr
     """Median over an outcome's other studies, each study's own median counting once, and their number."""
     outcome = table.fact("outcome").astype(str)
     medians, others = np.full(table.rows, np.nan), np.zeros(table.rows)
+    if table.rows <= _OTHER_STUDIES:
+        return medians, others
+    import pandas as pd
+
     frame = pd.DataFrame({"outcome": outcome, "study": _studies(table), "value": values})
     frame = frame[np.isfinite(values) & (outcome != "")]
     each = frame.groupby(["outcome", "study"], sort=False)["value"].median().reset_index()
@@ -271,8 +284,12 @@ def _coded_twice(table: ReportedTable) -> Iterator[Finding]:
     n, mean = _matrix(table, "n"), _matrix(table, "mean")
     both = ~np.isnan(n) & ~np.isnan(mean)
     study = table.fact("study").astype(str)
-    fractional = (both & (mean != np.rint(mean))).any(axis=1)
-    whole = (np.isnan(n) == np.isnan(mean)).all(axis=1) & (both.sum(axis=1) >= 2) & fractional & (study != "")
+    # how many values the printed means could have had, in whatever unit they are: by chance few ones agree
+    steps = np.abs(mean) / _matrix(table, "mean", "unit")
+    readable = both & (steps > 1)
+    digits = np.where(readable, np.log10(np.where(readable, steps, 1.0)), 0.0).sum(axis=1)
+    telling = (both.sum(axis=1) >= 2) & (digits >= _TELLING_DIGITS)
+    whole = (np.isnan(n) == np.isnan(mean)).all(axis=1) & telling & (study != "")
     rows = np.flatnonzero(whole)
     if len(rows) < 2:
         return
@@ -282,7 +299,7 @@ def _coded_twice(table: ReportedTable) -> Iterator[Finding]:
     _, codes, counts = np.unique(key, axis=0, return_inverse=True, return_counts=True)
     codes = codes.ravel()
     again = counts[codes] > 1
-    for _, members in pd.Series(rows[again]).groupby(codes[again]):
+    for members in together(rows[again], codes[again]):
         first: dict[str, int] = {}
         for i in members:
             first.setdefault(study[i], int(i))

@@ -3,12 +3,17 @@
 Each printed number starts as its rounding interval, each unknown as its support. A relation contracts the interval
 of what it gives to the part its image allows (Davis 1987; Benhamou et al. 1999). No true value is ever cut away, so
 an empty interval proves that the row's numbers cannot all be true under the stated design.
+
+Every row goes its own way: a relation runs in the rows in which something it needs has changed since it last ran there,
+and in no other, so that what becomes of a row does not depend on the rows beside it.
 """
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass
 from functools import lru_cache
+from typing import TypeVar
 
 import numpy as np
 from numpy.typing import NDArray
@@ -23,6 +28,11 @@ _SHRINKS = 1e-3
 _ROUNDS = 40
 _WORTH_DROPPING = 0.7
 """Rows that are done with are dropped when fewer than this share are left."""
+_WORTH_CHOOSING = 0.5
+"""A relation runs over chosen rows when they are fewer than this share, else over all and the others are kept."""
+
+Clock = NDArray[np.int32]
+Number = TypeVar("Number", np.float64, np.int32)
 
 
 @dataclass(slots=True)
@@ -58,28 +68,32 @@ def _tiers(design: str) -> tuple[tuple[Relation, ...], tuple[Relation, ...]]:
     return tuple(r for r in judges if r.routes), tuple(r for r in judges if not r.routes)
 
 
-def propagate(design: str, domain: Domain) -> BoolArray:
+def propagate(design: str, domain: Domain, unknown: Mapping[str, BoolArray] | None = None) -> BoolArray:
     """Narrow ``domain`` in place to a fixpoint; True in the rows where an interval became empty, shape (rows,).
 
     A row is done with once it is empty; its intervals then mean nothing.
+
+    Parameters
+    ----------
+    unknown : rows in which a quantity of the domain takes no part until something is known of it.
     """
     rows = len(next(iter(domain.low.values())))
     empty = np.zeros(rows, dtype=bool)
     for quantity in domain.low:
         empty |= _any(domain.low[quantity] > domain.high[quantity])
-    work = _Work(design, domain)
+    work = _Work(domain, rows, unknown or {})
     left = np.arange(rows)
     for _ in range(_ROUNDS):
+        moved = False
         for tier in _tiers(design):
-            gone = work.narrow(tier, empty[left])
-            empty[left] |= gone
+            moved = work.narrow(tier, empty, left)
             alive = ~empty[left]
             if alive.sum() < _WORTH_DROPPING * len(left):
                 left = left[alive]
-                work.domain = work.domain.take(alive)
                 if not len(left):
                     return empty
-        if not work.moved:
+                work.keep(alive)
+        if not moved:
             break
     if len(left) < rows:
         _spread(work.domain, domain, left, rows)
@@ -87,39 +101,141 @@ def propagate(design: str, domain: Domain) -> BoolArray:
 
 
 class _Work:
-    """A domain being narrowed, with what has changed since each relation last ran."""
+    """A domain being narrowed, with when each row of it last changed and when each relation last ran there.
 
-    def __init__(self, design: str, domain: Domain) -> None:
-        self.design, self.domain = design, domain
-        self.version = dict.fromkeys(domain.low, 1)
-        self.done: dict[str, int] = {}
+    changed : by quantity, shape (rows,); 0 where nothing is known of it yet. done : by relation.
+    """
+
+    def __init__(self, domain: Domain, rows: int, unknown: Mapping[str, BoolArray]) -> None:
+        self.domain, self.rows = domain, rows
+        self.changed: dict[str, Clock] = {q: np.ones(rows, dtype=np.int32) for q in domain.low}
+        for quantity, where in unknown.items():
+            self.changed[quantity][where] = 0
+        self.done: dict[str, Clock] = {}
+        self.latest = dict.fromkeys(domain.low, 1)
+        self.looked: dict[str, int] = {}
+        self.own: set[str] = set()
         self.clock = 1
-        self.moved = False
 
-    def narrow(self, tier: tuple[Relation, ...], empty: BoolArray) -> BoolArray:
-        """Run the relations of a tier until none of them changes anything; True in the rows that became empty."""
-        empty = empty.copy()
-        self.moved = False
+    def keep(self, rows: BoolArray) -> None:
+        """Go on with some rows only."""
+        self.domain = self.domain.take(rows)
+        self.changed = {quantity: when[rows] for quantity, when in self.changed.items()}
+        self.done = {name: when[rows] for name, when in self.done.items()}
+        self.own = set(self.changed)
+        self.rows = int(rows.sum())
+
+    def narrow(self, tier: tuple[Relation, ...], empty: BoolArray, left: NDArray[np.intp]) -> bool:
+        """Run the relations of a tier until none changes anything; whether any did. Marks rows that become empty.
+
+        Parameters
+        ----------
+        empty, left : over all rows, and which of them are being worked on.
+        """
+        gone = empty[left]
+        moved = False
         for _ in range(_ROUNDS):
             again = False
             for relation in tier:
-                if any(need not in self.version for need in relation.needs):
-                    continue
-                if max(self.version[need] for need in relation.needs) <= self.done.get(relation.name, 0):
-                    continue
-                self.done[relation.name] = self.clock
-                changed = _contract(relation, self.domain)
-                if changed is None:
-                    continue
-                low, high = self.domain.pair(relation.gives)
-                empty |= _any(low > high)
-                if (changed & ~empty).any():
-                    self.clock += 1
-                    self.version[relation.gives] = self.clock
-                    self.moved = again = True
+                rows = self._due(relation, gone)
+                if rows is not None and self._run(relation, rows, gone):
+                    moved = again = True
             if not again:
                 break
-        return empty
+        empty[left] = gone
+        return moved
+
+    def _due(self, relation: Relation, gone: BoolArray) -> NDArray[np.intp] | None:
+        """The rows in which a relation has something new to say; None where there is none."""
+        latest = self.latest
+        if not all(need in latest for need in relation.needs):
+            return None
+        # most relations have nothing new in any row, which the latest change of each need says at once
+        if max(latest[need] for need in relation.needs) <= self.looked.get(relation.name, 0):
+            return None
+        self.looked[relation.name] = self.clock
+        whens = [self.changed[need] for need in relation.needs]
+        newest = whens[0] if len(whens) == 1 else np.maximum.reduce(whens)
+        oldest = whens[0] if len(whens) == 1 else np.minimum.reduce(whens)
+        last = self.done.get(relation.name)
+        if last is None:
+            last = self.done[relation.name] = np.zeros(self.rows, dtype=np.int32)
+        due = (newest > last) & (oldest > 0) & ~gone
+        last[due] = self.clock
+        rows = np.flatnonzero(due)
+        return rows if len(rows) else None
+
+    def _run(self, relation: Relation, rows: NDArray[np.intp], gone: BoolArray) -> bool:
+        """Cut what a relation gives to its image in these rows; whether that mattered in any."""
+        gives, domain = relation.gives, self.domain
+        quantity = VOCABULARY[gives]
+        whole = len(rows) >= _WORTH_CHOOSING * self.rows
+
+        def chosen(values: NDArray[Number]) -> NDArray[Number]:
+            return values if whole else values[rows]
+
+        inputs = {n: (chosen(domain.low[n]), chosen(domain.high[n])) for n in relation.needs}
+        known = gives in domain.low
+        old = (chosen(domain.low[gives]), chosen(domain.high[gives])) if known else None
+        low, high = image(relation, inputs, old if known else _support(relation, inputs))
+        if quantity.integer:
+            low, high = np.ceil(low - _NEAR), np.floor(high + _NEAR)
+        if old is None:
+            old = np.full(low.shape, quantity.low), np.full(low.shape, quantity.high)
+        new = np.maximum(old[0], low), np.minimum(old[1], high)
+        shrunk = _shrunk(old, new)
+        if not known or not self.changed[gives].all():
+            # where nothing was known, anything tighter than the support matters
+            first = chosen(self.changed[gives]) == 0 if known else np.ones(len(new[0]), dtype=bool)
+            tighter = (new[0] > quantity.low) | (new[1] < quantity.high)
+            shrunk |= (first if shrunk.ndim == 1 else first[:, None]) & tighter
+        where = _any(shrunk)
+        if whole:
+            where = where.copy()
+            mask = np.zeros(self.rows, dtype=bool)
+            mask[rows] = True
+            where &= mask
+        if not where.any():
+            return False
+        if not known:
+            shape = (self.rows, *low.shape[1:])
+            domain.low[gives], domain.high[gives] = (
+                np.full(shape, quantity.low),
+                np.full(shape, quantity.high),
+            )
+            self.changed[gives] = np.zeros(self.rows, dtype=np.int32)
+            self.own.add(gives)
+        elif gives not in self.own:
+            domain.low[gives], domain.high[gives] = domain.low[gives].copy(), domain.high[gives].copy()
+            self.own.add(gives)
+        at = np.flatnonzero(where)
+        into = at if whole else rows[at]
+        domain.low[gives][into], domain.high[gives][into] = new[0][at], new[1][at]
+        emptied = _any(new[0][at] > new[1][at])
+        gone[into[emptied]] = True
+        self.clock += 1
+        self.changed[gives][into] = self.clock
+        self.latest[gives] = self.clock
+        return not bool(emptied.all())
+
+
+def _support(relation: Relation, inputs: dict[str, Interval]) -> Interval | None:
+    """The support of what a relation gives, where its image asks what is known of it."""
+    if not relation.narrows:
+        return None
+    quantity, rows = VOCABULARY[relation.gives], len(next(iter(inputs.values()))[0])
+    return np.full(rows, quantity.low), np.full(rows, quantity.high)
+
+
+def _shrunk(old: Interval, new: Interval) -> BoolArray:
+    """Where an interval lost enough to matter: a share of its width or, where that is infinite, of the new end."""
+    with np.errstate(invalid="ignore", over="ignore"):
+        width = old[1] - old[0]
+        open_ended = np.isinf(width)
+        below = _SHRINKS * np.where(open_ended, np.abs(new[0]), width)
+        above = _SHRINKS * np.where(open_ended, np.abs(new[1]), width)
+        shrunk = (new[0] > old[0] + below) | (new[1] < old[1] - above)
+    return np.asarray(shrunk | (new[0] > new[1]))
 
 
 def _spread(narrowed: Domain, domain: Domain, left: NDArray[np.intp], rows: int) -> None:
@@ -134,33 +250,6 @@ def _spread(narrowed: Domain, domain: Domain, left: NDArray[np.intp], rows: int)
                 whole = known.copy()
             whole[left] = values
             into[quantity] = whole
-
-
-def _contract(relation: Relation, domain: Domain) -> BoolArray | None:
-    """Cut what the relation gives to its image; True in the rows that shrank enough to matter, None if none did."""
-    gives = relation.gives
-    inputs = {need: domain.pair(need) for need in relation.needs}
-    known = gives in domain.low
-    low, high = image(relation, inputs, domain.pair(gives) if known else None)
-    quantity = VOCABULARY[gives]
-    if quantity.integer:
-        low, high = np.ceil(low - _NEAR), np.floor(high + _NEAR)
-    if not known:
-        if not (np.any(low > quantity.low) or np.any(high < quantity.high)):
-            return None
-        domain.low[gives], domain.high[gives] = low, high
-        return _any((low > quantity.low) | (high < quantity.high))
-    old_low, old_high = domain.pair(gives)
-    new_low, new_high = np.maximum(old_low, low), np.minimum(old_high, high)
-    with np.errstate(invalid="ignore", over="ignore"):
-        enough = _SHRINKS * (old_high - old_low)
-        shrunk = (new_low > old_low + enough) | (new_high < old_high - enough)
-        shrunk |= (np.isinf(old_low) & np.isfinite(new_low)) | (np.isinf(old_high) & np.isfinite(new_high))
-    shrunk |= new_low > new_high
-    if not shrunk.any():
-        return None
-    domain.low[gives], domain.high[gives] = new_low, new_high
-    return _any(shrunk)
 
 
 def _any(rows: BoolArray) -> BoolArray:

@@ -23,6 +23,7 @@ _ADJUSTED = "difference of adjusted means"
 _SQUARE = "an F with one numerator df is the square of t"
 _RESTORED = "Nouri & Greenberg (1995); Morris & DeShon (1997): the other terms' sums of squares put back into the error"
 _POOLED = "pooled standard deviation of the groups (textbook identity)"
+_G = "Hedges (1981), small-sample factor at the df of the SD that d is divided by"
 
 
 def _root_image(
@@ -138,10 +139,23 @@ def error_share_from_sd(ms_error: FloatArray, pooled_sd: FloatArray) -> FloatArr
 
 
 @relation(
-    gives="cohens_d", rising=["d_residual"], either=["error_share"], designs=FACTORIAL, source=_RESTORED
+    gives="hedges_g",
+    rising=["d_residual"],
+    exact=["df_error"],
+    designs=FACTORIAL,
+    standardizer="residual",
+    source=_G,
+)
+def residual_g(d_residual: FloatArray, df_error: FloatArray) -> FloatArray:
+    """g = J(df2) · d_residual."""
+    return d_residual * small_sample_factor(df_error)
+
+
+@relation(
+    gives="d_restored", rising=["d_residual"], either=["error_share"], designs=FACTORIAL, source=_RESTORED
 )
 def restored_d(d_residual: FloatArray, error_share: FloatArray) -> FloatArray:
-    """d = d_residual · sqrt(MS_error/s²)."""
+    """d = d_residual · sqrt(MS_error/s²), over the SD with the other terms put back."""
     return d_residual * np.sqrt(error_share)
 
 
@@ -153,14 +167,22 @@ def restored_df(df_error: FloatArray, df_others: FloatArray) -> FloatArray:
 
 @relation(
     gives="hedges_g",
-    rising=["cohens_d"],
+    rising=["d_restored"],
     exact=["df_standardizer"],
     designs=FACTORIAL,
-    source="Hedges (1981)",
+    source=_G,
 )
-def restored_g(cohens_d: FloatArray, df_standardizer: FloatArray) -> FloatArray:
-    """g = J(df_s) · d."""
-    return cohens_d * small_sample_factor(df_standardizer)
+def restored_g(d_restored: FloatArray, df_standardizer: FloatArray) -> FloatArray:
+    """g = J(df_s) · d, J(v) = Γ(v/2) / (sqrt(v/2) · Γ((v - 1)/2))."""
+    return d_restored * small_sample_factor(df_standardizer)
+
+
+@relation(
+    gives="d_restored", rising=["mean_difference"], either=["pooled_sd"], designs=FACTORIAL, source=_RESTORED
+)
+def restored_d_from_means(mean_difference: FloatArray, pooled_sd: FloatArray) -> FloatArray:
+    """d = (Σ w·M) / s, s with the other terms put back."""
+    return mean_difference / pooled_sd
 
 
 @relation(

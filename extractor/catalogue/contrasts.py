@@ -31,6 +31,7 @@ _SQUARE = "F with one numerator df is the square of the pooled t (textbook ident
 _D = "standardised mean difference with the pooled standard deviation (Hedges 1981; Borenstein et al. 2009, ch. 4)"
 _G = "Hedges (1981), exact small-sample factor"
 _CONTRAST = "definition of a contrast of means"
+_DIVIDED = "Cochrane Handbook, ch. 23: a shared control group divided among the comparisons"
 _SE = "standard error of a contrast under a common variance (textbook identity)"
 _CI = "confidence limits from Student's t with the error df (Cochrane Handbook, ch. 6)"
 
@@ -75,6 +76,20 @@ def g_from_d(cohens_d: FloatArray, df_error: FloatArray) -> FloatArray:
     return cohens_d * small_sample_factor(df_error)
 
 
+@relation(
+    gives="hedges_g",
+    rising=["d_control"],
+    exact=["n", "contrast_weight"],
+    designs=TWO_GROUP,
+    standardizer="control",
+    source="Hedges (1981), small-sample factor of Glass's estimator at the df of the control group's SD",
+)
+def g_from_control_d(d_control: FloatArray, n: FloatArray, contrast_weight: FloatArray) -> FloatArray:
+    """g = J(n_C - 1) · Δ, C the second group of the contrast."""
+    control = np.where(contrast_weight < 0, n, 0.0).sum(axis=-1)
+    return d_control * small_sample_factor(control - 1)
+
+
 @relation(gives="cohens_d", rising=["hedges_g"], exact=["df_error"], designs=ONE_FACTOR | ANCOVA, source=_G)
 def d_from_g(hedges_g: FloatArray, df_error: FloatArray) -> FloatArray:
     """d = g / J(df2)."""
@@ -85,7 +100,7 @@ def d_from_g(hedges_g: FloatArray, df_error: FloatArray) -> FloatArray:
     gives="cohens_d",
     rising=["mean_difference"],
     either=["pooled_sd"],
-    designs=ONE_FACTOR | ANCOVA | FACTORIAL,
+    designs=ONE_FACTOR | ANCOVA,
     source=_D,
 )
 def d_from_means(mean_difference: FloatArray, pooled_sd: FloatArray) -> FloatArray:
@@ -162,6 +177,35 @@ def difference_of_means(mean: FloatArray, contrast_weight: FloatArray) -> FloatA
 def inverse_effective_size(n: FloatArray, contrast_weight: FloatArray) -> FloatArray:
     """Σ w²/n = Σ w_j² / n_j; for two groups 1/n1 + 1/n2."""
     return np.asarray(np.where(contrast_weight == 0, 0.0, contrast_weight**2 / n).sum(axis=-1))
+
+
+@relation(
+    gives="inverse_divided_n",
+    falling=["n"],
+    exact=["contrast_weight", "control_comparisons"],
+    designs=TWO_GROUP,
+    source=_DIVIDED,
+)
+def inverse_effective_size_divided(
+    n: FloatArray, contrast_weight: FloatArray, control_comparisons: FloatArray
+) -> FloatArray:
+    """Σ w²/n = 1/n1 + m/n_C, the control group, last in the contrast, divided among m comparisons."""
+    control = contrast_weight < 0
+    n = np.where(control, n / control_comparisons[:, None], n)
+    return np.asarray((contrast_weight**2 / n).sum(axis=-1))
+
+
+@relation(
+    gives="n_divided",
+    rising=["n"],
+    exact=["contrast_weight", "control_comparisons"],
+    designs=TWO_GROUP,
+    source=_DIVIDED,
+)
+def total_divided(n: FloatArray, contrast_weight: FloatArray, control_comparisons: FloatArray) -> FloatArray:
+    """N = n1 + n_C/m, the control group divided among m comparisons."""
+    control = contrast_weight < 0
+    return np.asarray(np.where(control, n / control_comparisons[:, None], n).sum(axis=-1))
 
 
 @relation(gives="se_difference", rising=["pooled_sd", "inverse_effective_n"], designs=ONE_FACTOR, source=_SE)

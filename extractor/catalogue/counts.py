@@ -118,6 +118,14 @@ def participants_from_within_dfs(df_error: FloatArray, df_effect: FloatArray) ->
     return df_error / df_effect + 1
 
 
+@relation(
+    gives="df_effect", rising=["df_error"], falling=["n_total"], designs=WITHIN | PAIRED, source=_WITHIN_DF
+)
+def effect_df_from_within_dfs(df_error: FloatArray, n_total: FloatArray) -> FloatArray:
+    """df1 = df2 / (N - 1)."""
+    return df_error / (n_total - 1)
+
+
 def _shared(n: Interval) -> Interval:
     return n[0].max(axis=-1), n[1].min(axis=-1)
 
@@ -184,3 +192,14 @@ def one_observation_per_level(
 ) -> FloatArray:
     """N_obs = N·(df1 + 1), of a term that is one factor."""
     return n_total * (df_effect + 1) * one_factor
+
+
+@relation(
+    gives="n_observations",
+    rising=["n_total", "levels"],
+    designs=WITHIN,
+    source="one observation of each participant in each cell of the term's factors",
+)
+def one_observation_per_cell(n_total: FloatArray, levels: FloatArray) -> FloatArray:
+    """N_obs = N·Π k over the factors of the term."""
+    return n_total * levels

@@ -1,4 +1,4 @@
-"""Merging subgroups into the group they make up, and splitting a control group that several arms share.
+"""Merging subgroups into the group they make up.
 
 Merging is exact: the union's mean and standard deviation follow from its parts (Cochrane Handbook, ch. 6,
 6.5.2.10, gives the formula for two groups; locator from memory). Averaging the standard deviations would drop
@@ -47,21 +47,3 @@ def merged_groups(n: ArrayLike, mean: ArrayLike, sd: ArrayLike) -> tuple[FloatAr
         between = (sizes * (means - grand[..., None]) ** 2).sum(axis=-1)
         variance = np.where(total > 1, (within + between) / (total - 1), np.nan)
     return total, grand, np.sqrt(variance)
-
-
-def split_control(n: ArrayLike, arms: ArrayLike) -> FloatArray:
-    """Participants of a shared control group for each of ``arms`` comparisons: n / arms.
-
-    The mean and the standard deviation stay as they are; of a 2 x 2 table both counts are divided. The parts
-    are not whole numbers in general. This keeps participants from being counted twice but only partly removes
-    the dependence of the comparisons (Cochrane Handbook, ch. 23, 23.3.4; locator from memory).
-
-    Raises
-    ------
-    ValueError
-        when the number of arms is not a whole number of at least 1.
-    """
-    sizes, parts = np.asarray(n, dtype=np.float64), np.asarray(arms, dtype=np.float64)
-    if not ((parts >= 1) & (parts % 1 == 0)).all():
-        raise ValueError("a control group is shared by a whole number of arms, at least 1")
-    return np.asarray(sizes / parts)

@@ -10,7 +10,7 @@ import warnings
 from functools import lru_cache
 
 import numpy as np
-from scipy import integrate, special, stats
+from scipy import special
 
 from extractor.catalogue.relation import (
     BETWEEN,
@@ -38,6 +38,8 @@ def _studentized_range(alpha: float, groups: float, df: float) -> float:
     """Upper quantile of the studentized range; NaN outside its definition or where the integral fails."""
     if not (0 < alpha < 1 and 2 <= groups < np.inf and 1 <= df < np.inf):
         return float("nan")
+    from scipy import integrate, stats  # slow to import, and few sheets need them
+
     with warnings.catch_warnings():
         warnings.simplefilter("error", integrate.IntegrationWarning)
         try:

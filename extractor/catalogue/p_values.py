@@ -52,10 +52,13 @@ def printed_p(p_two_sided: FloatArray, tails: FloatArray) -> FloatArray:
 
 def _upper_tail(explained: FloatArray, df_effect: FloatArray, df_error: FloatArray) -> FloatArray:
     """P(F ≥ f) from df1·f; through whichever of the beta variable and its complement keeps its digits."""
+    explained, a, b = np.broadcast_arrays(explained, df_effect / 2, df_error / 2)
     share, rest = explained / (explained + df_error), df_error / (explained + df_error)
     rest = np.where(np.isposinf(explained), 0.0, rest)
-    near_one = special.betaincc(df_effect / 2, df_error / 2, share)
-    return np.asarray(np.where(share < 0.5, near_one, special.betainc(df_error / 2, df_effect / 2, rest)))
+    tail, near_one = np.empty(share.shape), share < 0.5
+    tail[near_one] = special.betaincc(a[near_one], b[near_one], share[near_one])
+    tail[~near_one] = special.betainc(b[~near_one], a[~near_one], rest[~near_one])
+    return tail
 
 
 @relation(
@@ -73,11 +76,12 @@ def p_from_f(f_value: FloatArray, df_effect: FloatArray, df_error: FloatArray) -
 
 def _f_at_upper_tail(p: FloatArray, df_effect: FloatArray, df_error: FloatArray) -> FloatArray:
     # the beta quantile and its complement, so that neither a tiny p nor a p near 1 loses digits
-    beta = special.betaincinv(df_error / 2, df_effect / 2, p)
-    complement = special.betainccinv(df_effect / 2, df_error / 2, p)
-    return np.asarray(
-        np.where(beta < 0.5, (1 - beta) / beta, complement / (1 - complement)) * df_error / df_effect
-    )
+    p, a, b = np.broadcast_arrays(p, df_effect / 2, df_error / 2)
+    beta = special.betaincinv(b, a, p)
+    odds, upper = (1 - beta) / beta, ~(beta < 0.5)
+    complement = special.betainccinv(a[upper], b[upper], p[upper])
+    odds[upper] = complement / (1 - complement)
+    return np.asarray(odds * df_error / df_effect)
 
 
 @relation(

@@ -16,6 +16,7 @@ _D = "Morris (2008), d_ppc2 before its small-sample factor"
 _G = "Morris (2008), d_ppc2 with c = 1 - 3/(4(n_T + n_C - 2) - 1)"
 _POOLED = "pooled standard deviation of two groups (textbook identity)"
 _CHANGE = "SD of change: s_c² = s_pre² + s_post² - 2·r·s_pre·s_post (Cochrane Handbook, ch. 6)"
+_LIMITS = "the correlation of the two measurements lies in [-1, 1] in each group (textbook identity)"
 _F = "with two groups and two times the interaction F is the square of the t of the change scores"
 
 
@@ -115,6 +116,17 @@ def change_sd_from_correlation(
     """SD_change = sqrt(s_pre² + s_post² - 2·r·s_pre·s_post)."""
     r = correlation[:, None]
     return np.asarray(np.sqrt((sd_pre - sd_post) ** 2 + 2 * (1 - r) * sd_pre * sd_post))
+
+
+def _change_limits(sd_change: Interval, sd_pre: Interval, sd_post: Interval) -> Interval:
+    least = np.maximum(np.maximum(sd_pre[0] - sd_post[1], sd_post[0] - sd_pre[1]), 0.0)
+    return least, sd_pre[1] + sd_post[1]
+
+
+@relation(gives="sd_change", image=_change_limits, designs=PRE_POST, source=_LIMITS, accuracy=1e-12)
+def change_sd_within_limits(sd_change: FloatArray, sd_pre: FloatArray, sd_post: FloatArray) -> FloatArray:
+    """|s_pre - s_post| ≤ SD_change ≤ s_pre + s_post, in each group."""
+    return sd_change
 
 
 def _correlation_image(sd_pre: Interval, sd_post: Interval, sd_change: Interval, n: Interval) -> Interval:

@@ -3,7 +3,7 @@
 The names of two indices are crossed in the literature: H/(N - 1), exactly the eta squared of the ranks, is
 usually labelled epsilon squared, and (H - k + 1)/(N - k), exactly Kelley's epsilon squared of the ranks, is
 usually labelled eta squared. Here each is called what it is. Neither leads to an index of the raw scores; the
-one step from ranks to d names its assumption.
+steps from ranks to d, and from a z of unsaid origin to r, name their assumptions.
 """
 
 from __future__ import annotations
@@ -154,6 +154,20 @@ def _root_image(
 @relation(gives="rank_r", image=_root_image, narrows=True, designs=TWO_GROUP, source=_ROOT)
 def rank_r_from_z(z_value: FloatArray, n_total: FloatArray, direction: FloatArray) -> FloatArray:
     """r_z = sign · |z| / sqrt(N); another quantity than the rank-biserial correlation."""
+    return direction * np.abs(z_value) / np.sqrt(n_total)
+
+
+@relation(
+    gives="r",
+    image=_root_image,
+    narrows=True,
+    designs=TWO_GROUP,
+    grade=Grade.ASSUMPTION,
+    assumes="z is the normal deviate of a comparison of two means, taken for its t",
+    source=_ROOT,
+)
+def r_from_normal_deviate(z_value: FloatArray, n_total: FloatArray, direction: FloatArray) -> FloatArray:
+    """r = sign · |z| / sqrt(N)."""
     return direction * np.abs(z_value) / np.sqrt(n_total)
 
 

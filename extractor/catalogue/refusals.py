@@ -9,7 +9,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 from extractor.catalogue.relation import ANCOVA, PARTIAL, PRE_POST, SEVERAL_GROUPS, TERMS
-from extractor.quantities import VOCABULARY, is_signed
+from extractor.quantities import STANDARDIZERS, VOCABULARY, is_signed
 
 _OMNIBUS = (
     "an F with more than one numerator df compares all groups at once; "
@@ -40,6 +40,11 @@ _FACTORS = (
     "the error term lacks what the other factors took out, and their F or sums of squares are not all there; "
     "code all terms of the model as rows of one analysis"
 )
+_OBSERVATIONS = {
+    "within": "the observations behind a joint term are participants times the levels of its factors; "
+    "code the main effects of all its factors as rows of the same analysis",
+    "mixed": "the number of observations behind a term of a mixed design is a convention that differs between sources",
+}
 _BY_DESIGN = {
     "within": _RAW_SD,
     "paired": _RAW_SD,
@@ -51,7 +56,10 @@ _TWO_GROUP_METRICS = ("r", "fisher_z", "log_odds_ratio")
 _WHOLE = ("eta_squared", "omega_squared", "epsilon_squared")
 _STANDARDIZED = ("cohens_d", "hedges_g")
 _SIZES = frozenset(
-    {"n", "n_total", "k_groups", "df", "df_effect", "df_error", "n_covariates", "icc", "cluster_size"}
+    {
+        *("n", "n_total", "k_groups", "df", "df_effect", "df_error"),
+        *("n_covariates", "icc", "cluster_size", "control_comparisons"),
+    }
 )
 _LEADS_NOWHERE = (
     (frozenset({"welch_f", "welch_df_error"}), "Welch's F weighs the groups by their own variances; no index follows"),
@@ -90,6 +98,9 @@ def why_no_route(metric: str, design: str, reported: frozenset[str], opened_by: 
     )
     if not known:
         return f"nothing usable is reported for {symbol}"
+    over = [STANDARDIZERS[word] for word in STANDARDIZERS if f"d_{word}" in reported]
+    if over and metric not in _STANDARDIZED and known <= _SIZES:
+        return f"{symbol} is refused: a d over {over[0]} stands for no other metric"
     case = _Case(metric, design, known, opened_by)
     why = _of_the_metric(case) or _of_the_evidence(case) or _of_the_design(case)
     if why:
@@ -159,6 +170,9 @@ def _of_the_design(case: _Case) -> str:
         return _PARTIAL_ONLY
     if case.metric == "generalized_eta_squared" and case.design in TERMS:
         return _STRATA
+    if case.metric == "partial_omega_squared":
+        # where the test itself is not known, what would open it is said instead
+        return _OBSERVATIONS.get(case.design, "") if case.known & {"f_value", "partial_eta_squared"} else ""
     if case.metric in _STANDARDIZED:
         return _BY_DESIGN.get(case.design, "")
     return ""

@@ -72,6 +72,12 @@ def d_over_residual(d_residual: FloatArray) -> FloatArray:
     return d_residual
 
 
+@relation(gives="cohens_d", rising=["d_restored"], designs=FACTORIAL, source=_NAMED)
+def d_over_restored(d_restored: FloatArray) -> FloatArray:
+    """d = d over the SD with the other factors put back."""
+    return d_restored
+
+
 @relation(gives="cohens_d", rising=["d_control"], designs=_ALL, standardizer="control", source=_NAMED)
 def d_over_control(d_control: FloatArray) -> FloatArray:
     """d = Glass's Δ, over the control group's SD."""

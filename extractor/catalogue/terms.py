@@ -10,6 +10,7 @@ import numpy as np
 
 from extractor.catalogue.relation import (
     FACTORIAL,
+    MIXED,
     PARTIAL,
     TERMS,
     WITHIN,
@@ -27,6 +28,8 @@ _CLASSICAL = "definition of eta squared as a proportion of the total sum of squa
 _HAYS = "Hays (1963): (SS_effect - df1·MS_error) / (SS_total + MS_error)"
 _GENERALIZED = "Olejnik & Algina (2003)"
 _BALANCED = "cells of equal size, so that the sums of squares of the terms add up"
+_ONLY = "the factor is the only one within participants; its model has no other terms"
+_WHOLE = "partition of the total sum of squares into all terms and all error strata"
 _COHEN = "Cohen (1988), f of one term: sqrt(partial eta² / (1 - partial eta²))"
 
 
@@ -223,6 +226,66 @@ def generalized_eta_from_sums(
 
 
 @relation(
+    gives="generalized_eta_squared",
+    rising=["ss_effect"],
+    falling=["ss_strata"],
+    exact=["only_factor"],
+    designs=WITHIN,
+    grade=Grade.ASSUMPTION,
+    assumes=_ONLY,
+    source=_GENERALIZED,
+)
+def generalized_eta_of_only_factor(
+    ss_effect: FloatArray, ss_strata: FloatArray, only_factor: FloatArray
+) -> FloatArray:
+    """η²G = SS_effect / (SS_effect + Σ error strata SS), of a single factor within participants."""
+    return only_factor / (1 + ss_strata / ss_effect)
+
+
+@relation(
+    gives="eta_squared",
+    rising=["ss_effect"],
+    falling=["ss_strata"],
+    exact=["only_factor"],
+    designs=WITHIN,
+    grade=Grade.ASSUMPTION,
+    assumes=_ONLY,
+    source=_CLASSICAL,
+)
+def classical_eta_of_only_factor(
+    ss_effect: FloatArray, ss_strata: FloatArray, only_factor: FloatArray
+) -> FloatArray:
+    """η² = SS_effect / (SS_effect + Σ error strata SS), of a single factor within participants."""
+    return only_factor / (1 + ss_strata / ss_effect)
+
+
+@relation(
+    gives="eta_squared",
+    rising=["ss_effect"],
+    falling=["ss_others", "ss_strata"],
+    designs=WITHIN,
+    source=_WHOLE,
+)
+def classical_eta_within(ss_effect: FloatArray, ss_others: FloatArray, ss_strata: FloatArray) -> FloatArray:
+    """η² = SS_effect / (SS_effect + Σ_others SS + Σ error strata SS)."""
+    return 1 / (1 + (ss_others + ss_strata) / ss_effect)
+
+
+@relation(
+    gives="eta_squared",
+    rising=["ss_effect"],
+    falling=["ss_others", "ss_strata"],
+    designs=MIXED,
+    grade=Grade.ASSUMPTION,
+    assumes="groups of equal size, and no sources besides the coded terms and their error terms",
+    source=_WHOLE,
+)
+def classical_eta_mixed(ss_effect: FloatArray, ss_others: FloatArray, ss_strata: FloatArray) -> FloatArray:
+    """η² = SS_effect / (SS_effect + Σ_others SS + Σ error strata SS), groups of equal size."""
+    return 1 / (1 + (ss_others + ss_strata) / ss_effect)
+
+
+@relation(
     gives="ss_strata", rising=["ss_error"], designs=FACTORIAL, source="one error stratum between participants"
 )
 def strata_between(ss_error: FloatArray) -> FloatArray:
@@ -233,35 +296,42 @@ def strata_between(ss_error: FloatArray) -> FloatArray:
 @relation(
     gives="ss_strata",
     rising=["ss_subjects", "ss_error"],
+    exact=["only_factor"],
     designs=WITHIN,
     source="error strata of one within factor: participants and their interaction with the factor",
 )
-def strata_of_one_factor(ss_subjects: FloatArray, ss_error: FloatArray) -> FloatArray:
-    """Σ strata SS = SS_subjects + SS_error."""
-    return ss_subjects + ss_error
+def strata_of_one_factor(
+    ss_subjects: FloatArray, ss_error: FloatArray, only_factor: FloatArray
+) -> FloatArray:
+    """Σ strata SS = SS_subjects + SS_error, of a single factor within participants."""
+    return (ss_subjects + ss_error) * only_factor
 
 
 @relation(
     gives="ss_strata",
     rising=["n", "sd"],
+    exact=["only_factor"],
     designs=WITHIN,
     source="within the conditions of one factor: Σ (n - 1)·SD² = SS_subjects + SS_error (textbook identity)",
 )
-def strata_from_sds(n: FloatArray, sd: FloatArray) -> FloatArray:
-    """Σ strata SS = Σ (n - 1)·SD_j²."""
-    return np.asarray(((n - 1) * sd**2).sum(axis=-1))
+def strata_from_sds(n: FloatArray, sd: FloatArray, only_factor: FloatArray) -> FloatArray:
+    """Σ strata SS = Σ (n - 1)·SD_j², of a single factor within participants."""
+    return np.asarray(((n - 1) * sd**2).sum(axis=-1) * only_factor)
 
 
 @relation(
     gives="ss_subjects",
     rising=["ss_strata"],
     falling=["ss_error"],
+    exact=["only_factor"],
     designs=WITHIN,
     source="error strata of one within factor, solved for the participants",
 )
-def participants_sum_from_strata(ss_strata: FloatArray, ss_error: FloatArray) -> FloatArray:
-    """SS_subjects = Σ strata SS - SS_error."""
-    return ss_strata - ss_error
+def participants_sum_from_strata(
+    ss_strata: FloatArray, ss_error: FloatArray, only_factor: FloatArray
+) -> FloatArray:
+    """SS_subjects = Σ strata SS - SS_error, of a single factor within participants."""
+    return (ss_strata - ss_error) * only_factor
 
 
 _PARTS = (

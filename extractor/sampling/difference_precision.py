@@ -99,10 +99,9 @@ for _designs, _standardizers in (
     enter_variance("cohens_d", LARGE, _BORENSTEIN, _designs, pooled_large, _standardizers)
     enter_variance("cohens_d", EXACT, _HEDGES, _designs, pooled_exact, _standardizers)
     enter_limits("cohens_d", _CUMMING, _designs, pooled_limits, _standardizers)
-    if "residual" not in _standardizers:
-        enter_variance("hedges_g", LARGE, _BORENSTEIN, _designs, pooled_g_large, _standardizers)
-        enter_variance("hedges_g", EXACT, _HEDGES, _designs, pooled_g_exact, _standardizers)
-        enter_limits("hedges_g", _CUMMING, _designs, pooled_g_limits, _standardizers)
+    enter_variance("hedges_g", LARGE, _BORENSTEIN, _designs, pooled_g_large, _standardizers)
+    enter_variance("hedges_g", EXACT, _HEDGES, _designs, pooled_g_exact, _standardizers)
+    enter_limits("hedges_g", _CUMMING, _designs, pooled_g_limits, _standardizers)
 
 
 # Pairs

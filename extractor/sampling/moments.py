@@ -21,7 +21,13 @@ import numpy as np
 from numpy.typing import ArrayLike
 from scipy import special
 
-from extractor.sampling.noncentral import Floats, broadcast_rows, log_gamma_ratio, stirling_rest
+from extractor.sampling.noncentral import (
+    Floats,
+    broadcast_rows,
+    log_gamma_ratio,
+    poisson_terms,
+    stirling_rest,
+)
 
 _CHUNK = 2048  # rows worked on at once: the arrays of a chunk stay in the processor's cache
 # Double exponential rule on (0, inf): t = exp(y - exp(-y)), trapezoidal in y. Relative error near 1e-15;
@@ -92,13 +98,29 @@ def omega_squared_moments(
     rows = np.flatnonzero(valid)[inside]
     m, v1, v2, n = m[inside], v1[inside], v2[inside], n[inside]
     with np.errstate(all="ignore"):
+        last_node = _last_node(m, v1, v2, n)
+        order = np.argsort(last_node, kind="stable")
         for begin in range(0, rows.size, _CHUNK):
-            part = slice(begin, begin + _CHUNK)
-            mean[rows[part]], variance[rows[part]] = _omega_chunk(m[part], v1[part], v2[part], n[part])
+            part = order[begin : begin + _CHUNK]
+            mean[rows[part]], variance[rows[part]] = _omega_chunk(
+                m[part], v1[part], v2[part], n[part], last_node[part]
+            )
     return mean.reshape(shape), variance.reshape(shape)
 
 
-def _omega_chunk(lam: Floats, v1: Floats, v2: Floats, n: Floats) -> tuple[Floats, Floats]:
+def _last_node(lam: Floats, v1: Floats, v2: Floats, n: Floats) -> Floats:
+    """How far the rule of ``_omega_chunk`` runs, in y, for each row by itself."""
+    extra, half_lam = (n - v1 - v2) / v2, 0.5 * lam
+    rate = 0.5 * (v1 + v2) + half_lam + 0.5 * v2 * extra
+    # the exponent exceeds s t + lambda/2 t/(1 + t), which reaches _FOLDS at the positive root of a quadratic
+    s = 0.5 * (v1 + v2) + 0.5 * v2 * np.minimum(extra, 0.0)
+    slack = s + half_lam - _FOLDS
+    root = np.sqrt(slack * slack + 4.0 * _FOLDS * s)
+    end = np.where(slack > 0, 2.0 * _FOLDS / (slack + root), (root - slack) / (2.0 * s))
+    return np.log(end * rate)
+
+
+def _omega_chunk(lam: Floats, v1: Floats, v2: Floats, n: Floats, last_node: Floats) -> tuple[Floats, Floats]:
     r"""Omega squared is W = (X - (v1/v2) Y)/(X + k Y) = 1 - (n/v2) R, R = Y/(X + k Y), k = (n - v1)/v2.
 
     Weighted with exp(-u (X + k Y)), X and Y stay independent with known means and variances, so that with
@@ -107,7 +129,7 @@ def _omega_chunk(lam: Floats, v1: Floats, v2: Floats, n: Floats) -> tuple[Floats
         E[R - r]     = \int E[((1 - k r) Y - r X) e^{-u(X + kY)}] du
         E[(R - r)^2] = \int u E[((1 - k r) Y - r X)^2 e^{-u(X + kY)}] du.
     The variable of integration is t = ln(1 + 2u); g = e^{-t}, h = 1 - g. Each bracket is written out with its
-    differences taken by hand.
+    differences taken by hand. ``last_node`` is ascending: a row is left out of the nodes beyond its own.
     """
     extra = (n - v1 - v2) / v2  # k - 1
     half_total, b, half_lam = 0.5 * (v1 + v2), 0.5 * v2, 0.5 * lam
@@ -117,26 +139,24 @@ def _omega_chunk(lam: Floats, v1: Floats, v2: Floats, n: Floats) -> tuple[Floats
     mean = np.zeros(lam.shape)
     shift = np.zeros(lam.shape)
     square = np.zeros(lam.shape)
-    # the exponent exceeds s t + lambda/2 t/(1 + t), which reaches _FOLDS at the positive root of a quadratic
-    s = half_total + b * np.minimum(extra, 0.0)
-    slack = s + half_lam - _FOLDS
-    root = np.sqrt(slack * slack + 4.0 * _FOLDS * s)
-    end = np.where(slack > 0, 2.0 * _FOLDS / (slack + root), (root - slack) / (2.0 * s))
-    last_node = float(np.log(np.max(end * rate)))
-    for y in np.arange(_FIRST_NODE, last_node + _STEP, _STEP):
+    nodes = np.arange(_FIRST_NODE, float(last_node[-1]) + _STEP, _STEP)
+    done = np.searchsorted(last_node + _STEP, nodes, side="right").tolist()
+    for y, first in zip(nodes, done, strict=True):
+        left = slice(first, None)
+        ex, la = extra[left], lam[left]
         scaled = np.exp(y - np.exp(-y))
-        t = scaled / rate
+        t = scaled / rate[left]
         h = -np.expm1(-t)
         g = 1.0 - h
-        q = 1.0 + extra * h
-        weight = np.exp(-half_total * t - half_lam * h - b * np.log1p(extra * h))
+        q = 1.0 + ex * h
+        weight = np.exp(-half_total[left] * t - half_lam[left] * h - b[left] * np.log1p(ex * h))
         weight *= scaled * (1.0 + np.exp(-y))
         lean = h / q
-        tilt = drift_x + lam * (1.0 - extra * g)
-        mean += weight * (v1 * extra * lean + lam * g)
-        shift += weight * lean * tilt
-        spread = spread_y / (q * q) + v2 * v2 * (v1 + 2.0 * lam * g)
-        square += weight * h * (2.0 * spread + (v2 * lean * tilt) ** 2)
+        tilt = drift_x[left] + la * (1.0 - ex * g)
+        mean[left] += weight * (v1[left] * ex * lean + la * g)
+        shift[left] += weight * lean * tilt
+        spread = spread_y[left] / (q * q) + v2[left] * v2[left] * (v1[left] + 2.0 * la * g)
+        square[left] += weight * h * (2.0 * spread + (v2[left] * lean * tilt) ** 2)
     scale = _STEP / rate
     mean *= 0.5 * scale
     shift *= 0.5 * scale * v2 / size
@@ -187,12 +207,12 @@ def _root_by_sum(m: Floats, a: Floats) -> tuple[Floats, Floats]:
     root = np.sqrt(2.0) * np.exp(log_gamma_ratio(a, 0.5))
     total = np.zeros(m.shape)
     mean = np.zeros(m.shape)
-    top = float(m.max())
-    for j in range(int(top + 8.3 * np.sqrt(top) + 18.0)):
-        total += weight
-        mean += weight * root
-        root *= (a + (j + 0.5)) / (a + j)
-        weight *= m / (j + 1.0)
+    for j, left in poisson_terms(m):
+        w, r = weight[left], root[left]
+        total[left] += w
+        mean[left] += w * r
+        r *= (a[left] + (j + 0.5)) / (a[left] + j)
+        w *= m[left] / (j + 1.0)
     mean /= total
     return mean, 2.0 * (a + m) - mean * mean
 

@@ -19,7 +19,7 @@ References
 .. [3] Cumming & Finch (2001), Educational and Psychological Measurement 61, 532-574.
 """
 
-from collections.abc import Callable
+from collections.abc import Callable, Iterator
 from typing import TypeAlias
 
 import numpy as np
@@ -232,23 +232,29 @@ def _f_distribution(
 def _f_series(
     mean: Floats, a: Floats, b: Floats, rho: Floats, central: Floats, first_term: Floats
 ) -> tuple[Floats, Floats]:
-    """Poisson mixture of I_y(a + j, b). No part exceeds 1: the error stays near machine precision."""
+    """Poisson mixture of I_y(a + j, b), means ascending. No part exceeds 1: the error is near machine precision."""
     y = rho / (1.0 + rho)
     weight, beta, term = np.exp(-mean), central.copy(), first_term.copy()
     p, slope = np.zeros(mean.shape), np.zeros(mean.shape)
-    for j in range(_poisson_end(mean)):
-        p += weight * beta
-        slope += weight * term
-        beta -= term
-        term *= y * (a + b + j) / (a + (j + 1.0))
-        weight *= mean / (j + 1.0)
+    for j, left in poisson_terms(mean):
+        w, be, t = weight[left], beta[left], term[left]
+        p[left] += w * be
+        slope[left] += w * t
+        be -= t
+        t *= y[left] * (a[left] + b[left] + j) / (a[left] + (j + 1.0))
+        w *= mean[left] / (j + 1.0)
     return p, slope * -0.5
 
 
-def _poisson_end(mean: Floats) -> int:
-    """A count beyond which every Poisson tail of these means is below 1e-16."""
-    top = float(mean.max())
-    return int(top + 8.3 * np.sqrt(top) + 18.0)
+def poisson_terms(mean: Floats) -> Iterator[tuple[int, slice]]:
+    """Counts from 0 with the rows that still need them: those whose Poisson tail is not yet below 1e-16.
+
+    ``mean`` is ascending. Each row's own mean decides, so that its sum does not depend on the rows beside it.
+    """
+    ends = (mean + 8.3 * np.sqrt(mean) + 18.0).astype(np.int64)
+    done = np.searchsorted(ends, np.arange(int(ends[-1])), side="right").tolist()
+    for j, first in enumerate(done):
+        yield j, slice(first, None)
 
 
 def _f_contour(mean: Floats, a: Floats, b: Floats, rho: Floats) -> tuple[Floats, Floats]:
@@ -354,15 +360,16 @@ def _t_series(
     odd_weight = even_weight * delta * np.sqrt(2.0 / np.pi)
     odd_beta, odd_term = -np.expm1(-b * np.log1p(ratio)), b * x * left
     p, slope = np.zeros(delta.shape), np.zeros(delta.shape)
-    for j in range(_poisson_end(mean)):
-        p += even_weight * even_beta + odd_weight * odd_beta
-        slope += even_weight * even_term + odd_weight * odd_term
-        even_beta -= even_term
-        odd_beta -= odd_term
-        even_term *= x * (b + (j + 0.5)) / (j + 1.5)
-        odd_term *= x * (b + (j + 1.0)) / (j + 2.0)
-        even_weight *= mean / (j + 1.0)
-        odd_weight *= mean / (j + 1.5)
+    for j, rest in poisson_terms(mean):
+        even, odd = even_weight[rest], odd_weight[rest]
+        p[rest] += even * even_beta[rest] + odd * odd_beta[rest]
+        slope[rest] += even * even_term[rest] + odd * odd_term[rest]
+        even_beta[rest] -= even_term[rest]
+        odd_beta[rest] -= odd_term[rest]
+        even_term[rest] *= x[rest] * (b[rest] + (j + 0.5)) / (j + 1.5)
+        odd_term[rest] *= x[rest] * (b[rest] + (j + 1.0)) / (j + 2.0)
+        even *= mean[rest] / (j + 1.0)
+        odd *= mean[rest] / (j + 1.5)
     density = np.exp(-mean) / np.sqrt(2.0 * np.pi)
     return special.ndtr(-delta) + 0.5 * p, -density * left - 0.5 * delta * slope
 

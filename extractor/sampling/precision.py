@@ -8,7 +8,7 @@ estimate among them, so that the planner finds the rest. The functions stand in 
 from __future__ import annotations
 
 import inspect
-from collections.abc import Callable, Iterable
+from collections.abc import Callable, Collection, Iterable
 from dataclasses import dataclass
 from importlib import import_module
 
@@ -31,7 +31,7 @@ class Precision:
     """How a variance or confidence limits are computed, and for which metric, designs and standardizers.
 
     name : what ``variance_method`` prints, or the source of the limits. function : takes ``needs`` in order; limits
-    also take ``level``.
+    also take ``level``. where : a quantity without which the entry is not meant, and with which it goes first.
     """
 
     metric: str
@@ -41,6 +41,7 @@ class Precision:
     standardizers: frozenset[str]
     needs: tuple[str, ...]
     function: Callable[..., object]
+    where: str = ""
 
     def serves(self, metric: str, design: str, standardizer: str) -> bool:
         """Whether the entry is for this case."""
@@ -58,9 +59,10 @@ def enter_variance(
     designs: Iterable[str],
     function: Variance,
     standardizers: Iterable[str] = ("pooled",),
+    where: str = "",
 ) -> None:
     """Enter a variance; the first parameter called ``estimate`` stands for the metric's own estimate."""
-    VARIANCES.append(_entry(metric, method, name, designs, standardizers, function))
+    VARIANCES.append(_entry(metric, method, name, designs, standardizers, function, where))
 
 
 def enter_limits(
@@ -69,9 +71,10 @@ def enter_limits(
     designs: Iterable[str],
     function: Limits,
     standardizers: Iterable[str] = ("pooled",),
+    where: str = "",
 ) -> None:
     """Enter confidence limits; as ``enter_variance``, with a last parameter ``level``."""
-    LIMITS.append(_entry(metric, "", name, designs, standardizers, function))
+    LIMITS.append(_entry(metric, "", name, designs, standardizers, function, where))
 
 
 def _entry(
@@ -81,15 +84,18 @@ def _entry(
     designs: Iterable[str],
     standardizers: Iterable[str],
     function: Callable[..., object],
+    where: str,
 ) -> Precision:
     parameters = [p for p in inspect.signature(function).parameters if p != "level"]
     needs = tuple(metric if p == "estimate" else p for p in parameters)
-    return Precision(metric, method, name, frozenset(designs), frozenset(standardizers), needs, function)
+    return Precision(
+        metric, method, name, frozenset(designs), frozenset(standardizers), needs, function, where
+    )
 
 
 def load() -> None:
     """Import the modules that enter their functions here."""
-    for module in ("variance_explained_precision", "difference_precision"):
+    for module in ("variance_explained_precision", "difference_precision", "shared_control"):
         import_module(f"extractor.sampling.{module}")
 
 
@@ -98,18 +104,30 @@ def standardizer_of(route_standardizer: str, design: str) -> str:
     return route_standardizer or DEFAULT.get(design, "pooled")
 
 
-def variances_of(metric: str, method: str | None, design: str, standardizer: str) -> list[Precision]:
-    """The variances of a case, the wanted method first; several where they rest on different evidence."""
+def variances_of(
+    metric: str, method: str | None, design: str, standardizer: str, known: Collection[str] = ()
+) -> list[Precision]:
+    """The variances of a case, the wanted method first; several where they rest on different evidence.
+
+    known : quantities of the row, for entries that are meant for some only.
+    """
     load()
     wanted = method or PREFERRED[metric]
-    fitting = [p for p in VARIANCES if p.serves(metric, design, standardizer)]
-    return sorted(fitting, key=lambda p: p.method != wanted)
+    fitting = _meant(VARIANCES, metric, design, standardizer, known)
+    return sorted(fitting, key=lambda p: (p.method != wanted, not p.where))
 
 
-def limits_of(metric: str, design: str, standardizer: str) -> list[Precision]:
-    """The confidence limits of a case; several where they rest on different evidence."""
+def limits_of(metric: str, design: str, standardizer: str, known: Collection[str] = ()) -> list[Precision]:
+    """The confidence limits of a case; several where they rest on different evidence. known : as for variances."""
     load()
-    return [p for p in LIMITS if p.serves(metric, design, standardizer)]
+    return sorted(_meant(LIMITS, metric, design, standardizer, known), key=lambda p: not p.where)
+
+
+def _meant(
+    entries: list[Precision], metric: str, design: str, standardizer: str, known: Collection[str]
+) -> list[Precision]:
+    fitting = (p for p in entries if p.serves(metric, design, standardizer))
+    return [p for p in fitting if not p.where or p.where in known]
 
 
 def methods_of(metric: str) -> list[str]:

@@ -18,6 +18,7 @@ _OLKIN = "large sample (Olkin & Finn 1995), carried over by the derivative"
 _DELTA = "noncentral F moments of the partial index, carried over with the other sums of squares fixed"
 _STEIGER = "noncentral F inverted (Steiger & Fouladi 1997; Steiger 2004)"
 _CARRIED = "noncentral F limits of the partial index, carried over with the other sums of squares fixed"
+_ZERO = -1e-9
 _TERM = PARTIAL | PRE_POST
 _ALL = ONE_FACTOR | _TERM
 
@@ -26,12 +27,17 @@ def _f_from_eta(eta: FloatArray, df_effect: FloatArray, df_error: FloatArray) ->
     return eta / (1 - eta) * df_error / df_effect
 
 
+def _without_error(f: FloatArray) -> FloatArray:
+    """An F of 0 may come back from the smallest index it gives as a little less."""
+    return np.where((f < 0) & (f > _ZERO), 0.0, f)
+
+
 def _f_from_omega(omega: FloatArray, df_effect: FloatArray, total: FloatArray) -> FloatArray:
-    return 1 + omega / (1 - omega) * total / df_effect
+    return _without_error(1 + omega / (1 - omega) * total / df_effect)
 
 
 def _f_from_epsilon(epsilon: FloatArray, df_effect: FloatArray, df_error: FloatArray) -> FloatArray:
-    return (df_effect + epsilon * df_error) / (df_effect * (1 - epsilon))
+    return _without_error((df_effect + epsilon * df_error) / (df_effect * (1 - epsilon)))
 
 
 def _population(

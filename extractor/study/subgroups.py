@@ -10,11 +10,11 @@ from __future__ import annotations
 from dataclasses import fields, replace
 
 import numpy as np
-import pandas as pd
 from numpy.typing import NDArray
 
 from extractor.catalogue.groups import greatest_between, least_between
 from extractor.catalogue.merging import merged_groups
+from extractor.distinct import distinct
 from extractor.table import FloatArray, Numbers, ReportedTable
 
 _MERGED = ("n", "mean", "sd")
@@ -25,11 +25,11 @@ Ends = tuple[FloatArray, FloatArray, FloatArray]
 
 def merged_lines(long: ReportedTable, labels: NDArray[np.object_]) -> ReportedTable:
     """The sheet with one line for each group; ``labels`` are the lines' group labels, "" where there is none."""
-    key = pd.Series(long.fact("analysis").astype(str)) + "\x1f" + pd.Series(labels.astype(str))
-    code = pd.factorize(key)[0]
+    pairs = list(zip(long.fact("analysis").tolist(), labels.tolist(), strict=True))
+    _, code = distinct(pairs)
     alone = labels == ""
     code = np.where(alone, len(code) + np.arange(len(code)), code)
-    parts = [np.flatnonzero(code == each) for each in pd.unique(code[~alone])]
+    parts = [np.flatnonzero(code == each) for each in dict.fromkeys(code[~alone].tolist())]
     parts = [lines for lines in parts if len(lines) > 1]
     if not parts:
         return long
@@ -49,8 +49,8 @@ def merged_lines(long: ReportedTable, labels: NDArray[np.object_]) -> ReportedTa
         for variable, column in numbers.items()
     }
     facts = {name: words[keep] for name, words in long.facts.items()}
-    extras = long.extras.iloc[keep].reset_index(drop=True)
-    return replace(long, row_numbers=long.row_numbers[keep], numbers=kept, facts=facts, extras=extras)
+    carried = {heading: words[keep] for heading, words in long.carried.items()}
+    return replace(long, row_numbers=long.row_numbers[keep], numbers=kept, facts=facts, carried=carried)
 
 
 def _ends(long: ReportedTable, name: str, lines: NDArray[np.intp]) -> Ends:
@@ -71,7 +71,9 @@ def _merged(ends: list[Ends]) -> list[tuple[float, float, float]]:
     total, middle, spread = merged_groups(n, mean[0], sd[0])
     centres = [float((n * end).sum() / total[0]) for end in mean[1:]]
     within = [((n - 1) * end**2).sum(axis=-1) for end in sd[1:]]
-    between = least_between(n, *mean[1:]), greatest_between(n, *mean[1:])
+    with np.errstate(invalid="ignore"):
+        # a mean of which only a bound is known has no greatest sum
+        between = least_between(n, *mean[1:]), greatest_between(n, *mean[1:])
     low, high = (np.sqrt((w + b) / (total - 1)) for w, b in zip(within, between, strict=True))
     return [
         (float(total[0]),) * 3,

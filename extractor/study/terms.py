@@ -9,13 +9,23 @@ from __future__ import annotations
 from collections.abc import Mapping
 
 import numpy as np
-import pandas as pd
 from numpy.typing import NDArray
 
+from extractor.distinct import distinct
 from extractor.routes.engine import Estimate
 from extractor.table import BoolArray, FloatArray, ObjectArray, ReportedTable, Variable
 
 TERM_DESIGNS = ("factorial", "within", "mixed")
+SUMS = (
+    "df_others",
+    "explained_by_others",
+    "ss_others",
+    "ss_measured",
+    "explained_by_measured",
+    "ss_strata",
+    "only_factor",
+    "levels",
+)
 _JOINT = " x "
 _NO_FACTOR = frozenset({"", "none"})
 
@@ -27,8 +37,7 @@ def factors_of(term: str) -> frozenset[str]:
 
 def analysis_ids(table: ReportedTable, design: ObjectArray) -> NDArray[np.int64]:
     """One number per model, -1 for rows that belong to none; shape (rows,)."""
-    labels = pd.Series(table.fact("study").astype(str)) + "\x1f" + table.fact("analysis").astype(str)
-    codes = pd.factorize(labels)[0].astype(np.int64)
+    _, codes = distinct(list(zip(table.fact("study").tolist(), table.fact("analysis").tolist(), strict=True)))
     belongs = np.isin(design, TERM_DESIGNS) & (table.fact("analysis") != "")
     return np.where(belongs, codes, -1)
 
@@ -47,7 +56,7 @@ def sums_over_terms(
 
     Returns
     -------
-    df_others, explained_by_others, ss_others, ss_measured, explained_by_measured, ss_strata, each of shape (rows,).
+    The quantities of ``SUMS``, each of shape (rows,).
     """
     return _Models(table, use, design).sums()
 
@@ -58,7 +67,10 @@ class _Models:
         self.ids = analysis_ids(table, design)
         self.inside = self.ids >= 0
         self.models = int(self.ids.max(initial=-1)) + 1
-        self.term = table.fact("term").astype(str)
+        self.term = table.fact("term")
+        unique, self.which = distinct(self.term)
+        self.factors = np.array([len(factors_of(t)) for t in unique], dtype=np.int64)[self.which]
+        self.joint = self.factors > 1
 
     def sums(self) -> dict[str, Estimate]:
         df, f = self._cell("df_effect"), self._cell("f_value")
@@ -66,20 +78,47 @@ class _Models:
         explained = Estimate(df.value * f.value, df.low * f.low, df.high * f.high)
         complete = self._complete()
         measured = self._measured()
-        alone = ~self.inside & (self.design == "within")
+        lone = ~self.inside & (self.design == "within") & ~self.joint
+        if not self.models:
+            return self._without_models(lone)
         one_stratum = complete & (self.design == "factorial")
+        single = self._single()
         found = {
             "df_others": self._others(df, one_stratum),
             "explained_by_others": self._others(explained, one_stratum),
-            "ss_others": self._others(ss, one_stratum),
+            "ss_others": self._others(ss, complete),
             "ss_measured": self._others(ss, complete, measured),
             "explained_by_measured": self._others(explained, one_stratum, measured),
             "ss_strata": self._strata(ss_error, complete),
+            "only_factor": _known(lone | single),
+            "levels": self._levels(df.value),
         }
         # a single within factor has no other sources
-        for end in (found["ss_measured"].value, found["ss_measured"].low, found["ss_measured"].high):
-            end[alone | self._single()] = 0.0
+        for name in ("ss_others", "ss_measured"):
+            for end in (found[name].value, found[name].low, found[name].high):
+                end[single] = 0.0
         return found
+
+    def _without_models(self, lone: BoolArray) -> dict[str, Estimate]:
+        """The sums of rows that all stand alone."""
+        unknown = np.full(self.table.rows, np.nan)
+        found = {name: Estimate(unknown, unknown, unknown) for name in SUMS}
+        return found | {"only_factor": _known(lone)}
+
+    def _levels(self, df: FloatArray) -> Estimate:
+        """Combinations of levels of each joint within term, where all main effects of its factors are rows, too."""
+        within = self.inside & (self.design == "within") & ~np.isnan(df)
+        main = np.flatnonzero(within & ~self.joint).tolist()
+        of_factor = {(int(self.ids[i]), factors_of(self.term[i])): df[i] for i in main}
+        found = np.full(self.table.rows, np.nan)
+        for i in np.flatnonzero(within & self.joint).tolist():
+            each = [
+                of_factor.get((int(self.ids[i]), frozenset([f])), np.nan) for f in factors_of(self.term[i])
+            ]
+            # the df of the term are the product of those of its factors (textbook identity)
+            if np.prod(each) == df[i]:
+                found[i] = np.prod(np.array(each) + 1)
+        return Estimate(found, found, found)
 
     def _cell(self, name: str) -> Estimate:
         numbers = self.table.numbers.get((name, None))
@@ -109,41 +148,49 @@ class _Models:
 
     def _complete(self) -> BoolArray:
         """Models that hold all main effects and all their interactions, each once."""
-        codes, unique = pd.factorize(self.term)
-        main = np.array([len(factors_of(t)) == 1 for t in unique], dtype=bool)[codes]
         terms = self._total(np.ones(self.table.rows), self.inside)
-        mains = self._total(np.ones(self.table.rows), self.inside & main)
-        labels = pd.DataFrame({"id": self.ids, "term": self.term})
-        twice = labels.duplicated(keep=False).to_numpy() & self.inside
+        mains = self._total(np.ones(self.table.rows), self.inside & (self.factors == 1))
+        _, pairs = np.unique(np.stack([self.ids, self.which]), axis=1, return_inverse=True)
+        twice = (np.bincount(pairs.ravel())[pairs.ravel()] > 1) & self.inside
         repeated = self._total(np.ones(self.table.rows), twice) > 0
         with np.errstate(invalid="ignore"):
             return np.asarray(self.inside & (terms == 2.0**mains - 1) & (mains > 0) & ~repeated)
 
     def _single(self) -> BoolArray:
+        """Rows that are the only term of a model of one factor within participants."""
         terms = self._total(np.ones(self.table.rows), self.inside)
-        return np.asarray((self.design == "within") & (terms == 1))
+        return np.asarray((self.design == "within") & (terms == 1) & ~self.joint)
 
     def _measured(self) -> BoolArray:
         """Terms that involve a measured factor; a model's list may stand in any of its rows."""
-        said = pd.Series(self.table.fact("measured_factors").astype(str)).replace("", None)
-        spread = said.groupby(self.ids).transform("first").fillna("").to_numpy()
-        pairs = pd.MultiIndex.from_arrays([self.term, spread])
-        codes, unique = pairs.factorize()
-        involved = [bool(factors_of(term) & _listed(names)) for term, names in unique]
-        return np.asarray(np.array(involved, dtype=bool)[codes]) if len(involved) else self.inside
+        said = self.table.fact("measured_factors")
+        lists: dict[int, str] = {}
+        for at in np.flatnonzero(self.inside & (said != "")).tolist():
+            lists.setdefault(int(self.ids[at]), str(said[at]))
+        if not lists:
+            return np.zeros(self.table.rows, dtype=bool)
+        spread = [lists.get(model, "") for model in self.ids.tolist()]
+        unique, codes = distinct(list(zip(self.term.tolist(), spread, strict=True)))
+        return np.array([bool(factors_of(term) & _listed(names)) for term, names in unique], dtype=bool)[
+            codes
+        ]
+
+    def _greatest(self, values: FloatArray) -> FloatArray:
+        """The greatest known value of each model, on every row of it; NaN where none is known."""
+        greatest = np.full(self.models + 1, -np.inf)
+        known = ~np.isnan(values)
+        np.maximum.at(greatest, self.ids[known], values[known])  # rows of no model share the last place
+        return np.where(greatest[self.ids] == -np.inf, np.nan, greatest[self.ids])
 
     def _strata(self, ss_error: Estimate, complete: BoolArray) -> Estimate:
         """Sum of the distinct error terms of a model, participants included, in within and mixed models."""
         several = complete & np.isin(self.design, ("within", "mixed")) & ~self._single()
-        frame = pd.DataFrame({"id": self.ids, "ss": ss_error.value})
-        first = ~frame.duplicated().to_numpy() & several
+        first = np.zeros(self.table.rows, dtype=bool)
+        terms = np.stack([self.ids, np.where(np.isnan(ss_error.value), -1.0, ss_error.value)])
+        first[np.unique(terms, axis=1, return_index=True)[1]] = True
+        first &= several
         subjects = self._cell("ss_subjects")
-        named = (
-            pd.DataFrame({"id": self.ids, "ss": subjects.value})
-            .groupby("id")["ss"]
-            .transform("max")
-            .to_numpy()
-        )
+        named = self._greatest(subjects.value)
         within = self.design == "within"
         ends = []
         for values, participants in zip(
@@ -151,10 +198,16 @@ class _Models:
             (subjects.value, subjects.low, subjects.high),
             strict=True,
         ):
-            spread = pd.Series(participants).groupby(self.ids).transform("max").to_numpy()
+            spread = self._greatest(participants)
             extra = np.where(within, np.where(np.isnan(named), np.nan, spread), 0.0)
             ends.append(np.where(several, self._total(values, first) + extra, np.nan))
         return Estimate(*ends)
+
+
+def _known(where: BoolArray) -> Estimate:
+    """1 where something holds, NaN elsewhere."""
+    ones = np.where(where, 1.0, np.nan)
+    return Estimate(ones, ones, ones)
 
 
 def _listed(names: str) -> frozenset[str]:

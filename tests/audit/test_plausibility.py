@@ -153,6 +153,13 @@ def test_two_studies_with_the_same_sizes_and_means():
     assert "row 2 (Study 1)" in findings[1].message
 
 
+def test_doubles_are_seen_in_whatever_unit_the_means_are():
+    """Seconds or milliseconds, the digits that agree are the same."""
+    for means in (["0.513", "0.620"], ["513", "620"], ["5.1", "6.2"], ["51", "62"]):
+        rows = [groups([20, 22], means, study=study) for study in ("A", "B")]
+        assert [rule for _, _, rule, _ in found(*rows)] == ["same sizes and means"] * 2
+
+
 @pytest.mark.parametrize(
     ("one", "other"),
     [

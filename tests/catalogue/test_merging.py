@@ -1,11 +1,11 @@
-"""Merging of groups against raw scores, and the division of a shared control."""
+"""Merging of groups against raw scores."""
 
 from __future__ import annotations
 
 import numpy as np
 import pytest
 
-from extractor.catalogue.merging import merged_groups, split_control
+from extractor.catalogue.merging import merged_groups
 
 
 @pytest.mark.parametrize("seed", range(10))
@@ -61,11 +61,3 @@ def test_a_part_without_its_sd_leaves_the_union_without_one() -> None:
 def test_bad_sizes_are_refused(n: list[int], message: str) -> None:
     with pytest.raises(ValueError, match=message):
         merged_groups(n, [1, 2], [1, 1])
-
-
-def test_shared_control() -> None:
-    np.testing.assert_allclose(split_control([30, 31], 2), [15, 15.5])
-    np.testing.assert_allclose(split_control(30, [1, 2, 3]).sum(), 30 + 15 + 10)
-    for arms in (0, 1.5, np.nan):
-        with pytest.raises(ValueError, match="whole number of arms"):
-            split_control(30, arms)

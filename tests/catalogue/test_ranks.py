@@ -175,11 +175,14 @@ def test_groups_that_do_not_overlap_give_no_d() -> None:
     assert np.isnan(ranks.d_from_rank_biserial(np.array([-1.0, 1.0]))).all()
 
 
-def test_ranks_lead_to_raw_scores_by_one_named_approximation_only() -> None:
+def test_ranks_lead_to_raw_scores_by_named_steps_only() -> None:
     inner = {r.gives for r in relations_in(ranks) if r.grade is Grade.IDENTITY}
     assert inner == {"rank_eta_squared", "rank_epsilon_squared", "rank_biserial", "rank_r", "h_value"}
     raw = [r for r in relations_in(ranks) if r.gives not in inner | {"u_value"}]
-    assert [(r.name, r.grade) for r in raw] == [("d_from_rank_biserial", Grade.APPROXIMATION)]
+    assert {r.name: r.grade for r in raw} == {
+        "d_from_rank_biserial": Grade.APPROXIMATION,
+        "r_from_normal_deviate": Grade.ASSUMPTION,
+    }
 
 
 @pytest.mark.parametrize(

@@ -110,6 +110,12 @@ def world(rng: np.random.Generator, rows: int, groups: int, *, equal: bool = Fal
         r = t / np.sqrt(t**2 + v2)
         odds = difference / pooled * np.pi / np.sqrt(3)
         found |= {"r": r, "fisher_z": np.arctanh(r), "log_odds_ratio": odds, "odds_ratio": np.exp(odds)}
+        arms = rng.integers(1, 5, size=rows).astype(float)
+        found |= {
+            "control_comparisons": arms,
+            "inverse_divided_n": 1 / n[:, 0] + arms / n[:, 1],
+            "n_divided": n[:, 0] + n[:, 1] / arms,
+        }
     return found
 
 
@@ -147,7 +153,11 @@ def worlds_of(relation: Relation, rows: int, seed: int) -> list[World]:
     equal = relation.assumes == "groups of equal size"
     sizes = [2] if "two-group" in relation.designs else []
     sizes += [3, 5] if "one-way" in relation.designs else []
-    return [world(rng, rows, k, equal=equal) for k in sizes]
+    found = [world(rng, rows, k, equal=equal) for k in sizes]
+    if relation.standardizer == "control":
+        for true in found:
+            true["hedges_g"] = true["d_control"] * hedges_factor(true["n"][:, 1] - 1)
+    return found
 
 
 def anywhere(relation: Relation) -> bool:

@@ -57,6 +57,12 @@ _WITHIN = row("within", f_value="6.34", df_effect="2", df_error="38")
 _MIXED = row("mixed", f_value="6.90", df_effect="1", df_error="46", direction="+", **of_groups(n="24 24"))
 _F8 = row("one-way", f_value="4.50", df_effect="2", df_error="57")
 
+_OATS = [
+    row("within", study="oats", analysis="model", term=term, f_value=f, df_effect=df1, df_error=df2)
+    for term, f, df1, df2 in (
+        ("variety", "1.49", "2", "10"), ("nitrogen", "55.98", "3", "15"), ("variety x nitrogen", "0.26", "6", "30"))
+]  # fmt: skip
+
 CASES: list[Case] = [
     # 1 means, SDs, ns
     case(1, "M, SD, n of two groups", row("two-group", **_BORENSTEIN), "cohens_d",
@@ -139,6 +145,15 @@ CASES: list[Case] = [
     case(12, "main effect F alone, d wanted", {**_MAIN, "direction": "+"}, "cohens_d",
          "t·sqrt(1/n1 + 1/n2) over the residual SD, which is said (Nouri & Greenberg 1995)",
          math.sqrt(12 * inverse(32, 32)), standardizer="residual"),
+    case(12, "main effect F and N, g wanted", {**_MAIN, "n_total": "64", "direction": "+"}, "hedges_g",
+         "J at the 60 df of the residual SD (Hedges 1981)", correction(60) * math.sqrt(12 * inverse(32, 32)),
+         standardizer="residual",
+         variance=correction(60) ** 2 * d_variance(32, 32, math.sqrt(12 * inverse(32, 32)))),
+    case(12, "main effect F and all others, g wanted",
+         [{**_TWO_BY_TWO[0], "direction": "+", **of_groups(n="32 32")}, *_TWO_BY_TWO[1:]], "hedges_g",
+         "SD restored on 62 df, J at those (Nouri & Greenberg 1995; Hedges 1981)",
+         correction(62) * math.sqrt(12 * inverse(32, 32)) * math.sqrt(62 / (60 + 4 + 2)), grade="assumption",
+         standardizer="pooled"),
     case(12, "main effect F and all others, d wanted",
          [{**_TWO_BY_TWO[0], "direction": "+", **of_groups(n="32 32")}, *_TWO_BY_TWO[1:]], "cohens_d",
          "SD restored: d·sqrt((df2 + Σdf)/(df2 + Σdf·F)) (Nouri & Greenberg 1995; Morris & DeShon 1997)",
@@ -187,9 +202,23 @@ CASES: list[Case] = [
          row("within", ss_effect="72.0000", ss_subjects="52.6667", ss_error="177.3333", df_effect="2", df_error="4"),
          "generalized_eta_squared",
          "Crump, Navarro & Suzuki (2018), ch. 8: SS / SS_total = 72/302 with one within factor",
-         "0.2384"),
+         "0.2384", grade="assumption", said=("the only one within participants",)),
+    case(16, "the same, coded as the only term of its analysis",
+         row("within", study="one", analysis="model", ss_effect="72.0000", ss_subjects="52.6667", ss_error="177.3333",
+             df_effect="2", df_error="4"),
+         "eta_squared", "Crump, Navarro & Suzuki (2018), ch. 8: SS / SS_total = 72/302", 72 / 302),
     case(16, "means and SDs of the conditions", row("within", **_CRUMP), "generalized_eta_squared",
-         "the same study from its condition summaries (Olejnik & Algina 2003)", "0.2384"),
+         "the same study from its condition summaries (Olejnik & Algina 2003)", "0.2384", grade="assumption",
+         said=("the only one within participants",)),
+    case(16, "two within factors, F of all terms, partial omega squared of the interaction", _OATS,
+         "partial_omega_squared",
+         "Yates (1935), open data: 6 blocks, 3 x 4 conditions; df1(F - 1)/(df1(F - 1) + 72) (Maxwell & Delaney 2004)",
+         omega(0.26, 6, 72), at=2),
+    refused(16, "its interaction without the main effects", _OATS[2], "partial_omega_squared", "levels of its factors"),
+    case(16, "a split plot coded as two within factors",
+         row("within", term="nitrogen", f_value="37.69", df_effect="3", df_error="45", n_total="6"),
+         "partial_eta_squared", "Yates (1935), open data: 15 error df within blocks, 45 pooled over three varieties",
+         None, grade="", finding=("doubtful", "pooled over the 3 levels of another factor", "split plot")),
     refused(16, "repeated-measures F, d of two conditions wanted", _WITHIN, "hedges_g", "not the SD of scores",
             "Would open it: mean of each group and sd of each group"),
     case(17, "dfs corrected for sphericity (epsilon .7411)", row("within", f_value="106.60", df_effect="2.223",

@@ -41,6 +41,7 @@ _PAIN = row("two-group", study="one", **of_groups(n="25 25", mean="10.1 9.0", sd
 _ARMS = of_groups(n="25 25 25", mean="10.1 9.6 9.0", sd="2.0 2.1 1.9")
 _CLUSTERED = row("two-group", cluster_size="20", **of_groups(n="60 60", mean="10.1 9.0", sd="2.0 2.1"))
 _D_CLUSTERED = 1.1 / pooled([60, 60], [2.0, 2.1])
+_D_SHARED = 1.1 / pooled([25, 24], [2.0, 1.9])
 _CROSSED = row("paired", **of_groups(n="10 10", mean="7.02 6.00", sd="2.38 2.21"))
 _AVERAGE = 1.02 / math.sqrt((2.38**2 + 2.21**2) / 2)
 _PLAIN = of_groups(n="30 30", sd="1.0 1.0")
@@ -96,6 +97,9 @@ CASES: list[Case] = [
     case(44, "z of a rank test, ns", row("two-group", z_value=f"{_Z_OF_U:.6f}", direction="+", **_U), "cohens_d",
          "the same study: z = (n1·n2/2 - U)/sqrt(n1·n2(N + 1)/12)", f"{normal_d(1 - 120 / 360):.5f}",
          grade="approximation", said=("Mann-Whitney test without ties",)),
+    case(44, "z and N, the test not said", row("two-group", z_value="2.10", direction="+", n_total="38"), "r",
+         "r = z/sqrt(N) (Rosenthal 1991)", 2.10 / math.sqrt(38), grade="assumption",
+         said=("normal deviate of a comparison of two means",)),
     refused(44, "U without direction", row("two-group", u_value="120", **_U), "cohens_d", "have no sign",
             "Would open it: direction"),
     refused(44, "Kruskal-Wallis H", row("one-way", h_value="12.076", n_total="18", k_groups="3"), "eta_squared",
@@ -150,6 +154,10 @@ CASES: list[Case] = [
          "cohens_d", "each contrast over the SD pooled over all arms", 0.6 / pooled([25] * 3, [2.0, 2.1, 1.9]),
          variance=inverse(25, 25) + (0.6 / pooled([25] * 3, [2.0, 2.1, 1.9])) ** 2 / 150, at=1,
          said=("contrast 2 - 3",)),
+    case(48, "one of two comparisons, the control group divided between them",
+         row("two-group", control_comparisons="2", **of_groups(n="25 24", mean="10.1 9.0", sd="2.0 1.9")), "cohens_d",
+         "d of all participants; variance with half of the control group (Cochrane Handbook, ch. 23)", _D_SHARED,
+         variance=d_variance(25, 12, _D_SHARED)),
     # 49, 50 units of analysis
     case(49, "groups randomised, ICC and cluster size", {**_CLUSTERED, "icc": "0.05"}, "cohens_d",
          "variance times 1 + (m - 1)·ICC = 1.95 (Cochrane Handbook, ch. 23)", _D_CLUSTERED,
@@ -169,10 +177,18 @@ CASES: list[Case] = [
     case(50, "crossover without r", _CROSSED, "cohens_d", "the effect, and no variance without r", _AVERAGE,
          standardizer="average", variance=math.nan, reason=("no sampling variance", "correlation")),
     case(50, "crossover analysed as parallel arms", {**_CROSSED, "t_value": "0.99", "df": "18"}, "cohens_d",
-         "df = n - 1 = 9 (textbook identity)", None, grade="", finding=("inconsistent", "df of 9")),
+         "df = n - 1 = 9, and t = 0.99 on 18 df for two groups of these means and SDs (textbook identities)", None,
+         grade="", finding=("doubtful", "df of 9", "df of independent groups")),
+    case(50, "crossover whose t no correlation allows", {**_CROSSED, "t_value": "5.20", "sd_1": "0.24"}, "cohens_d",
+         "SD of differences 1.02·sqrt(10)/5.20 = 0.62, and at least 2.21 - 0.24 (textbook identities)", None, grade="",
+         finding=("inconsistent", "SD")),
     # 51, 52 other models
     case(51, "df2 far above N", row("one-way", f_value="7.20", df_effect="1", df_error="1438", n_total="36"),
          "omega_squared",
+         "df2 = N - k = 34, and 36·40 - 2 = 1438 for 40 trials of each (textbook identities)", None, grade="",
+         finding=("doubtful", "df2 of 34", "trials counted as participants")),
+    case(51, "df2 far above N, no whole number of trials",
+         row("one-way", f_value="7.20", df_effect="1", df_error="1440", n_total="36"), "omega_squared",
          "df2 = N - k = 34 (textbook identity)", None, grade="", finding=("inconsistent", "df2 of 34")),
     refused(52, "z of a mixed model", row("mixed", term="group x time", z_value="2.33", direction="+",
          **of_groups(n="30 30")),

@@ -4,17 +4,7 @@ The tables of one-way designs stand in ``test_textbook_tables``, distributions i
 check stands its id in ``data/worked_examples.json``, where source, locator, licence and confidence are said; values
 marked "value from memory" there were recalled and not compared with a copy.
 
-Records of the collection that are not checked in this package, because they are not about one-way and two-group rows:
-
-* repeated measurements, their correlations and change scores: T1-06, T1-07, T1-09, T1-11, T1-14, T2-04, T3-20, T3-21,
-  T3-23, T3-25, T8-04, T8-05 (designs within, paired, mixed, pre-post-control)
-* factorial terms: T3-06, T3-17, T3-22, T7-17, T11-03, and the F values of the terms of T4-05
-* covariates: T11-01, T11-02 (design ancova)
-* medians, quartiles and ranges: T6-01 to T6-05
-* granularity of means and SDs: T7-01, T7-02, T7-03, T7-05, T7-07, T7-09 (tests of the audit)
-* covariances of effects that share a group: T9-02, T9-04
-* Brown-Forsythe's F, ranks and counts: T10-03, T10-13, T10-15, T10-22, T10-26, T10-29
-* inputs not printed with the record: T10-05, T10-19
+Records about other designs, ranks and counts stand in ``test_design_checks``, which says where the rest is checked.
 
 Parts of covered records left out: the variances converted from V(ln OR) or V(r) in T2-10, T2-11 and T2-12, because
 variances here come from the effect and the sample sizes; Glass's delta in T2-26 (control group's SD); 2t/sqrt(df) in
