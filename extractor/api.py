@@ -5,8 +5,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 from functools import cached_property
 from pathlib import Path
-
-import pandas as pd
+from typing import TYPE_CHECKING, TypeAlias
 
 from extractor.audit.run import Audit, audit_evidence
 from extractor.codebook import Codebook, default_codebook, load_codebook
@@ -21,11 +20,14 @@ from extractor.routes.conversion import (
     check_standardizer,
     convert_evidence,
 )
-from extractor.routes.derivations import alternatives_frame, steps_frame
 from extractor.sheet import read_table
+from extractor.source.grid import Grid
 from extractor.table import ReportedTable
 
-Source = str | Path | pd.DataFrame
+if TYPE_CHECKING:
+    import pandas as pd
+
+Source: TypeAlias = "str | Path | pd.DataFrame | Grid"
 
 
 @dataclass(frozen=True)
@@ -53,11 +55,15 @@ class Result:
     @cached_property
     def derivations(self) -> pd.DataFrame:
         """How every effect came about, step by step."""
+        from extractor.routes.derivations import steps_frame
+
         return steps_frame(self.conversion)
 
     @cached_property
     def alternatives(self) -> pd.DataFrame:
         """The routes that were admissible, chosen or not, and what each gives."""
+        from extractor.routes.derivations import alternatives_frame
+
         return alternatives_frame(self.conversion)
 
 
@@ -78,9 +84,9 @@ class Reading:
         """Findings with the coder's decisions on them."""
         return mark(findings, self.decisions, self.table, self.codebook)
 
-    def audit(self, conversion: Conversion | None = None) -> Audit:
-        """Every check over every row, the decisions honoured."""
-        return audit_evidence(self.evidence, conversion, self.review)
+    def audit(self, conversion: Conversion | None = None, *, across: bool = True) -> Audit:
+        """Every check over every row, the decisions honoured; ``across`` as in ``audit_evidence``."""
+        return audit_evidence(self.evidence, conversion, self.review, across=across)
 
 
 def convert(
@@ -140,21 +146,24 @@ def read(
     decisions: str | Path | None = None,
 ) -> Reading:
     """Read a sheet with its groups and decisions and arrange it for computing; parameters as for ``convert``."""
-    if codebook is None:
-        book = default_codebook()
-    elif isinstance(codebook, Codebook):
-        book = codebook
-    else:
-        book = load_codebook(codebook)
-    table = with_groups(read_table(source, book), source, book, groups)
+    book = codebook_of(codebook)
     decided: list[Decision] = []
     if decisions is not None:
         decided = read_decisions(decisions)
-    elif (
-        not isinstance(source, pd.DataFrame)
-        and str(source) != "-"
-        and str(source).endswith((".xlsx", ".xlsm"))
-    ):
+    elif isinstance(source, (str, Path)) and str(source) != "-" and str(source).endswith((".xlsx", ".xlsm")):
         decided = read_decisions(source)
+    return arranged(source, book, groups, decided)
+
+
+def codebook_of(codebook: str | Path | Codebook | None) -> Codebook:
+    """The codebook of a name or file; without one, headings are names."""
+    if codebook is None:
+        return default_codebook()
+    return codebook if isinstance(codebook, Codebook) else load_codebook(codebook)
+
+
+def arranged(source: Source, book: Codebook, groups: Source | None, decided: list[Decision]) -> Reading:
+    """Cells as evidence, with their groups joined and the coder's corrections made."""
+    table = with_groups(read_table(source, book), source, book, groups)
     corrected, notes = apply_decisions(table, decided, book)
     return Reading(table, gather(corrected), decided, book, notes)

@@ -196,17 +196,27 @@ def load_codebook(name_or_path: str | Path) -> Codebook:
     ------
     InvalidCodebook : there is no such codebook, or it breaks a rule; the message is one line.
     """
+    return parse_codebook(codebook_text(name_or_path), str(name_or_path))
+
+
+def codebook_text(name_or_path: str | Path) -> str:
+    """The text of a ready codebook by name, or of a file.
+
+    Raises
+    ------
+    InvalidCodebook : there is no such codebook, or it is no text; the message is one line.
+    """
     word = str(name_or_path)
     ready = _ready()
     if word in ready:
-        return parse_codebook(_text(ready[word], word), word)
+        return _text(ready[word], word)
     path = Path(word)
     try:
         exists = path.exists()
     except (OSError, ValueError):
         exists = False
     if exists:
-        return parse_codebook(_text(path, word), word)
+        return _text(path, word)
     if word.endswith(".toml") or "/" in word or "\\" in word:
         raise InvalidCodebook(f"codebook {quoted(word, 200)}: no such file")
     raise InvalidCodebook(

@@ -14,6 +14,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from extractor.coding import NO_CONTRAST, Coding, leaf_of_d
+from extractor.distinct import distinct, together
 from extractor.quantities import DEFAULTS, VOCABULARY, Quantity, Role, Shape
 from extractor.routes.engine import Estimate
 from extractor.routes.planner import Start
@@ -142,10 +143,10 @@ class _Gathering:
         live = np.flatnonzero(coding.blocked == "")
         blocks = []
         if len(live):
-            _, inverse = np.unique(codes[live], axis=0, return_inverse=True)
-            order = np.argsort(inverse.ravel(), kind="stable")
-            ends = np.cumsum(np.bincount(inverse.ravel()))[:-1]
-            blocks = [self._block(rows, codes, columns) for rows in np.split(live[order], ends)]
+            signatures = np.ascontiguousarray(codes[live])
+            texts = signatures.view(np.dtype((np.bytes_, signatures.shape[1] * signatures.itemsize))).ravel()
+            alike = together(live, distinct(texts)[1])
+            blocks = [self._block(rows, codes, columns) for rows in alike]
         return Evidence(self.table, blocks, coding.blocked, coding.remarks, coding.contrasts)
 
     def _coded_groups(self) -> FloatArray:
@@ -220,7 +221,7 @@ class _Gathering:
     def _signatures(self) -> tuple[NDArray[np.int16], list[Variable]]:
         """One row of small integers per row; equal rows share a plan."""
         columns = sorted(self.use, key=lambda v: (v[0], v[1] or 0))
-        words = (np.unique(w.astype(str), return_inverse=True)[1] for w in (self.design, self.standardizer))
+        words = (distinct(w)[1] for w in (self.design, self.standardizer))
         facts = (
             self.joint,
             self.groups,
@@ -302,7 +303,10 @@ class _Gathering:
         standardizer = str(self.standardizer[first])
         if "cohens_d" in block.leaves:
             self._rename(block, "cohens_d", leaf_of_d(standardizer, block.design), bounds)
-        if "hedges_g" in block.leaves and leaf_of_d(standardizer, block.design) != "cohens_d":
+        if "hedges_g" in block.leaves and leaf_of_d(standardizer, block.design) not in (
+            "cohens_d",
+            "d_restored",
+        ):
             self._drop(block, "hedges_g", bounds, "a printed g of this standardizer is not used")
         if "p_value" in block.leaves and self.corrected[first]:
             self._rename(block, "p_value", "p_corrected", bounds)

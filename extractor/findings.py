@@ -6,8 +6,10 @@ import math
 from collections.abc import Iterable
 from dataclasses import dataclass
 from enum import IntEnum
+from typing import TYPE_CHECKING
 
-import pandas as pd
+if TYPE_CHECKING:
+    import pandas as pd
 
 COLUMNS = [
     "row",
@@ -73,5 +75,7 @@ class Finding:
 
 def frame(findings: Iterable[Finding]) -> pd.DataFrame:
     """Findings as a table in sheet order, the strongest of a row first."""
+    import pandas as pd
+
     ordered = sorted(findings, key=lambda f: (f.row, -f.severity, f.rule, f.cells))
     return pd.DataFrame([f.record() for f in ordered], columns=COLUMNS)

@@ -8,22 +8,25 @@ from __future__ import annotations
 
 from dataclasses import replace
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 import numpy as np
-import pandas as pd
 from numpy.typing import NDArray
 
 from extractor.codebook import MOST_GROUPS, Codebook
+from extractor.distinct import distinct, spread
 from extractor.errors import UnreadableInput
 from extractor.printed.reading import quoted
 from extractor.quantities import VOCABULARY, Role, Shape
 from extractor.sheet import read_table
 from extractor.source.columns import filled, take_rows
-from extractor.source.grid import NoRows
-from extractor.source.workbook import has_sheet
+from extractor.source.grid import Grid, NoRows
 from extractor.study.subgroups import merged_lines
 from extractor.study.terms import factors_of
 from extractor.table import Cells, FloatArray, Numbers, ObjectArray, Place, ReportedTable, Variable
+
+if TYPE_CHECKING:
+    import pandas as pd
 
 SHEET = "groups"
 _GROUP = "group"
@@ -34,9 +37,9 @@ _ARRAYS = ("value", "low", "high", "unit", "decimals", "given", "comparator", "u
 
 def with_groups(
     table: ReportedTable,
-    source: str | Path | pd.DataFrame,
+    source: str | Path | pd.DataFrame | Grid,
     codebook: Codebook,
-    groups: str | Path | pd.DataFrame | None,
+    groups: str | Path | pd.DataFrame | Grid | None,
 ) -> ReportedTable:
     """The table with the lines of its groups sheet joined.
 
@@ -51,7 +54,7 @@ def with_groups(
         when the sheet has no column ``analysis`` or no group quantity.
     """
     if groups is None:
-        if isinstance(source, pd.DataFrame) or str(source) == "-" or not has_sheet(Path(source), SHEET):
+        if not isinstance(source, (str, Path)) or str(source) == "-" or not _has_sheet(source):
             return table
         groups = source
     try:
@@ -68,11 +71,18 @@ def with_groups(
         raise UnreadableInput(
             f"{where}: no column of group numbers is known; known are n, mean, sd, se and so on"
         )
-    named = [c for c in long.extras.columns if c.strip().lower() == _GROUP]
+    named = [c for c in long.carried if c.strip().lower() == _GROUP]
     if named:
-        labels = long.extras[named[0]].fillna("").astype(str).str.strip().to_numpy(dtype=object)
+        words = long.carried[named[0]]
+        labels = np.fromiter((str(word).strip() for word in words), dtype=object, count=len(words))
         long = merged_lines(long, labels)
     return _Joining(table, long).joined()
+
+
+def _has_sheet(source: str | Path) -> bool:
+    from extractor.source.workbook import has_sheet
+
+    return has_sheet(Path(source), SHEET)
 
 
 def _book(codebook: Codebook) -> Codebook:
@@ -90,10 +100,11 @@ class _Joining:
     def __init__(self, table: ReportedTable, long: ReportedTable) -> None:
         self.table, self.long = table, long
         self.design = table.fact("design")
-        key = pd.Series(long.fact("analysis").astype(str))
-        joined = (key != "") & key.isin(set(table.fact("analysis").astype(str)))
-        self.number = np.where(joined, key.groupby(key).cumcount().to_numpy() + 1, 0)
-        self.key = key.to_numpy()
+        self.key = long.fact("analysis")
+        analyses, codes = distinct(self.key)
+        wanted = set(table.fact("analysis").tolist()) - {""}
+        joined = np.array([label in wanted for label in analyses], dtype=np.bool_)[codes]
+        self.number = np.where(joined, _turns(codes) + 1, 0)
         if self.number.max(initial=0) > MOST_GROUPS:
             where = f"{long.source}, sheet {long.sheet or SHEET}"
             most = int(np.argmax(self.number > MOST_GROUPS))
@@ -119,8 +130,8 @@ class _Joining:
     def _lines(self, group: int) -> NDArray[np.int64]:
         """For each row of the table the long line that is its group; -1 where there is none."""
         found = dict(zip(self.key[self.number == group], np.flatnonzero(self.number == group), strict=True))
-        codes, unique = pd.factorize(self.table.fact("analysis").astype(str))
-        return np.array([found.get(u, -1) if u else -1 for u in unique], dtype=np.int64)[codes]
+        analyses, codes = distinct(self.table.fact("analysis"))
+        return np.array([found.get(a, -1) if a else -1 for a in analyses], dtype=np.int64)[codes]
 
     def _fill(self, numbers: dict[Variable, Numbers], group: int, where: NDArray[np.bool_]) -> None:
         line = np.where(where, self._lines(group), -1)
@@ -145,12 +156,12 @@ class _Joining:
     def _cells(self) -> dict[str, Cells]:
         """Cells of the factorial analyses whose lines name their levels."""
         wanted = sorted({str(a) for a in self.table.fact("analysis")[np.isin(self.design, _CELLED)]} - {""})
-        factors = [c for c in self.long.extras.columns if c.strip().lower() != _GROUP]
+        factors = [c for c in self.long.carried if c.strip().lower() != _GROUP]
         cells = {}
         for analysis in wanted:
             lines = np.flatnonzero(self.key == analysis)
             levels = {
-                c.strip().lower(): [str(v).strip() for v in self.long.extras[c].iloc[lines]] for c in factors
+                c.strip().lower(): [str(v).strip() for v in self.long.carried[c][lines]] for c in factors
             }
             levels = {name: values for name, values in levels.items() if all(values) and len(set(values)) > 1}
             n, mean, sd = (self._ends(name, lines) for name in ("n", "mean", "sd"))
@@ -167,11 +178,19 @@ class _Joining:
 
     def _resolve_contrasts(self, cells: dict[str, Cells], celled: NDArray[np.bool_]) -> None:
         """Write contrasts of levels, and main effects of two levels, as weights of the cells."""
-        analysis, term = self.table.fact("analysis").astype(str), self.table.fact("term").astype(str)
-        keys = pd.MultiIndex.from_arrays([analysis, term, self.contrast.astype(str)])
-        codes, unique = keys.factorize()
-        words = [_weights_of(cells[a], t, c) if a in cells else c for a, t, c in unique]
-        self.contrast[celled] = np.array(words, dtype=object)[codes][celled]
+        analysis, term = self.table.fact("analysis").tolist(), self.table.fact("term").tolist()
+        found, codes = distinct(list(zip(analysis, term, self.contrast.tolist(), strict=True)))
+        words = [_weights_of(cells[a], t, c) if a in cells else c for a, t, c in found]
+        self.contrast[celled] = spread(words, codes)[celled]
+
+
+def _turns(codes: NDArray[np.int64]) -> NDArray[np.int64]:
+    """For each row how many rows before it have its code."""
+    order = np.argsort(codes, kind="stable")
+    first = np.searchsorted(codes[order], codes[order], side="left")
+    turns = np.empty(len(codes), dtype=np.int64)
+    turns[order] = np.arange(len(codes)) - first
+    return turns
 
 
 def _weights_of(cells: Cells, term: str, contrast: str) -> str:

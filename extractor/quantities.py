@@ -174,6 +174,12 @@ _MODEL = [
     Quantity("covariate_r", "R", "correlation of covariates and outcome within groups", -1.0, 1.0),
     _count("n_covariates", "q", "number of covariates", 0.0),
     Quantity("icc", "ICC", "intracluster correlation", -1.0, 1.0),
+    _count(
+        "control_comparisons",
+        "m_C",
+        "comparisons among which the participants of the control group are divided",
+        1.0,
+    ),
     _scalar("cluster_size", "m", "average number of participants in a cluster", 1.0),
     _scalar("epsilon", "ε", "sphericity correction of the degrees of freedom", 0.0, 1.0),
 ]
@@ -292,6 +298,8 @@ _INNER = [
     _inner(
         "one_factor", "1", "1 where the term is one factor, whose levels are df1 + 1", 0.0, 1.0, exact=True
     ),
+    _inner("only_factor", "1", "1 where no other factor within participants is coded", 0.0, 1.0, exact=True),
+    _inner("levels", "Πk", "combinations of levels of the factors of a term", 1.0, integer=True),
     _inner("sd_difference", "SD_diff", "standard deviation of the difference scores", 0.0),
     _inner("average_sd", "s_av", "root of the mean of the two variances", 0.0),
     _inner("pre_sd", "s_pre", "standard deviation before treatment, pooled over the groups", 0.0),
@@ -307,6 +315,15 @@ _INNER = [
         for word, meaning in STANDARDIZERS.items()
         if word != "pooled"
     ),
+    Quantity(
+        "d_restored",
+        "d",
+        "standardised mean difference over the SD within the levels of a factor, the other factors put back",
+        signed=True,
+        role=Role.INNER,
+    ),
+    _inner("inverse_divided_n", "Σw²/n", "1/ñ with the control group divided among its comparisons", 0.0),
+    _inner("n_divided", "N", "participants with the control group divided among its comparisons", 1.0),
     _inner("inverse_effective_n", "Σw²/n", "sum of squared contrast weights over group sizes, 1/ñ", 0.0),
 ]
 

@@ -10,10 +10,9 @@ import datetime
 import difflib
 import re
 from pathlib import Path
+from typing import TYPE_CHECKING
 
 import numpy as np
-import pandas as pd
-from openpyxl.utils import get_column_letter
 
 from extractor.codebook import MOST_GROUPS, RESPONSES, Codebook, Meaning, canonical_names, normalised
 from extractor.errors import UnreadableInput
@@ -22,9 +21,12 @@ from extractor.printed.reading import BLANK, Reading, is_missing, quoted, refuse
 from extractor.printed.reported import DATE_ADVICE, CellError, UncachedFormula, read_number
 from extractor.quantities import DESIGNS, VOCABULARY, Shape, group_heading
 from extractor.source.columns import Mask, factorized, filled, numbers_from, printed, take_rows
-from extractor.source.grid import Grid, ObjectArray, heading_text, is_blank
+from extractor.source.grid import Grid, ObjectArray, column_letters, heading_text, is_blank
 from extractor.source.reader import read_grid
 from extractor.table import Numbers, Place, ReportedTable, Variable
+
+if TYPE_CHECKING:
+    import pandas as pd
 
 Remark = tuple[int, str, str]
 """Row number, cells with addresses, message."""
@@ -42,13 +44,13 @@ _MOST_COMPARED = 500
 """So many columns nobody knows were not headed by hand."""
 
 
-def read_table(source: str | Path | pd.DataFrame, codebook: Codebook) -> ReportedTable:
+def read_table(source: str | Path | pd.DataFrame | Grid, codebook: Codebook) -> ReportedTable:
     """Read a coded sheet.
 
     Parameters
     ----------
     source : a path (.xlsx, .xlsm, .csv, .tsv), "-" for delimited text on standard input, or a data frame,
-        whose first row counts as row 2.
+        whose first row counts as row 2, or cells read already.
     codebook : what the headings mean; see ``codebook.default_codebook``.
 
     Returns
@@ -78,7 +80,7 @@ class _Assembly:
     def __init__(self, grid: Grid, codebook: Codebook) -> None:
         self.grid, self.codebook = grid, codebook
         self.rows = len(grid.row_numbers)
-        self.letters = [get_column_letter(i + 1) for i in range(len(grid.headings))]
+        self.letters = [column_letters(i) for i in range(len(grid.headings))]
         self.numbers: dict[Variable, Numbers] = {}
         self.facts: dict[str, ObjectArray] = {}
         self.extras: dict[str, ObjectArray] = {}
@@ -111,7 +113,7 @@ class _Assembly:
             row_numbers=self.grid.row_numbers,
             numbers=self.numbers,
             facts=self.facts,
-            extras=pd.DataFrame(self.extras, index=pd.RangeIndex(self.rows), dtype=object),
+            carried=self.extras,
             rounding=codebook.rounding,
             assumptions=dict(codebook.assumptions),
             rename=dict(codebook.rename),

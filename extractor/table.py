@@ -4,11 +4,13 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass, field
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import numpy as np
-import pandas as pd
 from numpy.typing import NDArray
+
+if TYPE_CHECKING:
+    import pandas as pd
 
 FloatArray = NDArray[np.float64]
 BoolArray = NDArray[np.bool_]
@@ -90,7 +92,7 @@ class ReportedTable:
 
     numbers : printed numbers by variable.
     facts : coded words by name (see ``quantities.FACTS``), each an object array of str, "" where blank.
-    extras : the columns nobody knows, carried through to the effect table as they stood.
+    carried : the columns nobody knows, carried through to the effect table as they stood, by heading.
     assumptions : values supplied by the codebook.
     cells : cells of factorial models, by the label of the analysis.
     notes : what was noticed on reading, for the user.
@@ -103,7 +105,7 @@ class ReportedTable:
     row_numbers: NDArray[np.int64]
     numbers: dict[Variable, Numbers]
     facts: dict[str, ObjectArray]
-    extras: pd.DataFrame
+    carried: Mapping[str, ObjectArray] = field(default_factory=dict)
     rounding: str = "nearest"
     cells: Mapping[str, Cells] = field(default_factory=dict)
     assumptions: Mapping[str, Assumption] = field(default_factory=dict)
@@ -116,6 +118,13 @@ class ReportedTable:
         """Number of data rows."""
         return len(self.row_numbers)
 
+    @property
+    def extras(self) -> pd.DataFrame:
+        """The carried columns as a frame."""
+        import pandas as pd
+
+        return pd.DataFrame(dict(self.carried), index=pd.RangeIndex(self.rows), dtype=object)
+
     def fact(self, name: str) -> ObjectArray:
         """A column of words; all blank where the sheet has no such column."""
         found = self.facts.get(name)
@@ -123,7 +132,15 @@ class ReportedTable:
 
     def where(self, variable: Variable, position: int) -> str:
         """A variable's cell with its address, by position of the row."""
-        return str(self.wheres(variable, np.array([position]))[0])
+        numbers = self.numbers.get(variable)
+        if numbers is None:
+            return ""
+        row = int(self.row_numbers[position])
+        from_text = self.settings.get("from_reported", {}).get(variable)
+        place = self.settings.get("reported_place")
+        if from_text is not None and place is not None and from_text[position]:
+            return f"{variable[0]} in {place.at(row)}"
+        return numbers.place.at(row)
 
     def wheres(self, variable: Variable, positions: NDArray[np.intp]) -> ObjectArray:
         """A variable's cells with their addresses, by positions of rows; a number found in text names itself."""

@@ -14,8 +14,16 @@ from extractor.commands import options
 )
 @options.coded
 @options.output
+@options.workers
 @options.fail_on
-def command(coded: options.Coded, out: Path | None, force: bool, csv_raw: bool, fail_on: str | None) -> int:
+def command(
+    coded: options.Coded,
+    out: Path | None,
+    force: bool,
+    csv_raw: bool,
+    workers: int | None,
+    fail_on: str | None,
+) -> int:
     """Ask of every row of SHEET whether its printed numbers can all be true.
 
     Rounding is taken into account: a correctly rounded and correctly coded row is never called impossible
@@ -29,17 +37,20 @@ def command(coded: options.Coded, out: Path | None, force: bool, csv_raw: bool, 
       extractor audit coded.xlsx --fail-on inconsistent
     """
     from extractor import cautions
-    from extractor.commands import running
+    from extractor.commands import running, streaming
     from extractor.output import files, package, terminal
+    from extractor.output.request import Request
 
     if out is not None:
         files.refuse_existing(out, force=force)
+    request = Request(sheet=coded.sheet, codebook=coded.codebook, raw=csv_raw)
+    if streaming.in_blocks(coded, out, workers, ()) and out is not None:
+        return streaming.write(coded, out, request, workers, fail_on, force=force)
     reading = running.read(coded)
     rows = reading.table.rows
     with running.stage(f"auditing {rows} rows", rows):
         found = reading.audit()
     if out is not None:
-        request = package.Request(sheet=coded.sheet, codebook=coded.codebook, raw=csv_raw)
         package.write_audit(out, found, reading.table, request, force=force)
         click.echo(f"written to {out}", err=True)
     page = terminal.console()

@@ -2,8 +2,6 @@
 
 from __future__ import annotations
 
-from pathlib import Path
-
 import click
 
 from extractor.commands import options
@@ -13,10 +11,10 @@ from extractor.errors import InvalidCodebook
 @click.command(
     context_settings=options.SETTINGS, short_help="Check a codebook, and a sheet that it was piloted on."
 )
-@click.argument("file", type=click.Path(path_type=Path))
-@click.argument("sheet", required=False)
-def command(file: Path, sheet: str | None) -> None:
-    """Check a codebook FILE: every fault with its line and the nearest known word.
+@click.argument("file", shell_complete=options.completing_codebooks)
+@click.argument("sheet", required=False, shell_complete=options.completing_files)
+def command(file: str, sheet: str | None) -> None:
+    """Check a codebook FILE, or a ready one by its name: every fault with its line and the nearest known word.
 
     With the SHEET of a pilot it also lists columns that were never filled, values that were never understood,
     designs that were never used, and rows of different studies with the same group sizes, means or F.
@@ -26,12 +24,12 @@ def command(file: Path, sheet: str | None) -> None:
       extractor codebook review.toml
       extractor codebook review.toml pilot.xlsx
     """
-    from extractor.codebook import parse_codebook
-    from extractor.codebook_check import faults, text_of
+    from extractor.codebook import codebook_text, parse_codebook
+    from extractor.codebook_check import faults
     from extractor.output import teamwork, terminal
 
-    text = text_of(file)
-    found = faults(text, str(file))
+    text = codebook_text(file)
+    found = faults(text, file)
     if found:
         for fault in found[:-1]:
             click.echo(f"extractor: {fault}", err=True)
@@ -46,7 +44,7 @@ def command(file: Path, sheet: str | None) -> None:
     from extractor.output.cells import reading_notes
     from extractor.overlap.duplicates import duplicate_reports
 
-    book = parse_codebook(text, str(file))
+    book = parse_codebook(text, file)
     reading = read(sheet, book)
     running.mention([*reading_notes(reading.table), *reading.notes])
     teamwork.show_pilot(

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import sys
+from dataclasses import replace
 from pathlib import Path
 from typing import TYPE_CHECKING
 
@@ -10,6 +11,7 @@ import click
 
 from extractor.commands import options
 from extractor.errors import UsageError
+from extractor.quantities import VOCABULARY
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -46,6 +48,7 @@ _TO_STDOUT = ("csv", "json")
     "--vary",
     multiple=True,
     metavar="NAME=LOW:HIGH",
+    shell_complete=options.completing(VOCABULARY),
     help="Show what every effect becomes over the range of an assumption, such as correlation=.3:.8, and under each "
     "admissible route; may be given several times. Ranges of the codebook count too.",
 )
@@ -72,6 +75,7 @@ _TO_STDOUT = ("csv", "json")
     metavar="COLUMN",
     help="Column that groups the figure.",
 )
+@options.workers
 @options.fail_on
 def command(
     coded: options.Coded,
@@ -86,13 +90,15 @@ def command(
     outcome_correlation: float | None,
     figure: Path | None,
     figure_by: str,
+    workers: int | None,
     fail_on: str | None,
 ) -> int:
     """Turn the rows of SHEET into effects of one metric, each with its sampling variance and route.
 
     SHEET is a workbook, a csv or tsv file, or - for delimited text on standard input. With --out the folder
     gets effects.csv, findings.csv, derivations.json and datapackage.json; without it the effect table is
-    printed.
+    printed. Where assumptions have ranges, from --vary or the codebook, it also gets sensitivity.csv,
+    assumptions.csv and routes.csv.
 
     \b
     Examples:
@@ -106,44 +112,54 @@ def command(
     if out is None:
         _check_without_folder(formats, bool(renamed), covariance)
     from extractor import cautions
-    from extractor.commands import running
+    from extractor.commands import running, streaming
     from extractor.output import files, package, tables, terminal
+    from extractor.output.request import Request, effects_as_written
+    from extractor.routes.sensitivity import has_ranges
 
     for kind in formats:
         if kind not in options.VIEWS:
             tables.require(kind)
     if out is not None:
         files.refuse_existing(out, force=force)
+    request = Request(
+        sheet=coded.sheet,
+        codebook=coded.codebook,
+        metric=wanted.metric,
+        variance=wanted.variance,
+        level=wanted.level,
+        standardizer=wanted.standardizer,
+        formats=formats,
+        rename=renamed,
+        raw=csv_raw,
+        covariance=covariance,
+        outcomes=_outcomes(outcome_correlation),
+    )
+    whole = [f"--format {kind}" for kind in formats if kind != "csv"]
+    whole += [
+        name for name, used in (("--vary", vary), ("--covariance", covariance), ("--figure", figure)) if used
+    ]
+    if streaming.in_blocks(coded, out, workers, whole) and out is not None:
+        running.check(wanted)
+        return streaming.write(coded, out, request, workers, fail_on, force=force)
     result = running.convert(coded, wanted, vary)
+    ranged = has_ranges(result.conversion.evidence.table)
     if figure is not None:
         _draw(result.effects, figure, wanted.level, figure_by, force)
     said = (*cautions.EFFECTS, *(cautions.FINDINGS if result.audit.findings else ()))
     if out is not None:
-        request = package.Request(
-            sheet=coded.sheet,
-            codebook=coded.codebook,
-            metric=wanted.metric,
-            variance=wanted.variance,
-            level=wanted.level,
-            standardizer=wanted.standardizer,
-            formats=formats,
-            rename=renamed,
-            raw=csv_raw,
-            covariance=covariance,
-            outcomes=_outcomes(outcome_correlation),
-            sensitivity=bool(vary),
-        )
+        request = replace(request, sensitivity=ranged)
         rows = len(result.effects)
         with running.stage(f"writing {rows} rows", rows, counts=True) as tick:
             running.mention(package.write_conversion(out, result, request, force=force, tick=tick))
         click.echo(f"written to {out}", err=True)
         page = terminal.console()
         terminal.show_summary(page, result)
-        if vary:
+        if ranged:
             _show_sensitivity(page, result, wanted)
         terminal.show_cautions(page, said)
     elif formats:
-        effects = package.effects_as_written(result, renamed)
+        effects = effects_as_written(result, renamed)
         change = str if csv_raw else tables.neutralised
         lines = tables.csv_lines(effects, change) if formats[0] == "csv" else tables.json_lines(effects)
         sys.stdout.writelines(lines)
@@ -151,7 +167,7 @@ def command(
     else:
         page = terminal.console()
         terminal.show_effects(page, result, wanted.level)
-        if vary:
+        if ranged:
             _show_sensitivity(page, result, wanted)
         terminal.show_cautions(page, said)
     return running.status(result.audit, fail_on)

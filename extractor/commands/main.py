@@ -11,10 +11,8 @@ from typing import Any
 import click
 
 from extractor import __version__
-from extractor.commands.options import SETTINGS
+from extractor.commands import SETTINGS
 from extractor.errors import ExtractorError, UsageError
-from extractor.printed.reading import quoted
-from extractor.quantities import close_matches
 
 COMMANDS = (
     "convert",
@@ -50,7 +48,10 @@ class Commands(click.Group):
     ) -> tuple[str | None, click.Command | None, list[str]]:
         """The subcommand of an argument list; a misspelt one is answered with the nearest."""
         word = args[0] if args else ""
-        if word not in COMMANDS and not word.startswith("-"):
+        if word not in COMMANDS and not word.startswith("-") and not ctx.resilient_parsing:
+            from extractor.printed.reading import quoted
+            from extractor.quantities import close_matches
+
             near = close_matches(word, COMMANDS)
             hint = f"did you mean {near[0]}?" if near else f"there are {', '.join(COMMANDS)}"
             raise UsageError(f"no command is called {quoted(word)}: {hint}")

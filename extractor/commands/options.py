@@ -9,28 +9,42 @@ from pathlib import Path
 from typing import Any, TypeVar
 
 import click
+from click.shell_completion import CompletionItem
 
+from extractor.commands import SETTINGS as SETTINGS
 from extractor.errors import UsageError
 from extractor.printed.reading import quoted
 from extractor.quantities import METRICS, STANDARDIZERS, close_matches
 
-SETTINGS = {"help_option_names": ["-h", "--help"], "max_content_width": 100}
 FORMATS = ("csv", "xlsx", "html", "json", "parquet", "dta", "prov")
 VIEWS = ("html", "prov")
 """Formats that are no effect tables."""
 
 Command = TypeVar("Command", bound=Callable[..., Any])
-Completer = Callable[[click.Context, click.Parameter, str], list[str]]
+Completer = Callable[[click.Context, click.Parameter, str], list[CompletionItem]]
 
 
 def completing(words: Iterable[str]) -> Completer:
     """What a shell offers for an option: the known words that begin as typed. The user may type others."""
     known = tuple(words)
 
-    def complete(ctx: click.Context, param: click.Parameter, incomplete: str) -> list[str]:
-        return [word for word in known if word.startswith(incomplete)]
+    def complete(ctx: click.Context, param: click.Parameter, incomplete: str) -> list[CompletionItem]:
+        return [CompletionItem(word) for word in known if word.startswith(incomplete)]
 
     return complete
+
+
+def completing_files(ctx: click.Context, param: click.Parameter, incomplete: str) -> list[CompletionItem]:
+    """Let the shell offer its files."""
+    return [CompletionItem(incomplete, type="file")]
+
+
+def completing_codebooks(ctx: click.Context, param: click.Parameter, incomplete: str) -> list[CompletionItem]:
+    """The ready codebooks that begin as typed; where none does, files."""
+    from extractor.codebook import ready_codebooks
+
+    ready = completing(ready_codebooks())(ctx, param, incomplete)
+    return ready or completing_files(ctx, param, incomplete)
 
 
 def _proportion(ctx: click.Context, param: click.Parameter, value: float) -> float:
@@ -65,20 +79,23 @@ def coded(command: Callable[..., Any]) -> Callable[..., Any]:
         click.option(
             "--decisions",
             metavar="FILE",
+            shell_complete=completing_files,
             help="What coders decided about findings; without it the sheet of that name.",
         ),
         click.option(
             "--groups",
             metavar="FILE",
+            shell_complete=completing_files,
             help="One line per group or cell, joined by analysis; without it the sheet of that name.",
         ),
         click.option(
             "--codebook",
             metavar="NAME|FILE",
+            shell_complete=completing_codebooks,
             help="What the headings mean: a ready codebook (see codebooks/README.md) or a .toml file. "
             "Without it headings are quantity names.",
         ),
-        click.argument("sheet"),
+        click.argument("sheet", shell_complete=completing_files),
     ):
         gathered = option(gathered)
     return gathered
@@ -146,6 +163,17 @@ def fail_on(command: Command) -> Command:
         "--fail-on",
         type=click.Choice(["impossible", "inconsistent", "doubtful"]),
         help="Exit with status 3 where a finding is at least this strong.",
+    )(command)
+
+
+def workers(command: Command) -> Command:
+    """--workers."""
+    return click.option(
+        "--workers",
+        type=click.IntRange(1, 256),
+        metavar="N",
+        help="Work through a csv or parquet file in blocks, with this many processes; large files are worked "
+        "through in blocks in any case. Rows of different studies are then not compared with each other.",
     )(command)
 
 

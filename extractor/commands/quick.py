@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any
 
 import click
 
@@ -12,7 +12,7 @@ from extractor.printed.reading import quoted
 from extractor.quantities import DESIGNS, VOCABULARY, Shape, close_matches
 
 if TYPE_CHECKING:
-    import pandas as pd
+    from collections.abc import Mapping
 
     from extractor.evidence import Evidence
 
@@ -54,7 +54,7 @@ def command(text: str, wanted: options.Wanted, design: str | None, also: tuple[s
     evidence, read_as = _evidence(text, design, options.pairs(also, "--also", "n_1=20"))
     conversion = running.converted(evidence, wanted.metric, wanted)
     audit = audit_evidence(evidence, conversion)
-    effect = conversion.effects.iloc[0]
+    effect = conversion.row(0)
     lines = [" ".join(text.split()), _line("read as", read_as)]
     lines += [_line("note", note) for note in _notes(evidence)]
     lines += _effect_lines(effect, wanted.level)
@@ -62,7 +62,7 @@ def command(text: str, wanted: options.Wanted, design: str | None, also: tuple[s
     if wanted.metric in _RELATED and effect["status"] != "blocked":
         for other in _FAMILY:
             if other != wanted.metric:
-                lines += _related_line(running.converted(evidence, other, wanted).effects.iloc[0])
+                lines += _related_line(running.converted(evidence, other, wanted).row(0))
     for finding in audit.findings:
         lines.append(f"{finding.severity.word}: {finding.message}")
     if audit.findings:
@@ -95,11 +95,10 @@ def _evidence(text: str, design: str | None, columns: dict[str, str]) -> tuple[E
         design = "two-group" if two else "one-way"
         which = f" ({VOCABULARY[two[0]].symbol} compares two groups)" if two else ""
         read_as = f"{design}{which}, unless --design says otherwise"
-    import pandas as pd
-
     from extractor.api import read
+    from extractor.source.grid import typed_row
 
-    evidence = read(pd.DataFrame([{"reported": text, "design": design, **columns}])).evidence
+    evidence = read(typed_row({"reported": text, "design": design, **columns})).evidence
     table = evidence.table
     problems = [message for _, _, message in table.settings["problems"]]
     problems += [
@@ -125,7 +124,7 @@ def _notes(evidence: Evidence) -> list[str]:
     return [*reading_notes(table), *odd, *(message for _, _, message in table.settings["conflicts"])]
 
 
-def _effect_lines(effect: pd.Series, level: float) -> list[str]:
+def _effect_lines(effect: Mapping[str, Any], level: float) -> list[str]:
     """The effect in full."""
     from extractor.words import plain
 
@@ -151,7 +150,7 @@ def _effect_lines(effect: pd.Series, level: float) -> list[str]:
     return [_line(name, value) for name, value in said]
 
 
-def _related_line(effect: pd.Series) -> list[str]:
+def _related_line(effect: Mapping[str, Any]) -> list[str]:
     """A related metric in one line; nothing where there is none."""
     from extractor.words import plain
 

@@ -15,7 +15,9 @@ from extractor.quantities import METRICS, STANDARDIZERS
     context_settings=options.SETTINGS,
     short_help="Compare coders' sheets: agreement, and disputes by how far they move the effect.",
 )
-@click.argument("sheets", nargs=-1, metavar="SHEET_A SHEET_B [MORE]...")
+@click.argument(
+    "sheets", nargs=-1, metavar="SHEET_A SHEET_B [MORE]...", shell_complete=options.completing_files
+)
 @click.option(
     "--to",
     "metric",
@@ -55,11 +57,21 @@ from extractor.quantities import METRICS, STANDARDIZERS
 @click.option(
     "--codebook",
     metavar="NAME|FILE",
+    shell_complete=options.completing_codebooks,
     help="What the headings of all sheets mean: a ready codebook or a .toml file.",
+)
+@click.option(
+    "--groups",
+    multiple=True,
+    metavar="FILE",
+    shell_complete=options.completing_files,
+    help="One line per group or cell, joined by analysis; given once for each sheet, in their order. Without it the "
+    "sheets of that name inside the workbooks.",
 )
 @options.output
 def command(
     sheets: tuple[str, ...],
+    groups: tuple[str, ...],
     metric: str | None,
     standardizer: str,
     level: float,
@@ -96,7 +108,15 @@ def command(
 
     if out is not None:
         files.refuse_existing(out, force=force)
-    found = reconcile(sheets, metric, codebook, level=level, standardizer=standardizer, tolerance=tolerance)
+    found = reconcile(
+        sheets,
+        metric,
+        codebook,
+        level=level,
+        standardizer=standardizer,
+        tolerance=tolerance,
+        groups=groups,
+    )
     running.mention(list(found.notes))
     page = terminal.console()
     if consensus is not None and out is not None:

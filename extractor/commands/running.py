@@ -16,7 +16,6 @@ from extractor.commands.options import Coded, Wanted
 from extractor.evidence import Evidence, gather
 from extractor.findings import Severity
 from extractor.output.cells import reading_notes
-from extractor.output.terminal import console, printable
 from extractor.routes.conversion import (
     Conversion,
     check_method,
@@ -24,7 +23,6 @@ from extractor.routes.conversion import (
     check_standardizer,
     convert_evidence,
 )
-from extractor.routes.sensitivity import ranges, with_ranges
 
 LONG = 20_000
 """Rows above which progress is shown."""
@@ -40,6 +38,8 @@ def read(coded: Coded) -> Reading:
 
 def mention(notes: list[str]) -> None:
     """Notes on standard error, the first few of many."""
+    from extractor.output.terminal import printable
+
     for note in notes[:_MOST_NOTES]:
         click.echo(printable(f"note: {note}"), err=True)
     if len(notes) > _MOST_NOTES:
@@ -53,6 +53,8 @@ def convert(coded: Coded, wanted: Wanted, vary: tuple[str, ...] = ()) -> Result:
     ----------
     vary : assumptions with their ranges, as typed; see ``sensitivity.ranges``.
     """
+    from extractor.routes.sensitivity import ranges, with_ranges
+
     check(wanted)
     varied = ranges(vary)
     reading = read(coded)
@@ -93,6 +95,8 @@ def stage(text: str, rows: int, *, counts: bool = False) -> Iterator[Callable[[i
         yield lambda _: None
         return
     from rich.progress import BarColumn, Progress, TextColumn, TimeElapsedColumn
+
+    from extractor.output.terminal import console
 
     columns = (TextColumn("{task.description}", markup=False), BarColumn(), TimeElapsedColumn())
     with Progress(*columns, console=console(stderr=True), transient=True) as progress:

@@ -10,7 +10,7 @@ from extractor.commands import options
 
 
 @click.command(context_settings=options.SETTINGS, short_help="Write a blank coding sheet for a codebook.")
-@click.argument("codebook")
+@click.argument("codebook", shell_complete=options.completing_codebooks)
 @click.argument("file", type=click.Path(path_type=Path), metavar="FILE.xlsx")
 @click.option(
     "--groups",

@@ -131,7 +131,7 @@ def _replies(path: Path, reading: Reading) -> None:
     ]
     if found.new_columns:
         notes.append(
-            f"add to the sheet the columns {', '.join(found.new_columns)}, left blank, before decisions are used"
+            f"the sheet has no column {', '.join(found.new_columns)}; the decisions bring them along"
         )
     if found.declined:
         notes.append(f"not available: {len(found.declined)}")

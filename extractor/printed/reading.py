@@ -6,8 +6,10 @@ import math
 import re
 from dataclasses import dataclass
 from decimal import Context, Decimal
+from typing import TYPE_CHECKING
 
-import numpy as np
+if TYPE_CHECKING:
+    import numpy as np
 
 ROUNDINGS = ("nearest", "truncated", "either")
 EXACT = Context(prec=400)
@@ -109,6 +111,8 @@ def shortest(number: int | float | np.floating) -> str:
     """The shortest decimal text that stands for a stored number: ``5`` for 5.0, ``5.1`` for 5.1."""
     if isinstance(number, int):
         return str(number)
+    import numpy as np  # the command line starts without it
+
     text = np.format_float_positional(number, unique=True, trim="-")
     return "0" if text == "-0" else text
 

@@ -2,14 +2,13 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, field
-from typing import cast
 
 import numpy as np
 from numpy.typing import NDArray
 
-from extractor.catalogue.relation import FloatArray, Grade, Interval, catalogue
+from extractor.catalogue.relation import FloatArray, Grade, catalogue
 from extractor.evidence import Block
 from extractor.quantities import VOCABULARY
 from extractor.routes.engine import Engine, Estimate
@@ -98,11 +97,38 @@ def _says(route: Route, estimate: Estimate) -> NDArray[np.bool_]:
     return np.isfinite(estimate.value)
 
 
-def support(chosen: Chosen, method: str | None, level: float) -> None:
-    """Fill ``chosen.precisions``: variance and limits for the rows of each chosen route.
+@dataclass(frozen=True, slots=True)
+class _Asked:
+    """What is wanted for the rows of one chosen route: its formulas and their inputs.
 
-    Inputs the route itself passes through are taken from it; the others take their own best route.
+    further : routes that inputs took besides the chosen one. absent : what the design effect lacks.
     """
+
+    chosen: Chosen
+    index: int
+    variance: Precision | None
+    limits: Precision | None
+    inputs: Mapping[str, FloatArray]
+    further: Mapping[str, Route]
+    absent: tuple[str, ...]
+    size: int
+
+
+def support(some: Sequence[Chosen], method: str | None, level: float) -> None:
+    """Fill the ``precisions`` of blocks: variance and limits for the rows of each chosen route.
+
+    Every formula runs once over the rows of all blocks that it serves.
+    """
+    asked = [one for chosen in some for one in _asked(chosen, method)]
+    with np.errstate(all="ignore"):
+        spreads = _evaluated([one.variance for one in asked], asked)
+        ends = _evaluated([one.limits for one in asked], asked, level)
+    for one, spread, limits in zip(asked, spreads, ends, strict=True):
+        one.chosen.precisions[one.index] = _supported(one, spread, limits)
+
+
+def _asked(chosen: Chosen, method: str | None) -> Iterator[_Asked]:
+    """What is wanted for one block; inputs that the route itself passes through are taken from it."""
     design = chosen.block.design
     reachable = search(chosen.block.start, design)
     for index in np.unique(chosen.which[chosen.pointed]):
@@ -115,8 +141,8 @@ def support(chosen: Chosen, method: str | None, level: float) -> None:
             *steps,
             *(q for q, found in reachable.items() if any(r.grade is not Grade.BOUND for r in found)),
         }
-        variance = _first_served(variances_of(chosen.metric, method, design, standardizer), known)
-        limits = _first_served(limits_of(chosen.metric, design, standardizer), known)
+        variance = _first_served(variances_of(chosen.metric, method, design, standardizer, known), known)
+        limits = _first_served(limits_of(chosen.metric, design, standardizer, known), known)
         further: dict[str, Route] = {}
         inputs: dict[str, FloatArray] = {}
         wanted = (*(variance.needs if variance else ()), *(limits.needs if limits else ()), *CLUSTER)
@@ -131,8 +157,7 @@ def support(chosen: Chosen, method: str | None, level: float) -> None:
         coded = chosen.block.leaves.keys() - chosen.block.assumed.keys()
         # half of what the design effect needs says that the plain variance is too small
         absent = tuple(name for name in CLUSTER if name not in inputs) if coded & set(CLUSTER) else ()
-        size = int(rows.sum())
-        chosen.precisions[int(index)] = _supported(variance, limits, inputs, further, absent, size, level)
+        yield _Asked(chosen, int(index), variance, limits, inputs, further, absent, int(rows.sum()))
 
 
 def _first_served(options: list[Precision], known: set[str]) -> Precision | None:
@@ -140,26 +165,33 @@ def _first_served(options: list[Precision], known: set[str]) -> Precision | None
     return next((p for p in options if known.issuperset(p.needs)), next(iter(options), None))
 
 
-def _supported(
-    variance: Precision | None,
-    limits: Precision | None,
-    inputs: Mapping[str, FloatArray],
-    further: Mapping[str, Route],
-    absent: tuple[str, ...],
-    size: int,
-    level: float,
-) -> Supported:
-    nothing = np.full(size, np.nan)
-    spread: FloatArray = nothing
-    low: FloatArray = nothing
-    high: FloatArray = nothing
+def _evaluated(
+    formulas: Sequence[Precision | None], asked: Sequence[_Asked], *more: float
+) -> list[tuple[FloatArray, ...]]:
+    """What each formula gives for what was asked, as one array or several; none where an input is missing."""
+    found: list[tuple[FloatArray, ...]] = [()] * len(asked)
+    alike: dict[tuple[Precision, tuple[tuple[int, ...], ...]], list[int]] = {}
+    for at, (formula, one) in enumerate(zip(formulas, asked, strict=True)):
+        if formula and all(need in one.inputs for need in formula.needs):
+            widths = tuple(one.inputs[need].shape[1:] for need in formula.needs)
+            alike.setdefault((formula, widths), []).append(at)
+    for (formula, _), members in alike.items():
+        inputs = [np.concatenate([asked[at].inputs[need] for at in members]) for need in formula.needs]
+        given = formula.function(*inputs, *more)
+        ends = np.cumsum([asked[at].size for at in members])[:-1]
+        arrays = given if isinstance(given, tuple) else (given,)
+        parts = zip(*(np.split(np.asarray(array), ends) for array in arrays), strict=True)
+        for at, part in zip(members, parts, strict=True):
+            found[at] = part
+    return found
+
+
+def _supported(one: _Asked, spreads: tuple[FloatArray, ...], ends: tuple[FloatArray, ...]) -> Supported:
+    variance, limits, inputs, absent = one.variance, one.limits, one.inputs, one.absent
+    nothing = np.full(one.size, np.nan)
+    (spread,) = spreads or (nothing,)
+    low, high = ends or (nothing, nothing)
     missing = [n for p in (variance, limits) if p for n in p.needs if n not in inputs]
-    with np.errstate(all="ignore"):
-        if variance and all(need in inputs for need in variance.needs):
-            spread = np.asarray(variance.function(*(inputs[need] for need in variance.needs)))
-        if limits and all(need in inputs for need in limits.needs):
-            ends = limits.function(*(inputs[need] for need in limits.needs), level)
-            low, high = cast(Interval, ends)
     method = variance.name if variance else ""
     if absent:
         missing += absent
@@ -173,7 +205,7 @@ def _supported(
             support = VOCABULARY[variance.metric]
             low, high = np.maximum(low, support.low), np.minimum(high, support.high)
         method += ", times the design effect 1 + (m - 1)·ICC"
-    used = {n: r for n, r in further.items() if n not in CLUSTER or all(c in inputs for c in CLUSTER)}
+    used = {n: r for n, r in one.further.items() if n not in CLUSTER or all(c in inputs for c in CLUSTER)}
     return Supported(
         spread,
         low,

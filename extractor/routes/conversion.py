@@ -2,21 +2,28 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass
+from functools import cached_property
+from typing import TYPE_CHECKING
 
 import numpy as np
-import pandas as pd
 from numpy.typing import NDArray
 
 from extractor.catalogue.refusals import why_no_route, why_no_value
 from extractor.errors import UsageError
 from extractor.evidence import Block, Evidence
-from extractor.quantities import METRICS, STANDARDIZERS, close_matches, is_signed
+from extractor.quantities import METRICS, STANDARDIZERS, VOCABULARY, Role, close_matches, is_signed
 from extractor.routes.choice import NOTHING, STANDARDIZED, Chosen, assumptions_of, choose, grade_of, support
 from extractor.routes.planner import search
 from extractor.routes.unlock import in_words, unlocking_sets
 from extractor.sampling.precision import methods_of, standardizer_of
 from extractor.table import FloatArray, ObjectArray
+
+if TYPE_CHECKING:
+    import pandas as pd
+
+Column = NDArray[np.generic] | ObjectArray
 
 COLUMNS = [
     "row",
@@ -41,18 +48,41 @@ COLUMNS = [
     "reason",
     "findings",
 ]
-_SCOPED = frozenset({"contrast_weight", "direction", "k_groups", "tails", "confidence_level", "one_factor"})
+_SCOPED = frozenset(
+    {"contrast_weight", "direction", "k_groups", "tails", "confidence_level", "one_factor", "only_factor"}
+)
 """Leaves that are coded facts or consequences of them: a row that has only these reports nothing."""
 
 
-@dataclass(slots=True)
+@dataclass
 class Conversion:
-    """The effect table and what it was made of."""
+    """The effect table and what it was made of.
 
-    effects: pd.DataFrame
+    columns : the effect table by column, in the contract's order, the sheet's unknown columns after them; each of
+    shape (rows,).
+    """
+
+    columns: dict[str, Column]
     chosen: list[Chosen]
     evidence: Evidence
     metric: str
+
+    @cached_property
+    def effects(self) -> pd.DataFrame:
+        """The effect table as a frame."""
+        import pandas as pd
+
+        return pd.DataFrame(self.columns)
+
+    def row(self, position: int) -> Mapping[str, object]:
+        """One row of the effect table."""
+        return {name: values[position] for name, values in self.columns.items()}
+
+    def note_findings(self, words: ObjectArray) -> None:
+        """Enter the summary of each row's findings."""
+        self.columns["findings"] = words
+        if "effects" in self.__dict__:
+            self.effects["findings"] = words
 
 
 def convert_evidence(
@@ -80,12 +110,11 @@ def convert_evidence(
     check_method(metric, method)
     check_standardizer(standardizer)
     table = _Effects(evidence, metric, standardizer)
-    chosen = []
-    for block in evidence.blocks:
-        chosen.append(choose(block, metric, standardizer))
-        support(chosen[-1], method, level)
-        table.enter(chosen[-1])
-    return Conversion(table.frame(), chosen, evidence, metric)
+    chosen = [choose(block, metric, standardizer) for block in evidence.blocks]
+    support(chosen, method, level)
+    for each in chosen:
+        table.enter(each)
+    return Conversion(table.all_columns(), chosen, evidence, metric)
 
 
 def check_metric(metric: str) -> None:
@@ -178,10 +207,13 @@ class _Effects:
                         "no sampling variance is known for this design and standardizer"
                     )
                 elif supported.missing:
-                    lacking = ", ".join(supported.missing)
-                    self.words["reason"][exact] = f"no sampling variance or limits without {lacking}"
-            elif not pointed.all():
-                self.words["reason"][rows] = "only a bound is reported; a bound is not an estimate"
+                    lacking = ", ".join(_explained(name) for name in supported.missing)
+                    self.words["reason"][exact] = np.where(
+                        known,
+                        f"no confidence limits without {lacking}",
+                        f"no sampling variance or limits without {lacking}",
+                    )
+            self.words["reason"][rows[~pointed]] = "only a bound is reported; a bound is not an estimate"
         self._enter_totals(chosen)
         self._refuse(chosen)
 
@@ -227,10 +259,10 @@ class _Effects:
         self._set(low_name, rows, np.where(flipped, -high, low))
         self._set(high_name, rows, np.where(flipped, -low, high))
 
-    def frame(self) -> pd.DataFrame:
-        """The effect table, its columns in the contract's order, the sheet's unknown columns after them."""
+    def all_columns(self) -> dict[str, Column]:
+        """The effect table by column."""
         table = self.evidence.table
-        columns: dict[str, object] = {
+        columns: dict[str, Column] = {
             "row": table.row_numbers,
             **{name: table.fact(name) for name in ("study", "outcome", "effect")},
             "metric": np.full(table.rows, self.metric, dtype=object),
@@ -239,15 +271,24 @@ class _Effects:
             **self.words,
             "findings": np.full(table.rows, "", dtype=object),
         }
-        frame = pd.DataFrame({name: columns[name] for name in COLUMNS})
-        extras = table.extras.reset_index(drop=True)
-        clash = {name: f"{name} (sheet)" for name in extras.columns if name in frame.columns}
-        return pd.concat([frame, extras.rename(columns=clash)], axis=1)
+        ordered = {name: columns[name] for name in COLUMNS}
+        for heading, words in table.carried.items():
+            while heading in ordered:
+                heading += " (sheet)"
+            ordered[heading] = words
+        return ordered
+
+
+def _explained(name: str) -> str:
+    """A quantity as a reason names it: one that no column holds with its meaning."""
+    quantity = VOCABULARY[name]
+    return name if quantity.role is Role.REPORTED else f"{name} ({quantity.meaning})"
 
 
 def route_words(leaves: frozenset[str], metric: str) -> str:
     """A route in one cell: what it starts from and where it leads."""
-    shown = sorted(leaf for leaf in leaves if leaf not in ("contrast_weight", "k_groups", "one_factor"))
+    silent = ("contrast_weight", "k_groups", "one_factor", "only_factor")
+    shown = sorted(leaf for leaf in leaves if leaf not in silent)
     return f"{', '.join(shown)} -> {metric}"
 
 

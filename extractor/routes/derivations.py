@@ -3,9 +3,10 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
+from dataclasses import dataclass
+from typing import TYPE_CHECKING
 
 import numpy as np
-import pandas as pd
 from numpy.typing import NDArray
 
 from extractor.catalogue.relation import catalogue
@@ -13,8 +14,10 @@ from extractor.quantities import VOCABULARY, Shape
 from extractor.routes.choice import NOTHING, Chosen
 from extractor.routes.conversion import Conversion, route_words
 from extractor.routes.engine import Estimate
-from extractor.routes.planner import Route
-from extractor.table import FloatArray, ObjectArray
+from extractor.table import FloatArray, ObjectArray, Variable
+
+if TYPE_CHECKING:
+    import pandas as pd
 
 STEP_COLUMNS = [
     "row",
@@ -34,13 +37,78 @@ STEP_COLUMNS = [
 ALTERNATIVE_COLUMNS = ["row", "rank", "route", "grade", "chosen", "estimate", "low", "high", "distance"]
 
 
+@dataclass(frozen=True, slots=True)
+class Step:
+    """One step of a route, for the rows of a block that took it.
+
+    number : counted from 1. role : reported, coded, assumed, derived, or "for the variance" for steps that only the
+    sampling variance and the confidence limits need. relation : "" for what the route starts from.
+    cells : the printed cells behind it, in group order.
+    """
+
+    number: int
+    role: str
+    quantity: str
+    relation: str
+    equation: str
+    grade: str
+    source: str
+    cells: tuple[Variable, ...]
+    estimate: Estimate
+
+
+def steps_of(chosen: Chosen, index: int) -> Iterator[Step]:
+    """The steps of a chosen route and of those its variance needs: reported cells first, relations as they ran."""
+    supported = chosen.precisions.get(index)
+    routes = [(chosen.routes[index], "derived")]
+    routes += [(further, "for the variance") for further in (supported.further if supported else ())]
+    seen: set[str] = set()
+    relations = catalogue()
+    for route, role in routes:
+        found = chosen.engine.all_steps(route)
+        for leaf in sorted(route.leaves - seen):
+            seen.add(leaf)
+            yield _leaf(chosen, leaf, len(seen), found[leaf])
+        for name in route.ordered():
+            relation = relations[name]
+            if relation.gives in seen:
+                continue
+            seen.add(relation.gives)
+            yield Step(
+                len(seen),
+                role,
+                relation.gives,
+                name,
+                relation.equation,
+                relation.grade.word,
+                relation.source,
+                (),
+                found[relation.gives],
+            )
+
+
+def _leaf(chosen: Chosen, leaf: str, number: int, estimate: Estimate) -> Step:
+    block = chosen.block
+    assumption, cells = block.assumed.get(leaf), block.origins.get(leaf, ())
+    role = "assumed" if assumption else "reported" if cells else "coded"
+    grade = "assumption" if assumption else "bound" if leaf in block.bounds else "identity"
+    return Step(number, role, leaf, "", "", grade, assumption.by if assumption else "", cells, estimate)
+
+
 def steps_frame(conversion: Conversion) -> pd.DataFrame:
     """One line per row, step and group: reported cells first, then each relation in the order it ran.
 
-    ``role`` is reported, coded, assumed, derived, or "for the variance" for steps that only the sampling variance
-    and the confidence limits need.
+    See ``Step`` for the columns.
     """
-    parts = [part for chosen in conversion.chosen for part in _steps(conversion, chosen)]
+    import pandas as pd
+
+    parts = [
+        _lines(conversion, chosen, step, mine)
+        for chosen in conversion.chosen
+        for index in range(len(chosen.routes))
+        if len(mine := np.flatnonzero(chosen.which == index))
+        for step in steps_of(chosen, index)
+    ]
     if not parts:
         return pd.DataFrame(columns=STEP_COLUMNS)
     frame = pd.concat(parts, ignore_index=True)
@@ -49,6 +117,8 @@ def steps_frame(conversion: Conversion) -> pd.DataFrame:
 
 def alternatives_frame(conversion: Conversion) -> pd.DataFrame:
     """Every admissible route of every row with what it gives; ``distance`` is from the chosen one's estimate."""
+    import pandas as pd
+
     parts = []
     for chosen in conversion.chosen:
         if not chosen.routes:
@@ -82,94 +152,31 @@ def alternatives_frame(conversion: Conversion) -> pd.DataFrame:
     return frame.sort_values(["row", "rank"], kind="stable", ignore_index=True)[ALTERNATIVE_COLUMNS]
 
 
-def _steps(conversion: Conversion, chosen: Chosen) -> Iterator[pd.DataFrame]:
-    for index, route in enumerate(chosen.routes):
-        mine = np.flatnonzero(chosen.which == index)
-        if not len(mine):
-            continue
-        supported = chosen.precisions.get(index)
-        seen: dict[str, int] = {}
-        routes = [(route, "derived")]
-        routes += [(further, "for the variance") for further in (supported.further if supported else ())]
-        for each, role in routes:
-            yield from _route_steps(conversion, chosen, each, role, mine, seen)
+def _lines(conversion: Conversion, chosen: Chosen, step: Step, mine: NDArray[np.intp]) -> pd.DataFrame:
+    import pandas as pd
 
-
-def _route_steps(
-    conversion: Conversion,
-    chosen: Chosen,
-    route: Route,
-    role: str,
-    mine: NDArray[np.intp],
-    seen: dict[str, int],
-) -> Iterator[pd.DataFrame]:
-    relations = catalogue()
-    found = chosen.engine.all_steps(route)
-    for leaf in sorted(route.leaves):
-        if leaf not in seen:
-            seen[leaf] = len(seen) + 1
-            yield _leaf_lines(conversion, chosen, leaf, found[leaf], mine, seen[leaf])
-    for name in route.ordered():
-        relation = relations[name]
-        if relation.gives in seen:
-            continue
-        seen[relation.gives] = len(seen) + 1
-        about = {
-            "step": seen[relation.gives],
-            "role": role,
-            "quantity": relation.gives,
-            "relation": name,
-            "equation": relation.equation,
-            "grade": relation.grade.word,
-            "source": relation.source,
-        }
-        yield _lines(conversion, chosen, found[relation.gives], mine, about, None)
-
-
-def _leaf_lines(
-    conversion: Conversion, chosen: Chosen, leaf: str, estimate: Estimate, mine: NDArray[np.intp], step: int
-) -> pd.DataFrame:
-    block = chosen.block
-    assumption = block.assumed.get(leaf)
-    cells = block.origins.get(leaf)
-    role = "assumed" if assumption else "reported" if cells else "coded"
-    about = {
-        "step": step,
-        "role": role,
-        "quantity": leaf,
-        "relation": "",
-        "equation": "",
-        "grade": "assumption" if assumption else "bound" if leaf in block.bounds else "identity",
-        "source": assumption.by if assumption else "",
-    }
-    return _lines(conversion, chosen, estimate, mine, about, cells)
-
-
-def _lines(
-    conversion: Conversion,
-    chosen: Chosen,
-    estimate: Estimate,
-    mine: NDArray[np.intp],
-    about: dict[str, object],
-    cells: tuple[tuple[str, int | None], ...] | None,
-) -> pd.DataFrame:
-    table = conversion.evidence.table
-    rows = table.row_numbers[chosen.block.positions[mine]]
-    grouped = VOCABULARY[str(about["quantity"])].shape is Shape.GROUP
+    table, estimate = conversion.evidence.table, step.estimate
+    positions = chosen.block.positions[mine]
+    grouped = VOCABULARY[step.quantity].shape is Shape.GROUP
     groups = estimate.value.shape[1] if grouped else 1
 
     def flat(values: FloatArray) -> FloatArray:
         return np.asarray(values[mine].ravel())
 
-    positions = chosen.block.positions[mine]
-    places: ObjectArray = np.full((len(rows), groups), "", dtype=object)
-    for column, cell in enumerate(cells or ()):
+    places: ObjectArray = np.full((len(mine), groups), "", dtype=object)
+    for column, cell in enumerate(step.cells):
         places[:, column] = table.wheres(cell, positions)
     return pd.DataFrame(
         {
-            **about,
-            "row": np.repeat(rows, groups),
-            "group": np.tile(np.arange(1, groups + 1), len(rows)) if grouped else 0,
+            "step": step.number,
+            "role": step.role,
+            "quantity": step.quantity,
+            "relation": step.relation,
+            "equation": step.equation,
+            "grade": step.grade,
+            "source": step.source,
+            "row": np.repeat(table.row_numbers[positions], groups),
+            "group": np.tile(np.arange(1, groups + 1), len(mine)) if grouped else 0,
             "value": flat(estimate.value),
             "low": flat(estimate.low),
             "high": flat(estimate.high),

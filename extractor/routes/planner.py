@@ -158,6 +158,8 @@ def _combined(relation: Relation, choices: list[tuple[Route, ...]], usual: str) 
         if prod(rank + 1 for rank in ranks) > _BEST:
             continue
         parts = [c[r] for c, r in zip(choices, ranks, strict=True)]
+        if any(_astray(part, relation) for part in parts):
+            continue
         steps: dict[str, str] = {}
         agreed = all(steps.setdefault(q, name) == name for part in parts for q, name in part.steps.items())
         leaves = _union(part.leaves for part in parts)
@@ -176,6 +178,17 @@ def _combined(relation: Relation, choices: list[tuple[Route, ...]], usual: str) 
             standardizer=named[0] if named else "",
             behind=any(s != usual for s in named),
         )
+
+
+def _astray(part: Route, relation: Relation) -> bool:
+    """Whether a d would be taken for one it is not.
+
+    Over another SD than the pooled one it says nothing of other metrics, and over one group's SD it has a correction
+    of its own. A d of unsaid standardizer is taken as it stands, and its grade says so.
+    """
+    if part.gives != "cohens_d" or part.standardizer in ("", "unstated"):
+        return False
+    return part.standardizer == "control" or relation.gives != "hedges_g"
 
 
 def _union(sets: Iterable[frozenset[str]]) -> frozenset[str]:

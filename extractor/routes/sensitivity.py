@@ -108,6 +108,11 @@ def with_ranges(table: ReportedTable, varied: Mapping[str, Assumption]) -> Repor
     return replace(table, assumptions=taken)
 
 
+def has_ranges(table: ReportedTable) -> bool:
+    """Whether any assumption has a range to be moved over."""
+    return any(taken.low < taken.high for taken in table.assumptions.values())
+
+
 def sensitivity(conversion: Conversion, *, method: str | None = None, level: float = 0.95) -> Sensitivity:
     """Move every assumption of a conversion over its range.
 
@@ -236,7 +241,7 @@ def _at(
         answered,
         engine,
     )
-    support(again, method, level)
+    support([again], method, level)
     variance = np.full(size, np.nan)
     if index in again.precisions:
         variance[answered] = again.precisions[index].variance
@@ -246,9 +251,13 @@ def _at(
 def _outer(chosen: Chosen, index: int, names: list[str], rows: BoolArray) -> tuple[FloatArray, FloatArray]:
     """The interval of estimates for assumed values anywhere in their ranges, the printed numbers as they stand.
 
-    Counts take whole numbers only, one after the other.
+    Counts take whole numbers only, one after the other. Infinite where a step takes what moves for certain only, so
+    that its image says nothing.
     """
     block, size = chosen.block, len(chosen.block.positions)
+    if _uncertain(chosen.routes[index], names):
+        open_ended = np.full(int(rows.sum()), np.inf)
+        return -open_ended, open_ended
     leaves = {n: e if n in block.bounds else _certain(e.value) for n, e in block.leaves.items()}
     spans: list[list[tuple[float, float]]] = []
     for name in names:
@@ -264,6 +273,18 @@ def _outer(chosen: Chosen, index: int, names: list[str], rows: BoolArray) -> tup
         lows.append(found.low[rows])
         highs.append(found.high[rows])
     return np.min(lows, axis=0), np.max(highs, axis=0)
+
+
+def _uncertain(route: Route, names: list[str]) -> bool:
+    """Whether a moved value, or one that moves with it, goes into a step that needs it exactly."""
+    moving = {name for name in names if not VOCABULARY[name].integer}
+    for step in route.ordered():
+        relation = catalogue()[step]
+        if moving & relation.exact:
+            return True
+        if moving & set(relation.needs):
+            moving.add(relation.gives)
+    return False
 
 
 def _certain(values: FloatArray) -> Estimate:

@@ -60,6 +60,14 @@ EASE: dict[str, Ease] = {
 }
 """Quantities that an article or its authors can be asked for, and how readily they are to be had."""
 
+_OF_EASE = {Ease.ARTICLE: 1, Ease.SUMMARY: 1, Ease.TEST: 3, Ease.TABLE: 4, Ease.SCORES: 6}
+BURDEN: dict[str, int] = {name: _OF_EASE[ease] for name, ease in EASE.items()} | {
+    "df_effect": 1,
+    "df_error": 1,
+}
+"""What one number costs its authors: one F is asked for rather than nine summary statistics, but two SDs rather than
+an F, and dfs stand beside their F; common practice, no source for the weights."""
+
 ASKABLE = frozenset(EASE)
 
 _COUNTS = frozenset({"count_a", "count_b", "count_c", "count_d"})

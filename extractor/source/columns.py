@@ -7,9 +7,12 @@ from collections.abc import Iterable, Sequence
 import numpy as np
 from numpy.typing import NDArray
 
+from extractor.distinct import distinct
 from extractor.printed.reading import Reading
 from extractor.source.grid import ObjectArray
 from extractor.table import Numbers, Place
+
+_TEXTS = frozenset({str, type(None)})
 
 Codes = NDArray[np.int64]
 Mask = NDArray[np.bool_]
@@ -22,17 +25,21 @@ def factorized(
 
     Cells are told apart by type as well, since 1, 1.0 and True are equal but not alike.
     """
+    listed = column.tolist()
+    if formats is None and set(map(type, listed)) <= _TEXTS:
+        texts, codes = distinct(listed)
+        return [(text, None) for text in texts], codes
     seen: dict[object, int] = {}
-    distinct: list[tuple[object, str | None]] = []
+    pairs: list[tuple[object, str | None]] = []
     codes = np.empty(len(column), dtype=np.int64)
-    for row, raw in enumerate(column):
+    for row, raw in enumerate(listed):
         code = formats[row] if formats is not None else None
         key = raw if type(raw) is str else (type(raw), repr(raw), code)
-        at = seen.setdefault(key, len(distinct))
-        if at == len(distinct):
-            distinct.append((raw, code))
+        at = seen.setdefault(key, len(pairs))
+        if at == len(pairs):
+            pairs.append((raw, code))
         codes[row] = at
-    return distinct, codes
+    return pairs, codes
 
 
 def numbers_from(readings: Sequence[Reading], codes: Codes, place: Place) -> Numbers:

@@ -6,7 +6,7 @@ import codecs
 import csv
 import io
 import re
-from collections.abc import Callable, Iterator
+from collections.abc import Callable, Iterable, Iterator
 
 from extractor.errors import UnreadableInput
 from extractor.source.grid import Grid, Rows, is_blank
@@ -14,10 +14,15 @@ from extractor.source.grid import Grid, Rows, is_blank
 Known = Callable[[str], bool]
 """Whether a heading is understood."""
 
-_HEAD = 1 << 20
+DECLARED = re.compile(r"sep=([!#-/:-@\[-`{-~\t])\r?\n")
+"""A first line by which spreadsheet programs tell each other the delimiter."""
+HEAD = 1 << 20
 """Letters looked at to find the delimiter."""
 
-_BOMS = (
+_LONGEST_CELL = 131_072
+NOT_UTF8 = "the text is not UTF-8; it was read as {}, check letters beyond a to z"
+
+BOMS = (
     (codecs.BOM_UTF8, "utf-8-sig"),
     (codecs.BOM_UTF32_LE, "utf-32"),
     (codecs.BOM_UTF32_BE, "utf-32"),
@@ -28,7 +33,7 @@ _BOMS = (
 
 def _decode(content: bytes, name: str) -> tuple[str, list[str]]:
     """Text and notes: UTF-8, UTF-16 and UTF-32 by their marks, else UTF-8, else one byte a letter."""
-    for mark, encoding in _BOMS:
+    for mark, encoding in BOMS:
         if content.startswith(mark):
             try:
                 return content.decode(encoding), []
@@ -40,26 +45,31 @@ def _decode(content: bytes, name: str) -> tuple[str, list[str]]:
         return content.decode("utf-8"), []
     except UnicodeDecodeError:
         pass
-    note = "the text is not UTF-8; it was read as {}, check letters beyond a to z"
     try:
-        return content.decode("cp1252"), [note.format("Windows-1252")]
+        return content.decode("cp1252"), [NOT_UTF8.format("Windows-1252")]
     except UnicodeDecodeError:
-        return content.decode("latin-1"), [note.format("Latin-1")]
+        return content.decode("latin-1"), [NOT_UTF8.format("Latin-1")]
 
 
 def _records(text: str, delimiter: str) -> Iterator[list[str]]:
+    return records(io.StringIO(text, newline=""), delimiter)
+
+
+def records(stream: Iterable[str], delimiter: str) -> Iterator[list[str]]:
     """Records of delimited text (RFC 4180); a blank line is a record without cells."""
-    return csv.reader(io.StringIO(text, newline=""), delimiter=delimiter, strict=True)
+    # one limit for the whole process, which other packages lift
+    csv.field_size_limit(_LONGEST_CELL)
+    return csv.reader(stream, delimiter=delimiter, strict=True)
 
 
-def _delimiter(text: str, known: Known) -> str:
-    """The delimiter under which the heading row has the most known headings, then the most headings."""
+def delimiter_of(text: str, known: Known, suffix: str) -> str:
+    """The delimiter of the file ending, else that under which the heading row has the most known headings."""
+    if suffix in (".tsv", ".tab"):
+        return "\t"
 
     def fit(delimiter: str) -> tuple[int, int]:
         try:
-            first = next(
-                (row for row in _records(text[:_HEAD], delimiter) if not all(map(is_blank, row))), []
-            )
+            first = next((row for row in _records(text[:HEAD], delimiter) if not all(map(is_blank, row))), [])
         except csv.Error:
             return (0, 0)
         return sum(known(heading) for heading in first if heading.strip()), len(first)
@@ -76,12 +86,12 @@ def from_text(content: bytes, name: str, suffix: str, known: Known) -> Grid:
     text, notes = _decode(content, name)
     if not text.strip(" ,;\t\r\n"):
         raise UnreadableInput(f"{name} is empty; the first row must hold the headings")
-    declared = re.match(r"sep=([!#-/:-@\[-`{-~\t])\r?\n", text)
+    declared = DECLARED.match(text)
     if declared is not None:
         # a line by which spreadsheet programs tell each other the delimiter; they do not show it as a row
         text, delimiter = text[declared.end() :], declared[1]
     else:
-        delimiter = "\t" if suffix in (".tsv", ".tab") else _delimiter(text, known)
+        delimiter = delimiter_of(text, known, suffix)
     rows = Rows(name, "", stored=False)
     number = 0
     try:

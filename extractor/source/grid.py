@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass, field
 
 import numpy as np
@@ -52,6 +53,16 @@ class Grid:
         return f"{self.source}, sheet {quoted(self.sheet)}" if self.sheet else self.source
 
 
+def column_letters(index: int) -> str:
+    """The letters of a column, counted from 0: A to Z, then AA and so on."""
+    letters = ""
+    while index >= 0:
+        index, rest = divmod(index, 26)
+        letters = chr(ord("A") + rest) + letters
+        index -= 1
+    return letters
+
+
 def is_blank(value: object) -> bool:
     """Whether a cell holds nothing but space."""
     return value is None or (isinstance(value, str) and not value.strip())
@@ -60,6 +71,20 @@ def is_blank(value: object) -> bool:
 def object_array(values: list[object], count: int) -> ObjectArray:
     """An object array of exactly these values, even where they are sequences."""
     return np.fromiter(values, dtype=object, count=count)
+
+
+def typed_row(cells: Mapping[str, str]) -> Grid:
+    """Cells typed on the command line, by heading, as the only row of a sheet."""
+    return Grid(
+        source="command line",
+        sheet="",
+        headings=list(cells),
+        header_row=1,
+        row_numbers=np.array([2], dtype=np.int64),
+        columns=[object_array([cell], 1) for cell in cells.values()],
+        formats=[None] * len(cells),
+        stored=False,
+    )
 
 
 class Rows:

@@ -5,16 +5,17 @@ from __future__ import annotations
 import stat
 import sys
 from pathlib import Path
-from typing import IO
+from typing import IO, TYPE_CHECKING
 
 import numpy as np
-import pandas as pd
 
 from extractor.errors import UnreadableInput
 from extractor.printed.reading import quoted
 from extractor.source.delimited import Known, from_text
 from extractor.source.grid import MOST_COLUMNS, Grid, ObjectArray, is_blank, object_array
-from extractor.source.workbook import from_workbook
+
+if TYPE_CHECKING:
+    import pandas as pd
 
 MOST_TEXT = 1 << 30
 """Bytes of delimited text above which it is taken for endless."""
@@ -23,12 +24,13 @@ _ZIP = b"PK\x03\x04"
 _OLD = b"\xd0\xcf\x11\xe0"
 
 
-def read_grid(source: str | Path | pd.DataFrame, known: Known, sheets: tuple[str, ...] = ()) -> Grid:
+def read_grid(source: str | Path | pd.DataFrame | Grid, known: Known, sheets: tuple[str, ...] = ()) -> Grid:
     """The cells of a source.
 
     Parameters
     ----------
-    source : a path (.xlsx, .xlsm, .csv, .tsv, .txt), "-" for delimited text on standard input, or a frame.
+    source : a path (.xlsx, .xlsm, .csv, .tsv, .txt, .parquet), "-" for delimited text on standard input, a frame, or
+        cells read already.
     known : whether a heading is understood; the delimiter of text is the one that gives most such headings.
     sheets : names of the sheet to prefer, in any case, before the first visible one.
 
@@ -36,11 +38,20 @@ def read_grid(source: str | Path | pd.DataFrame, known: Known, sheets: tuple[str
     ------
     UnreadableInput : with one line naming the file, the fault and the remedy.
     """
-    if isinstance(source, pd.DataFrame):
-        return _from_frame(source)
+    if isinstance(source, Grid):
+        return source
+    if not isinstance(source, (str, Path)):
+        grid = from_frame(source, "data frame")
+        if grid is None:
+            raise UnreadableInput("the data frame has no rows with a value")
+        return grid
     if str(source) == "-":
         return from_text(_standard_input(), "standard input", "", known)
     path, name = Path(source), quoted(source, 200)
+    if path.suffix.lower() == ".parquet" and path.is_file():
+        from extractor.source.parquet import read_parquet
+
+        return read_parquet(path)
     try:
         kind = path.stat().st_mode
         if stat.S_ISDIR(kind):
@@ -57,6 +68,8 @@ def read_grid(source: str | Path | pd.DataFrame, known: Known, sheets: tuple[str
         reason = getattr(fault, "strerror", None) or str(fault)
         raise UnreadableInput(f"{name} cannot be opened: {reason}") from fault
     if zipped:
+        from extractor.source.workbook import from_workbook
+
         return from_workbook(path, name, sheets)
     if head.startswith(_OLD):
         raise UnreadableInput(
@@ -90,8 +103,13 @@ def _all(stream: IO[bytes], name: str) -> bytes:
     return b"".join(chunks)
 
 
-def _from_frame(frame: pd.DataFrame) -> Grid:
-    """The cells of a frame; its first row counts as row 2, below the headings."""
+def _encodable(text: str) -> str:
+    """A text that can be written: half of a surrogate pair, which no file can hold, becomes a question mark."""
+    return text.encode("utf-8", "replace").decode("utf-8")
+
+
+def from_frame(frame: pd.DataFrame, source: str, first: int = 2) -> Grid | None:
+    """The cells of a frame, whose first row counts as row ``first``; None where every row is blank."""
     if frame.shape[1] > MOST_COLUMNS:
         raise UnreadableInput(
             f"the data frame has more than {MOST_COLUMNS} columns; no spreadsheet has so many"
@@ -103,17 +121,19 @@ def _from_frame(frame: pd.DataFrame) -> Grid:
         narrow = series.dtype in (np.float16, np.float32)
         column = object_array(list(series.to_numpy()) if narrow else list(series.astype(object)), len(frame))
         column[series.isna().to_numpy(dtype=bool)] = None
+        for at in np.flatnonzero([isinstance(value, str) and not value.isascii() for value in column]):
+            column[at] = _encodable(column[at])
         columns.append(column)
         filled |= np.fromiter((not is_blank(value) for value in column), dtype=bool, count=len(frame))
     if not filled.any():
-        raise UnreadableInput("the data frame has no rows with a value")
+        return None
     kept = np.flatnonzero(filled)
     return Grid(
-        source="data frame",
+        source=source,
         sheet="",
-        headings=[str(label).strip() for label in frame.columns],
+        headings=[_encodable(str(label)).strip() for label in frame.columns],
         header_row=1,
-        row_numbers=kept.astype(np.int64) + 2,
+        row_numbers=kept.astype(np.int64) + first,
         columns=[column[kept] for column in columns],
         formats=[None] * len(columns),
         stored=False,

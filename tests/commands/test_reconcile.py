@@ -13,7 +13,9 @@ from extractor.commands.reconcile import command
 from extractor.errors import ExtractorError
 from extractor.output.comparing import CONSENSUS, MERGED
 from tests.double_coding import (
+    CELLS,
     SHEET,
+    TERMS,
     TO,
     changed,
     fill,
@@ -82,3 +84,30 @@ def test_the_command_refuses_with_one_sentence(
     result = run(*words)
     assert isinstance(result.exception, ExtractorError)
     assert message in str(result.exception)
+
+
+def test_sheets_of_groups_in_files_of_their_own_are_compared_and_settled(tmp_path: Path) -> None:
+    cells = pd.DataFrame(CELLS, columns=["analysis", "age", "sex", "n", "mean", "sd"])
+    for name, frame in (
+        ("a", TERMS),
+        ("b", TERMS[::-1]),
+        ("groups_a", cells),
+        ("groups_b", cells.replace({"mean": {"4.42": "4.24"}})),
+    ):
+        frame.to_csv(tmp_path / f"{name}.csv", index=False)
+    a, b, groups_a, groups_b = (tmp_path / f"{name}.csv" for name in ("a", "b", "groups_a", "groups_b"))
+    words = (a, b, "--groups", groups_a, "--groups", groups_b, "--out", tmp_path / "out")
+    found = run(*words, "--to", "omega_squared")
+    assert found.exit_code == 0
+    lines = pd.read_csv(tmp_path / "out" / "disputes.csv")
+    assert lines["variable"].tolist() == ["mean_2"]
+    assert lines["shift"].iloc[0] > 0
+    # settled as the second coder read it, the merged sheet gives the second coder's effects
+    fill(tmp_path / "out" / CONSENSUS, {"mean_2": "4.24"})
+    settled = (*words[:-1], tmp_path / "final", "--consensus", tmp_path / "out" / CONSENSUS)
+    assert run(*settled).exit_code == 0
+    merged = extractor.convert(tmp_path / "final" / MERGED, to="omega_squared").effects
+    second = extractor.convert(b, to="omega_squared", groups=groups_b).effects
+    assert merged["estimate"].tolist() == second["estimate"].tolist()[::-1]
+    one = run(a, b, "--groups", groups_a)
+    assert "2 sheets need 2 sheets of groups" in str(one.exception)

@@ -18,6 +18,7 @@ from multiprocessing import get_context
 
 import numpy as np
 
+from extractor.audit.constraints import constraints_of
 from extractor.audit.contradictions import contradictions
 from extractor.evidence import gather
 from extractor.findings import Finding, Severity
@@ -123,7 +124,9 @@ def examine(task: Task) -> tuple[str, Tally]:
 
 def _count(task: Task, planted: Planted, rows: int, tally: Tally) -> None:
     reported = table(planted.sheet)
-    found = {f.row - 2: f for block in gather(reported).blocks for f in contradictions(block, reported)}
+    evidence = gather(reported)
+    constraints = [constraints_of(block, reported) for block in evidence.blocks]
+    found = {f.row - 2: f for f in contradictions(evidence, constraints)}
     tally.rows += rows
     for position in range(rows):
         finding = found.get(position)

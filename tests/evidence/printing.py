@@ -5,7 +5,6 @@ from __future__ import annotations
 from dataclasses import dataclass, field
 
 import numpy as np
-import pandas as pd
 
 from extractor.quantities import VOCABULARY
 from extractor.table import FloatArray, Numbers, Place, ReportedTable, Variable
@@ -94,5 +93,4 @@ def table(sheet: Sheet) -> ReportedTable:
         row_numbers=np.arange(rows) + 2,
         numbers={variable: numbers(variable, p) for variable, p in sheet.columns.items()},
         facts={name: np.full(rows, word, dtype=object) for name, word in sheet.facts.items()},
-        extras=pd.DataFrame(index=range(rows)),
     )

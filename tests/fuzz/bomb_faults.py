@@ -7,7 +7,7 @@ from collections.abc import Callable
 from pathlib import Path
 
 from tests.fuzz.faults import Hostile, fault
-from tests.fuzz.workbook_faults import SHEET, book_of, saved, write
+from tests.fuzz.workbook_faults import SHEET, members_of, write
 
 
 def _laughs(levels: int) -> bytes:
@@ -16,11 +16,10 @@ def _laughs(levels: int) -> bytes:
     return b'<!DOCTYPE z [<!ENTITY e0 "ha">' + b"".join(nested) + b"]>"
 
 
-@fault("entities in XML")
+@fault("entities in XML", every=4, reading=True)
 def entities(source: random.Random, folder: Path) -> Hostile:
     """Document types with nested, external and recursive entities, used or not, in any part."""
-    book, _ = book_of(source)
-    members = saved(book)
+    members = members_of(source)
     name = source.choice((SHEET, *sorted(members)))
     doctype = source.choice(
         (
@@ -110,11 +109,10 @@ BOMBS: tuple[Callable[[dict[str, bytes]], None], ...] = (
 HEAVY_BOMBS = (_big_member, _big_text)
 
 
-@fault("bombs in a workbook")
+@fault("bombs in a workbook", every=40)
 def bombs(source: random.Random, folder: Path) -> Hostile:
     """A small file that would take all memory or all day."""
-    book, _ = book_of(source)
-    members = saved(book)
+    members = members_of(source)
     bomb = source.choice(HEAVY_BOMBS) if source.random() < 0.02 else source.choice(BOMBS)
     bomb(members)
     return write(folder, members)

@@ -108,7 +108,7 @@ def running_text(source: random.Random, folder: Path) -> Hostile:
     return Hostile(as_csv(folder, cells_of([row])), READ, rows=1)
 
 
-@fault("very many groups")
+@fault("very many groups", every=8)
 def many_groups(source: random.Random, folder: Path) -> Hostile:
     """Up to 200 groups in a wide sheet, some of them of one participant, or none."""
     row = {"study": "Site 1", "design": source.choice(("one-way", "within", "ancova", "two-group", "paired"))}

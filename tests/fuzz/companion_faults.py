@@ -141,7 +141,7 @@ def strange_codebook(source: random.Random, folder: Path) -> Hostile:
     return _checked(made, source, folder)
 
 
-@fault("groups sheet")
+@fault("groups sheet", every=2, reading=True)
 def groups(source: random.Random, folder: Path) -> Hostile:
     """The long sheet: cells changed, lines of no row, levels missing, hundreds of lines for one model."""
     rows = honest(source, 2)
@@ -178,27 +178,18 @@ def groups(source: random.Random, folder: Path) -> Hostile:
     return made
 
 
-@fault("decisions sheet")
+@fault("decisions sheet", reading=True)
 def decisions(source: random.Random, folder: Path) -> Hostile:
     """What coders decided: rows and cells that are not there, values that are no numbers, lines decided twice."""
     rows = honest(source, 2)
     cells = [["row", "cell", "decision", "value", "source", "by", "on", "why"]]
     for row in range(2, 2 + source.randint(1, 2)):
-        heading = source.choice((*rows[row - 2], "f_value", "D2", "f_value [D2]", f"row {row}", ""))
+        numbers = [name for name in rows[row - 2] if name not in FACTS and name != "reported"]
+        heading = source.choice((*numbers * 4, *rows[row - 2], "f_value [D2]", f"row {row}", ""))
         decision = source.choice(("keep", "correct", "waive", "Correct"))
-        cells.append(
-            [
-                str(row),
-                heading,
-                decision,
-                source.choice(EXTREMES),
-                "p. 4",
-                "first coder",
-                "2024-05-03",
-                "typo",
-            ]
-        )
-    for _ in range(source.randint(0, 2)):
+        value = source.choice((*EXTREMES, *("4.3", "20", "2", ".5", "12.45") * 6))
+        cells.append([str(row), heading, decision, value, "p. 4", "AB", "2024-05-03", "typo"])
+    for _ in range(source.choice((0, 0, 0, 1, 2))):
         at = source.randrange(len(cells))
         place = source.randrange(8)
         cells[at][place] = source.choice(

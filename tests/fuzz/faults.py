@@ -5,12 +5,15 @@ from __future__ import annotations
 import random
 import warnings
 from collections.abc import Callable
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
+from typing import Any
+
+import pandas as pd
 
 from extractor.commands.options import FORMATS
 from extractor.quantities import METRICS
-from tests.fuzz.judging import CONVERTED, Case
+from tests.fuzz.judging import Case
 from tests.fuzz.seeds import ROWS
 
 READ = frozenset({0})
@@ -24,6 +27,7 @@ class Hostile:
 
     sheet : the path, or "-" with ``stdin``. allowed : exit statuses it may have. rows : rows of the effect table;
     None where the fault leaves them open. more : further words of ``convert``; without a sheet, the whole command.
+    frame : the sheet where it is no file, for the public functions.
     """
 
     sheet: str
@@ -34,26 +38,33 @@ class Hostile:
     groups: str | None = None
     decisions: str | None = None
     more: tuple[str, ...] = ()
+    frame: pd.DataFrame | None = None
 
 
 Maker = Callable[[random.Random, Path], Hostile]
 FAULTS: dict[str, Maker] = {}
 """Makers by the name of the fault kind."""
+EVERY: dict[str, int] = {}
+"""Rounds from one case of a kind to its next; the costly ones come up less often."""
+OF_READING: set[str] = set()
+"""Kinds whose faults are over, well or badly, once the sheet is read: most of their cases go no further."""
 
 
-def fault(name: str) -> Callable[[Maker], Maker]:
+def fault(name: str, *, every: int = 1, reading: bool = False) -> Callable[[Maker], Maker]:
     """Register a maker under the name of its kind."""
 
     def register(maker: Maker) -> Maker:
         assert name not in FAULTS
-        FAULTS[name] = maker
+        FAULTS[name], EVERY[name] = maker, every
+        if reading:
+            OF_READING.add(name)
         return maker
 
     return register
 
 
 def case(name: str, seed: int, folder: Path) -> Case:
-    """The case of a kind and seed: the same seed always gives the same files and the same command line.
+    """The case of a kind and seed: the same seed always gives the same files and the same words.
 
     ``folder`` is an empty folder for the input; the output is written beside it.
     """
@@ -62,50 +73,107 @@ def case(name: str, seed: int, folder: Path) -> Case:
         # the makers of archives warn of what is wrong with them
         warnings.simplefilter("ignore")
         made = FAULTS[name](source, folder)
+    if made.frame is not None:
+        return _called(made, source)
     if not made.sheet:
         return Case(list(made.more), made.allowed)
-    words = [made.sheet]
-    for option in ("codebook", "groups", "decisions"):
-        value = getattr(made, option)
-        if value is not None:
-            words += [f"--{option}", value]
-    allowed, out, files = made.allowed, None, CONVERTED
-    kind = source.random()
-    if kind < 0.15 and not made.more:
-        words = ["audit", *words]
-    elif kind < 0.2 and not made.more:
-        # a row that was not read is a mistake of whoever asks for it
-        words, allowed = ["trace", *words, str(source.randint(1, 4)), "--to", metric(source)], allowed | {2}
-    elif kind < 0.23 and not made.more:
-        words = ["unlock", *words, "--to", metric(source)]
-        if source.random() < 0.5:
-            out, files = folder.parent / "out", ("replies.csv",)
-            words += ["--letters", str(out)]
-    elif kind < 0.26 and not made.more and made.stdin is None and made.groups is made.decisions is None:
-        words, allowed = ["reconcile", *words, _other_coder(source, folder)], allowed | {2, 4}
-        if source.random() < 0.5:
-            out, files = folder.parent / "out", ("agreement.csv", "disputes.csv", "consensus.xlsx")
-            words += ["--out", str(out), "--to", metric(source)]
-    elif kind < 0.35:
-        words = ["convert", *words, "--to", metric(source), "--format", source.choice(("csv", "json"))]
-        words += made.more
-    else:
-        out = folder.parent / "out"
-        words = ["convert", *words, "--to", metric(source), "--out", str(out), *made.more]
-        for format_ in source.sample(("xlsx", "xlsx", *FORMATS), source.choice((0, 0, 1))):
-            words += ["--format", format_]
-        if source.random() < 0.05:
-            words += ["--covariance", "--outcome-correlation", source.choice(("0.5", "1", "-1"))]
-        if source.random() < 0.02:
-            # a sheet without a single effect cannot be drawn
-            words, allowed = (
-                [*words, "--figure", str(folder / f"figure.{source.choice(('svg', 'png'))}")],
-                allowed | {2},
-            )
-    if words[0] in ("convert", "audit") and source.random() < 0.1:
-        words += ["--fail-on", source.choice(("impossible", "inconsistent", "doubtful"))]
-        allowed = allowed | {3} if 0 in allowed else allowed
-    return Case(words, allowed, out, made.stdin, made.rows, files)
+    if made.more:
+        return _converting(made, source, folder)
+    if name in OF_READING and made.stdin is None and source.random() < 0.7:
+        return Case(["read"], made.allowed, rows=made.rows, named={"source": made.sheet, **_files_of(made)})
+    ways, shares = (_PATHS, _SHARES) if made.stdin is None else (_PATHS[1:], _SHARES[1:])
+    return source.choices(ways, shares)[0](made, source, folder)
+
+
+Way = Callable[[Hostile, random.Random, Path], Case]
+
+
+def _files_of(made: Hostile) -> dict[str, str]:
+    """The files beside the sheet, by the name of their option."""
+    options = {name: getattr(made, name) for name in ("codebook", "groups", "decisions")}
+    return {name: path for name, path in options.items() if path is not None}
+
+
+def _words_of(made: Hostile) -> list[str]:
+    return [made.sheet, *(word for name, path in _files_of(made).items() for word in (f"--{name}", path))]
+
+
+def _called(made: Hostile, source: random.Random, folder: Path | None = None) -> Case:
+    """The public functions, which take the same files and give tables instead of writing them."""
+    named: dict[str, Any] = {"source": made.sheet if made.frame is None else made.frame, **_files_of(made)}
+    allowed = made.allowed | {3} if 0 in made.allowed else made.allowed
+    if source.random() < 0.25:
+        return Case(["audit_sheet"], allowed, rows=made.rows, named=named)
+    named["to"] = metric(source)
+    if source.random() < 0.1:
+        named["level"] = source.choice((0.5, 0.9, 0.99, 1e-9))
+    return Case(["convert"], allowed, rows=made.rows, named=named, whole=source.random() < 0.25)
+
+
+def _auditing(made: Hostile, source: random.Random, folder: Path) -> Case:
+    return _failing_on(Case(["audit", *_words_of(made)], made.allowed, None, made.stdin, made.rows), source)
+
+
+def _tracing(made: Hostile, source: random.Random, folder: Path) -> Case:
+    # a row that was not read is a mistake of whoever asks for it
+    words = ["trace", *_words_of(made), str(source.randint(1, 4)), "--to", metric(source)]
+    return Case(words, made.allowed | {2}, None, made.stdin)
+
+
+def _unlocking(made: Hostile, source: random.Random, folder: Path) -> Case:
+    words = ["unlock", *_words_of(made), "--to", metric(source)]
+    if source.random() < 0.5:
+        return Case(words, made.allowed, None, made.stdin)
+    out = folder.parent / "out"
+    return Case([*words, "--letters", str(out)], made.allowed, out, made.stdin, None, ("replies.csv",))
+
+
+def _reconciling(made: Hostile, source: random.Random, folder: Path) -> Case:
+    if made.stdin is not None or made.groups is not None or made.decisions is not None:
+        return _auditing(made, source, folder)
+    words, allowed = ["reconcile", *_words_of(made), _other_coder(source, folder)], made.allowed | {2, 4}
+    if source.random() < 0.7:
+        return Case(words, allowed)
+    out, files = folder.parent / "out", ("agreement.csv", "disputes.csv", "consensus.xlsx")
+    return Case([*words, "--out", str(out), "--to", metric(source)], allowed, out, None, None, files)
+
+
+def _piping(made: Hostile, source: random.Random, folder: Path) -> Case:
+    words = ["convert", *_words_of(made), "--to", metric(source), "--format", source.choice(("csv", "json"))]
+    return _failing_on(Case(words, made.allowed, None, made.stdin, made.rows), source)
+
+
+def _converting(made: Hostile, source: random.Random, folder: Path) -> Case:
+    """The whole way, with a folder of written files, now and then with every other output."""
+    out, allowed = folder.parent / "out", made.allowed
+    words = ["convert", *_words_of(made), "--to", metric(source), "--out", str(out), *made.more]
+    for format_ in source.sample(("xlsx", "xlsx", *FORMATS), source.choice((0, 0, 0, 0, 1))):
+        words += ["--format", format_]
+    if source.random() < 0.05:
+        words += ["--covariance", "--outcome-correlation", source.choice(("0.5", "1", "-1"))]
+    if source.random() < 0.05:
+        words += ["--vary", source.choice(("correlation=.3:.8", "icc=0:1", "epsilon=.5:1"))]
+        allowed = allowed | {2}
+    if source.random() < 0.1 and made.stdin is None and "--format" not in words:
+        # in blocks, which only text and parquet files can be worked through, and not what needs all rows
+        words, allowed = [*words, "--workers", "1"], allowed | {2}
+    if source.random() < 0.02:
+        # a sheet without a single effect cannot be drawn
+        words += ["--figure", str(folder / f"figure.{source.choice(('svg', 'png'))}")]
+        allowed = allowed | {2}
+    return _failing_on(Case(words, allowed, out, made.stdin, made.rows), source)
+
+
+def _failing_on(made: Case, source: random.Random) -> Case:
+    if source.random() > 0.1:
+        return made
+    words = [*made.words, "--fail-on", source.choice(("impossible", "inconsistent", "doubtful"))]
+    return replace(made, words=words, allowed=made.allowed | {3} if 0 in made.allowed else made.allowed)
+
+
+_PATHS: tuple[Way, ...] = (_called, _auditing, _tracing, _unlocking, _reconciling, _piping, _converting)
+_SHARES = (0.66, 0.06, 0.04, 0.02, 0.01, 0.07, 0.14)
+"""How often a sheet goes each way."""
 
 
 def _other_coder(source: random.Random, folder: Path) -> str:
@@ -119,8 +187,8 @@ def _other_coder(source: random.Random, folder: Path) -> str:
 
 
 def metric(source: random.Random) -> str:
-    """A metric, the common ones more often."""
-    return source.choice((*METRICS, "omega_squared", "hedges_g", "hedges_g"))
+    """A metric, the common ones more often, as their routes need not be planned anew."""
+    return source.choice(METRICS if source.random() < 0.3 else ("omega_squared", "hedges_g"))
 
 
 def honest(source: random.Random, rows: int) -> list[dict[str, str]]:

@@ -1,43 +1,43 @@
-"""One run of the command in this process, with a time limit, and whether it kept the contract.
+"""One run of a command or of a public function in this process, with a time limit, and whether it kept the contract.
 
-The contract: exit 0 or 3 with a whole folder, or 2, 4 or 5 with one clear line and nothing written. Never a
-traceback, a warning, a hang, another status, a formula in a table or a trace of an unfinished folder.
+The contract of the command: exit 0 or 3 with a whole folder, or 2, 4 or 5 with one clear line and nothing written.
+Of the functions: a result, or one of the errors that carry these statuses, with one clear line. Never a traceback, a
+warning, a hang, another status, a formula in a table or a trace of an unfinished folder.
 """
 
 from __future__ import annotations
 
-import csv
-import hashlib
-import io
-import json
-import math
 import os
 import re
 import shutil
 import signal
 import traceback
 import warnings
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 from contextlib import contextmanager
 from dataclasses import dataclass
 from pathlib import Path
 from types import FrameType
+from typing import Any
 
-import openpyxl
 import pandas as pd
 from click.testing import CliRunner
 
+from extractor import api
 from extractor.commands.main import cli
-from extractor.routes.conversion import COLUMNS
+from extractor.errors import ExtractorError
+from extractor.findings import Severity
+from tests.fuzz.written import breach_of_effect, breach_of_folder
 
 SECONDS = 10.0
 CONVERTED = ("effects.csv", "findings.csv", "derivations.json", "datapackage.json")
 DONE = frozenset({0, 3})
 OUTCOMES = ("table", "table, findings", "one line, exit 2", "one line, exit 4", "one line, exit 5")
+STOPPED = ("old or new files", "done before it")
+"""What becomes of runs that are stopped from outside."""
 BREACHES = ("traceback", "hang", "wrong status", "wrong output")
-
-_FORMULA = re.compile(r"[\s\x00-\x20\u00a0\u200b\ufeff]*[=+\-@＝＋－＠]")
-_NUMBER = re.compile(r"[+-]?(?:[0-9]+(?:\.[0-9]*)?|\.[0-9]+)(?:[eE][+-]?[0-9]+)?")
+_LONGEST = 1200
+"""Letters of a refusal that still is one clear line."""
 
 
 class OutOfTime(BaseException):
@@ -48,9 +48,9 @@ class OutOfTime(BaseException):
 class Case:
     """One run.
 
-    words : the command line. allowed : exit statuses that this input may have. out : the folder it is told to
-    write, with at least ``files`` in it. stdin : bytes on standard input. rows : rows the effect table must have;
-    None where unknown.
+    words : the command line, or the name of a public function. named : what the function is given; the command where
+    None. allowed : exit statuses that this input may have. out : the folder it is told to write, with at least
+    ``files`` in it. stdin : bytes on standard input. rows : rows the effect table must have; None where unknown.
     """
 
     words: list[str]
@@ -59,6 +59,8 @@ class Case:
     stdin: bytes | None = None
     rows: int | None = None
     files: tuple[str, ...] = CONVERTED
+    named: dict[str, Any] | None = None
+    whole: bool = True
 
 
 @dataclass(frozen=True)
@@ -97,38 +99,100 @@ def time_limit(seconds: float) -> Iterator[None]:
 def judge(case: Case, seconds: float = SECONDS) -> Verdict:
     """Run a case and say whether it kept the contract; its folder is removed again."""
     siblings = set(os.listdir(case.out.parent)) if case.out is not None else set()
+    run = _command if case.named is None else _function
     try:
-        return _judge(case, seconds, siblings)
+        with time_limit(seconds), warnings.catch_warnings():
+            warnings.simplefilter("error")
+            verdict = run(case)
+        return verdict(siblings)
+    except OutOfTime:
+        return Verdict("hang", "".join(traceback.format_exc().splitlines(keepends=True)[-14:]))
     finally:
         if case.out is not None:
             shutil.rmtree(case.out, ignore_errors=True)
 
 
-def _judge(case: Case, seconds: float, siblings: set[str]) -> Verdict:
+Judgement = Callable[[set[str]], Verdict]
+"""What is said once the time limit is over, given what stood beside the folder before."""
+
+
+def _fallen(error: BaseException) -> Verdict:
+    return Verdict("traceback", "".join(traceback.format_exception(error))[-1800:])
+
+
+def _command(case: Case) -> Judgement:
+    found = CliRunner().invoke(cli, case.words, input=case.stdin)
+
+    def judged(siblings: set[str]) -> Verdict:
+        if found.exception is not None and not isinstance(found.exception, SystemExit):
+            return _fallen(found.exception)
+        status = found.exit_code
+        if status not in case.allowed:
+            return Verdict("wrong status", f"exit {status}: {found.stderr[-400:]}")
+        breach = _breach_of_streams(case.words, status, found.stdout, found.stderr)
+        if case.out is not None and not breach:
+            left = set(os.listdir(case.out.parent)) - siblings - {case.out.name}
+            if left:
+                breach = f"left beside the folder: {sorted(left)}"
+            elif status in DONE:
+                breach = breach_of_folder(case.out, case.files, case.rows)
+            elif case.out.exists():
+                breach = "a folder was written although the run was refused"
+        return Verdict("wrong output", breach) if breach else Verdict(_outcome(status))
+
+    return judged
+
+
+def _function(case: Case) -> Judgement:
+    named = dict(case.named or {})
     try:
-        with time_limit(seconds), warnings.catch_warnings():
-            warnings.simplefilter("error")
-            found = CliRunner().invoke(cli, case.words, input=case.stdin)
-    except OutOfTime:
-        return Verdict("hang", "".join(traceback.format_exc().splitlines(keepends=True)[-14:]))
-    if found.exception is not None and not isinstance(found.exception, SystemExit):
-        lines = traceback.format_exception(found.exception)
-        return Verdict("traceback", "".join(lines)[-1800:])
-    status = found.exit_code
-    if status not in case.allowed:
-        return Verdict("wrong status", f"exit {status}: {found.stderr[-400:]}")
-    breach = _breach_of_streams(case.words, status, found.stdout, found.stderr)
-    if case.out is not None and not breach:
-        left = set(os.listdir(case.out.parent)) - siblings - {case.out.name}
-        if left:
-            breach = f"left beside the folder: {sorted(left)}"
-        elif status in DONE:
-            breach = _breach_of_folder(case.out, case)
-        elif case.out.exists():
-            breach = "a folder was written although the run was refused"
-    if breach:
-        return Verdict("wrong output", breach)
-    return Verdict({0: "table", 3: "table, findings"}.get(status, f"one line, exit {status}"))
+        found = getattr(api, case.words[0])(named.pop("source"), **named)
+        if isinstance(found, api.Reading):
+            rows = found.table.rows
+            lost = f"{rows} rows for {case.rows} rows of the sheet" if case.rows not in (None, rows) else ""
+            return lambda _: Verdict("wrong output", lost) if lost else Verdict(_outcome(0))
+        if isinstance(found, api.Result):
+            more = (found.derivations, found.alternatives) if case.whole else ()
+            tables = found.effects, found.findings, more
+            return lambda _: _judged_result(case, *tables)
+        status = 3 if found.worst() is not None and found.worst() >= Severity.INCONSISTENT else 0
+        return lambda _: Verdict(_outcome(status))
+    except ExtractorError as error:
+        status, message = error.exit_code, str(error)
+    except Exception as error:
+        fallen = _fallen(error)
+        return lambda _: fallen
+
+    def refused(_: set[str]) -> Verdict:
+        if status not in case.allowed:
+            return Verdict("wrong status", f"exit {status}: {message[:400]}")
+        line = " ".join(message.split())
+        breach = _breach_of_line(f"extractor: {line}", line)
+        return Verdict("wrong output", breach) if breach else Verdict(_outcome(status))
+
+    return refused
+
+
+def _judged_result(
+    case: Case, effects: pd.DataFrame, findings: pd.DataFrame, more: tuple[pd.DataFrame, ...]
+) -> Verdict:
+    rows = set(effects["row"])
+    if case.rows is not None and len(effects) != case.rows:
+        return Verdict("wrong output", f"{len(effects)} rows for {case.rows} rows of the sheet")
+    lines = zip(*(effects[name].tolist() for name in effects), strict=True)
+    records = (dict(zip(map(str, effects), line, strict=True)) for line in lines)
+    breaches = [breach for breach in map(breach_of_effect, records) if breach]
+    if not breaches and not all(set(frame["row"]) <= rows for frame in (findings, *more)):
+        breaches = ["a finding or a step of a row that is not in the sheet"]
+    if not breaches and (findings["message"] == "").any():
+        breaches = ["a finding that says nothing"]
+    if breaches:
+        return Verdict("wrong output", breaches[0])
+    return Verdict(_outcome(3 if findings["severity"].isin(("impossible", "inconsistent")).any() else 0))
+
+
+def _outcome(status: int) -> str:
+    return {0: "table", 3: "table, findings"}.get(status, f"one line, exit {status}")
 
 
 _SAID = ("note: ", "written to ", "extractor: ")
@@ -136,7 +200,8 @@ _LETTERS = re.compile("[0-9]+ letters drafted")
 
 
 def _breach_of_streams(words: list[str], status: int, stdout: str, stderr: str) -> str:
-    command, show = words[0], "--out" in words or "--format" not in words
+    # data that goes to standard output for a program or a file keeps whatever stood in the sheet
+    command, show = words[0], "--out" in words or not {"--format", "--log"} & set(words)
     for text in (stdout if show else "", stderr):
         control = [c for c in text if not c.isprintable() and c != "\n"]
         if control:
@@ -153,100 +218,12 @@ def _breach_of_streams(words: list[str], status: int, stdout: str, stderr: str) 
     # the command that checks a codebook names every fault
     if (len(refusals) != 1 and command != "codebook") or not refusals or others:
         return f"not one clear line: {stderr[:300]}"
-    longest = max(map(len, refusals))
-    return "" if longest <= 1200 else f"a line of {longest} characters"
+    return next((breach for line in refusals if (breach := _breach_of_line(line, line))), "")
 
 
-def _breach_of_folder(out: Path, case: Case) -> str:
-    """What is wrong with a written folder; "" where nothing is."""
-    missing = [name for name in case.files if not (out / name).is_file()]
-    if missing:
-        return f"not written: {missing}"
-    for path in sorted(out.iterdir()):
-        breach = _breach_of_file(path, case.rows if path.name == "effects.csv" else None)
-        if breach:
-            return f"{path.name}: {breach}"
-    return ""
-
-
-def _breach_of_file(path: Path, rows: int | None) -> str:
-    if path.suffix == ".json":
-        content = json.loads(path.read_text(encoding="utf-8"), parse_constant=_refuse)
-        if path.name == "datapackage.json":
-            for resource in content["resources"]:
-                of_file = hashlib.sha256((path.parent / resource["path"]).read_bytes()).hexdigest()
-                if f"sha256:{of_file}" != resource["hash"]:
-                    return f"{resource['path']} is not the file that was described"
-    elif path.suffix == ".html":
-        if "<script>alert(1)" in path.read_text(encoding="utf-8"):
-            return "a script of the sheet stands in the page"
-    elif path.suffix == ".dta":
-        pd.read_stata(path)
-    elif path.suffix == ".csv":
-        return _breach_of_csv(path.read_text(encoding="utf-8"), rows)
-    elif path.suffix == ".xlsx" and path.name != "annotated.xlsx":
-        return _breach_of_workbook(path)
-    return ""
-
-
-def _refuse(word: str) -> float:
-    raise ValueError(f"{word} in JSON")
-
-
-def _breach_of_csv(text: str, rows: int | None) -> str:
-    lines = list(csv.reader(io.StringIO(text, newline=""), strict=True))
-    if len({len(line) for line in lines}) > 1:
-        return "lines of unequal length"
-    for line in lines:
-        for cell in line:
-            if _FORMULA.match(cell) and not _NUMBER.fullmatch(cell) and cell not in ("-INF", "+INF"):
-                return f"a spreadsheet takes {cell[:40]!r} for a formula"
-    if rows is None:
-        return ""
-    if len(lines) != rows + 1:
-        return f"{len(lines) - 1} rows for {rows} rows of the sheet"
-    head = lines[0]
-    if len(set(head)) != len(head):
-        return "two columns of one name"
-    if not set(COLUMNS) <= set(head):
-        return ""
-    for line in lines[1:]:
-        breach = _breach_of_effect(dict(zip(head, line, strict=True)))
-        if breach:
-            return breach
-    return ""
-
-
-def _breach_of_effect(effect: dict[str, str]) -> str:
-    """Whether one effect is in itself possible."""
-
-    def number(name: str) -> float:
-        return float(effect[name] or "nan")
-
-    status = effect["status"]
-    if status not in ("converted", "bounded", "blocked"):
-        return f"status {status!r}"
-    if (status == "converted") != math.isfinite(number("estimate")):
-        return f"a {status} row has the estimate {effect['estimate']!r}"
-    if status == "blocked" and not effect["reason"]:
-        return "a blocked row without a reason"
-    if number("variance") < 0:
-        return f"variance {effect['variance']}"
-    pairs = (("ci_low", "ci_high"), ("estimate_low", "estimate"), ("estimate", "estimate_high"))
-    for low, high in pairs:
-        if number(low) > number(high):
-            return f"{low} {effect[low]} above {high} {effect[high]}"
-    return ""
-
-
-def _breach_of_workbook(path: Path) -> str:
-    book = openpyxl.load_workbook(path, read_only=True)
-    try:
-        for sheet in book.worksheets:
-            for row in sheet.iter_rows():
-                for cell in row:
-                    if cell.data_type in ("f", "e"):
-                        return f"cell {cell.coordinate} is a formula or an error"
-    finally:
-        book.close()
-    return ""
+def _breach_of_line(line: str, shown: str) -> str:
+    """What is wrong with a refusal; "" where it is one clear line."""
+    control = [c for c in shown if not c.isprintable()]
+    if control:
+        return f"control character {control[0]!r} in a refusal"
+    return "" if 20 < len(line) <= _LONGEST else f"a line of {len(line)} characters"

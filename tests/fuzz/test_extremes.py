@@ -13,8 +13,7 @@ import numpy as np
 import pandas as pd
 import pytest
 
-import extractor
-from extractor.api import read
+from extractor.api import convert, read
 from extractor.quantities import METRICS, VOCABULARY, Quantity, group_heading
 from extractor.routes.conversion import convert_evidence
 
@@ -118,7 +117,7 @@ def test_numbers_beyond_doubles(name: str) -> None:
     """They are refused or read as blank, cell by cell; the row says why it has no effect."""
     row = {"design": "one-way", "f_value": "4.31", "df_effect": "2", "df_error": "57"}
     cells = (*REFUSED, *MISSING)
-    result = extractor.convert(frame({**row, name: cell} for cell in cells), to="omega_squared")
+    result = convert(frame({**row, name: cell} for cell in cells), to="omega_squared")
     assert set(result.effects["status"]) == {"blocked"}
     refused = [finding.row for finding in result.audit.findings if finding.rule == "not understood"]
     assert refused == [at + 2 for at in range(len(REFUSED))]
@@ -127,7 +126,7 @@ def test_numbers_beyond_doubles(name: str) -> None:
 def test_counts_beyond_doubles() -> None:
     whole = {"design": "one-way", "f_value": "4.31", "k_groups": "3"}
     rows = [whole | {"n_total": n} for n in ("9007199254740993", "1e20")]
-    result = extractor.convert(frame(rows), to="omega_squared")
+    result = convert(frame(rows), to="omega_squared")
     assert result.effects["status"].tolist() == ["blocked", "blocked"]
     assert all("more than any study counts" in finding.message for finding in result.audit.findings)
 

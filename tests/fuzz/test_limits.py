@@ -282,13 +282,13 @@ def test_standard_input_that_is_closed_or_broken(monkeypatch: pytest.MonkeyPatch
         def readable(self) -> bool:
             return True
 
-        def read(self, size: int = -1) -> bytes:
+        def readinto(self, buffer: object) -> int:
             raise OSError(5, "Input/output error")
 
     monkeypatch.setattr(sys, "stdin", None)
     with pytest.raises(UnreadableInput, match="is closed"):
         read_table("-", default_codebook())
-    monkeypatch.setattr(sys, "stdin", io.TextIOWrapper(Broken()))
+    monkeypatch.setattr(sys, "stdin", io.TextIOWrapper(io.BufferedReader(Broken())))
     with pytest.raises(UnreadableInput, match="cannot be read: Input/output error"):
         read_table("-", default_codebook())
 

@@ -3,8 +3,14 @@
 from __future__ import annotations
 
 import codecs
+import datetime
+import decimal
+import math
 import random
 from pathlib import Path
+
+import pyarrow as pa
+import pyarrow.parquet as pq
 
 from extractor.codebook import MOST_GROUPS
 from tests.fuzz.faults import READ_OR_NOT, Hostile, cells_of, delimited, fault, headings_of, honest
@@ -35,7 +41,7 @@ def _write(folder: Path, content: bytes, source: random.Random) -> Hostile:
     return Hostile(str(folder / name), READ_OR_NOT)
 
 
-@fault("encodings")
+@fault("encodings", reading=True)
 def encodings(source: random.Random, folder: Path) -> Hostile:
     """One encoding or two in one file, whole or cut in the middle of a letter."""
     rows = honest(source, 1)
@@ -52,14 +58,16 @@ def encodings(source: random.Random, folder: Path) -> Hostile:
     return _write(folder, content, source)
 
 
-@fault("delimiters and line ends")
+@fault("delimiters and line ends", reading=True)
 def delimiters(source: random.Random, folder: Path) -> Hostile:
     """Decimal commas, semicolons, tabs, declared delimiters, every line end and mixtures of them."""
     rows = honest(source, 2)
     if source.random() < 0.4:
         rows = [{k: v.replace(".", ",") for k, v in row.items()} for row in rows]
-    newline = source.choice(("\n", "\r\n", "\r", "\n\r", "\x0b", "\x0c", "\u2028", "\x85"))
-    text = delimited(cells_of(rows), source.choice(",;\t|: "), newline)
+    newline = source.choice(
+        ("\n", "\r\n", "\r", *("\n", "\r\n", "\r") * 3, "\n\r", "\x0b", "\x0c", "\u2028", "\x85")
+    )
+    text = delimited(cells_of(rows), source.choice(",,,;;;\t\t|: "), newline)
     if source.random() < 0.3:
         text = (
             f"sep={source.choice((',', ';', '|', 'a', ' ', chr(34), chr(13), chr(0), '.', '5', 'é'))}\n"
@@ -73,7 +81,7 @@ def delimiters(source: random.Random, folder: Path) -> Hostile:
     return _write(folder, text.encode("utf-8"), source)
 
 
-@fault("damaged bytes of text")
+@fault("damaged bytes of text", reading=True)
 def damaged(source: random.Random, folder: Path) -> Hostile:
     """Bytes changed, put in or taken out, NUL bytes among them."""
     content = bytearray(delimited(cells_of(honest(source, 2))).encode("utf-8"))
@@ -85,7 +93,7 @@ def damaged(source: random.Random, folder: Path) -> Hostile:
     return _write(folder, bytes(content), source)
 
 
-@fault("headings")
+@fault("headings", reading=True)
 def headings(source: random.Random, folder: Path) -> Hostile:
     """Headings that stand twice, are blank, misspelt, hostile, too many groups, or in another case."""
     rows = honest(source, 1)
@@ -127,7 +135,7 @@ def headings(source: random.Random, folder: Path) -> Hostile:
     return Hostile(str(folder / "sheet.csv"), READ_OR_NOT)
 
 
-@fault("rows of uneven length")
+@fault("rows of uneven length", reading=True)
 def ragged(source: random.Random, folder: Path) -> Hostile:
     """Rows with more cells than headings or fewer, blank lines, headings far down, no rows, no headings."""
     cells = cells_of(honest(source, 2))
@@ -143,12 +151,12 @@ def ragged(source: random.Random, folder: Path) -> Hostile:
                 ["\u200b"],
             )
         )
-    cells = [[]] * source.choice((0, 0, 1, 2000)) + cells[: source.randint(0, 3)]
+    cells = [[]] * source.choice((0, 0, 0, 0, 1, 2, 2000)) + cells[: source.choice((0, 1, 2, 3, 3, 3, 3, 3))]
     (folder / "sheet.csv").write_text(delimited(cells), encoding="utf-8", newline="")
     return Hostile(str(folder / "sheet.csv"), READ_OR_NOT)
 
 
-@fault("wide, long and large text")
+@fault("wide, long and large text", every=20, reading=True)
 def large(source: random.Random, folder: Path) -> Hostile:
     """Hundreds of columns nobody knows, cells of 100,000 letters, thousands of blank rows."""
     rows = honest(source, 1)
@@ -172,7 +180,7 @@ def large(source: random.Random, folder: Path) -> Hostile:
     return Hostile(str(folder / "sheet.csv"), READ_OR_NOT)
 
 
-@fault("no text at all")
+@fault("no text at all", every=8)
 def nonsense(source: random.Random, folder: Path) -> Hostile:
     """Random bytes, nothing, or only marks."""
     content = source.choice(
@@ -194,3 +202,36 @@ def nonsense(source: random.Random, folder: Path) -> Hostile:
         )
     )
     return _write(folder, content, source)
+
+
+@fault("parquet files", reading=True)
+def parquet(source: random.Random, folder: Path) -> Hostile:
+    """Columns of every type, nested and repeated ones too, headings that are odd, bytes changed or cut off."""
+    cells = cells_of(honest(source, 2))
+    columns: list[pa.Array] = [pa.array(list(column)) for column in zip(*cells[1:], strict=True)]
+    names = list(cells[0])
+    for _ in range(source.randint(0, 3)):
+        at = source.randrange(len(columns))
+        columns[at] = source.choice(
+            (
+                *(pa.array([4.31, None]), pa.array([1, 2]), pa.array([True, None]), pa.array([None, None])),
+                *(pa.array([b"4.31", b"\xff"]), pa.array([[1], []]), pa.array([{"a": 1}, None])),
+                *(pa.array([datetime.date(2024, 5, 3), None]), pa.array([datetime.datetime(2024, 5, 3)] * 2)),
+                *(
+                    pa.array([decimal.Decimal("4.310"), None]),
+                    pa.array([math.inf, math.nan]),
+                    pa.array([2**63 - 1] * 2),
+                ),
+                *(pa.array(["4.31", "4.31"]).dictionary_encode(), pa.array([source.choice(WORDS), ""])),
+            )
+        )
+        if source.random() < 0.3:
+            names[at] = source.choice((names[0], "", "row", source.choice(WORDS), source.choice(FORMULAS)))
+    path = folder / source.choice(("sheet.parquet", "sheet.parquet", "sheet.PARQUET", "sheet", "sheet.csv"))
+    pq.write_table(pa.Table.from_arrays(columns, names=names), path)
+    if source.random() < 0.5:
+        content = bytearray(path.read_bytes())
+        for _ in range(source.randint(1, 6)):
+            content[source.randrange(len(content))] = source.randrange(256)
+        path.write_bytes(content[: source.choice((len(content), source.randint(0, len(content))))])
+    return Hostile(str(path), READ_OR_NOT)

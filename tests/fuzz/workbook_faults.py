@@ -7,6 +7,8 @@ import io
 import random
 import struct
 import zipfile
+from collections.abc import Iterable
+from functools import lru_cache
 from pathlib import Path
 
 from openpyxl import Workbook
@@ -84,14 +86,36 @@ def _set(sheet: Worksheet, row: int, column: int, value: object) -> None:
 
 def book_of(source: random.Random, rows: int = 1) -> tuple[Workbook, Worksheet]:
     """A workbook of honest rows, its numbers stored as numbers."""
+    return _book(cells_of(honest(source, rows)))
+
+
+def _book(lines: Iterable[Iterable[str]]) -> tuple[Workbook, Worksheet]:
     book = Workbook()
     sheet = book.worksheets[0]
     sheet.title = "coded"
-    for at, cells in enumerate(cells_of(honest(source, rows)), 1):
+    for at, cells in enumerate(lines, 1):
         for column, text in enumerate(cells, 1):
             if text:
                 _set(sheet, at, column, _stored(text) if at > 1 else text)
     return book, sheet
+
+
+def members_of(source: random.Random, rows: int = 1) -> dict[str, bytes]:
+    """The members of the archive of such a workbook."""
+    return dict(_saved_once(tuple(map(tuple, cells_of(honest(source, rows))))))
+
+
+@lru_cache(maxsize=600)
+def _saved_once(lines: tuple[tuple[str, ...], ...]) -> dict[str, bytes]:
+    return saved(_book(lines)[0])
+
+
+def packed(members: dict[str, bytes], path: Path) -> Path:
+    """An archive of these members."""
+    with zipfile.ZipFile(path, "w", zipfile.ZIP_DEFLATED, compresslevel=1) as archive:
+        for member, content in members.items():
+            archive.writestr(member, content)
+    return path
 
 
 def saved(book: Workbook) -> dict[str, bytes]:
@@ -103,13 +127,10 @@ def saved(book: Workbook) -> dict[str, bytes]:
 
 
 def write(folder: Path, members: dict[str, bytes], name: str = "sheet.xlsx") -> Hostile:
-    with zipfile.ZipFile(folder / name, "w", zipfile.ZIP_DEFLATED, compresslevel=1) as archive:
-        for member, content in members.items():
-            archive.writestr(member, content)
-    return Hostile(str(folder / name), READ_OR_NOT)
+    return Hostile(str(packed(members, folder / name)), READ_OR_NOT)
 
 
-@fault("stored cells of every type")
+@fault("stored cells of every type", every=2)
 def typed_cells(source: random.Random, folder: Path) -> Hostile:
     """Dates, times, truth values, errors, formulas, rich text, extreme numbers, each with any number format."""
     book, sheet = book_of(source, 2)
@@ -140,11 +161,10 @@ def typed_cells(source: random.Random, folder: Path) -> Hostile:
     return write(folder, saved(book))
 
 
-@fault("raw cells of every type")
+@fault("raw cells of every type", reading=True)
 def raw_cells(source: random.Random, folder: Path) -> Hostile:
     """Cells as other programs may write them: a type that does not fit, no type, unknown references and styles."""
-    book, _ = book_of(source, 2)
-    members = saved(book)
+    members = members_of(source, 2)
     parts = members[SHEET].split(b"<c ")
     for at in source.sample(range(1, len(parts)), min(source.randint(1, 2), len(parts) - 1)):
         kind = source.choice((*["n"] * 6, *["str"] * 3, "b", "e", "d", "s", "inlineStr", "z", ""))
@@ -159,12 +179,10 @@ def raw_cells(source: random.Random, folder: Path) -> Hostile:
     return write(folder, members)
 
 
-@fault("damaged bytes of a workbook")
+@fault("damaged bytes of a workbook", every=2, reading=True)
 def damaged_archive(source: random.Random, folder: Path) -> Hostile:
     """Bytes of the archive changed, a piece cut out, doubled or put before it."""
-    book, _ = book_of(source)
-    path = folder / "sheet.xlsx"
-    book.save(path)
+    path = packed(members_of(source), folder / "sheet.xlsx")
     content = bytearray(path.read_bytes())
     for _ in range(source.randint(1, 8)):
         at = source.randrange(4, len(content))
@@ -182,11 +200,10 @@ def damaged_archive(source: random.Random, folder: Path) -> Hostile:
     return Hostile(str(path), READ_OR_NOT)
 
 
-@fault("zip structure")
+@fault("zip structure", reading=True)
 def zip_structure(source: random.Random, folder: Path) -> Hostile:
     """Members left out, doubled, renamed, exchanged, encrypted, falsely sized, packed otherwise, outside the folder."""
-    book, _ = book_of(source)
-    members = saved(book)
+    members = members_of(source)
     path = folder / "sheet.xlsx"
     packing = source.choice((zipfile.ZIP_STORED, zipfile.ZIP_DEFLATED, zipfile.ZIP_BZIP2, zipfile.ZIP_LZMA))
     names = list(members)
@@ -217,11 +234,10 @@ def zip_structure(source: random.Random, folder: Path) -> Hostile:
     return Hostile(str(path), READ_OR_NOT)
 
 
-@fault("damaged XML of a workbook")
+@fault("damaged XML of a workbook", reading=True)
 def damaged_xml(source: random.Random, folder: Path) -> Hostile:
     """Bytes changed inside the archive's own files, which are whole otherwise."""
-    book, _ = book_of(source)
-    members = saved(book)
+    members = members_of(source)
     for _ in range(source.randint(1, 2)):
         name = source.choice((SHEET, SHEET, *sorted(members)))
         content = bytearray(members[name])
@@ -234,7 +250,7 @@ def damaged_xml(source: random.Random, folder: Path) -> Hostile:
     return write(folder, members)
 
 
-@fault("merged, hidden, linked, macros")
+@fault("merged, hidden, linked, macros", reading=True)
 def furniture(source: random.Random, folder: Path) -> Hostile:
     """What else a workbook carries: hidden sheets and rows, merged cells, comments, links, macros, any titles."""
     book, sheet = book_of(source, 2)
@@ -260,20 +276,51 @@ def furniture(source: random.Random, folder: Path) -> Hostile:
         sheet["F2"].hyperlink = "file:///etc/passwd"
     members = saved(book)
     if source.random() < 0.4:
-        members["xl/externalLinks/externalLink1.xml"] = (
-            b'<externalLink xmlns="http://schemas.openxmlformats.org/spreadsheetml/2006/main"/>'
-        )
-        members["xl/workbook.xml"] = members["xl/workbook.xml"].replace(
-            b"</sheets>",
-            b'</sheets><externalReferences><externalReference r:id="rId1"/></externalReferences>',
-            1,
-        )
+        _link(members)
     if source.random() < 0.4:
         members["xl/vbaProject.bin"] = b"\xd0\xcf\x11\xe0 not to be run"
     return write(folder, members, source.choice(("sheet.xlsx", "sheet.xlsm", "sheet.XLSX", "sheet")))
 
 
-@fault("not the file it says")
+def _link(members: dict[str, bytes]) -> None:
+    """A link to another workbook, as Office Open XML wants it: a part, its relationship, its type, its mention."""
+    main = b"http://schemas.openxmlformats.org/spreadsheetml/2006/main"
+    kinds = b"http://schemas.openxmlformats.org/officeDocument/2006/relationships"
+    members["xl/externalLinks/externalLink1.xml"] = (
+        b'<externalLink xmlns="%b" xmlns:r="%b"><externalBook r:id="rId1"><sheetNames><sheetName val="x"/>'
+        b"</sheetNames></externalBook></externalLink>" % (main, kinds)
+    )
+    members["xl/externalLinks/_rels/externalLink1.xml.rels"] = (
+        b'<Relationships xmlns="http://schemas.openxmlformats.org/package/2006/relationships"><Relationship Id="rId1" '
+        b'Type="%b/externalLinkPath" Target="http://example.invalid/x.xlsx" TargetMode="External"/></Relationships>'
+        % kinds
+    )
+    for name, before, added in (
+        (
+            "[Content_Types].xml",
+            b"</Types>",
+            b'<Override PartName="/xl/externalLinks/externalLink1.xml" ContentType="application/vnd.'
+            b'openxmlformats-officedocument.spreadsheetml.externalLink+xml"/>',
+        ),
+        (
+            "xl/_rels/workbook.xml.rels",
+            b"</Relationships>",
+            b'<Relationship Id="rId99" Type="%b/externalLink" Target="externalLinks/externalLink1.xml"/>'
+            % kinds,
+        ),
+        (
+            "xl/workbook.xml",
+            b"<definedNames",
+            b'<externalReferences><externalReference xmlns:r="%b" r:id="rId99"/></externalReferences>'
+            % kinds,
+        ),
+    ):
+        at = before if before in members[name] else b"<calcPr"
+        assert at in members[name]
+        members[name] = members[name].replace(at, added + at, 1)
+
+
+@fault("not the file it says", every=4)
 def wrong_file(source: random.Random, folder: Path) -> Hostile:
     """A workbook called csv, text called xlsx, an old workbook, a folder, no file, a link to itself."""
     kind = source.randrange(9)
@@ -283,8 +330,7 @@ def wrong_file(source: random.Random, folder: Path) -> Hostile:
         Path(plain).rename(target)
         return Hostile(str(target), READ_OR_NOT)
     if kind == 1:
-        book, _ = book_of(source)
-        book.save(folder / "book.xlsx")
+        packed(members_of(source), folder / "book.xlsx")
         target = folder / source.choice(("book.csv", "book", "book.txt", "book.zip"))
         (folder / "book.xlsx").rename(target)
         return Hostile(str(target), READ_OR_NOT)
@@ -301,8 +347,7 @@ def wrong_file(source: random.Random, folder: Path) -> Hostile:
         name = source.choice(names)
         return Hostile(str(folder / name), READ_OR_NOT)
     if kind == 6:
-        book, _ = book_of(source)
-        book.save(folder / "book.xlsx")
+        packed(members_of(source), folder / "book.xlsx")
         return Hostile("-", READ_OR_NOT, stdin=(folder / "book.xlsx").read_bytes())
     if kind == 7:
         return Hostile(source.choice(("/dev/null", "/dev/zero", "/dev/full")), READ_OR_NOT)

@@ -8,6 +8,7 @@ from dataclasses import replace
 import numpy as np
 import pandas as pd
 import pytest
+from scipy import stats
 
 from extractor.api import read
 from extractor.codebook import Codebook
@@ -92,6 +93,18 @@ def test_the_interval_holds_every_value_between_its_ends() -> None:
             slack = 0.002 * lines["variance_high"]
             assert (lines["variance_low"] - slack <= again["variance"]).all()
             assert (again["variance"] <= lines["variance_high"] + slack).all()
+
+
+def test_the_level_of_printed_limits_is_moved_between_the_estimates_at_its_ends() -> None:
+    """SD = sqrt(n) (U - L) / (2 t(n - 1)) (Cochrane Handbook, ch. 6), so that d rises with the level of the limits."""
+    row = {"design": "two-group", "n_1": "20", "n_2": "20", "mean_1": "10.0", "mean_2": "8.0"}
+    row |= {"ci_low_1": "9.0", "ci_high_1": "11.0", "ci_low_2": "7.0", "ci_high_2": "9.0"}
+    book = Codebook(assumptions={"confidence_level": Assumption(0.95, "protocol", 0.9, 0.99)})
+    conversion = convert_evidence(read(pd.DataFrame([row]), book).evidence, "cohens_d")
+    line = sensitivity(conversion).effects.iloc[0]
+    ends = [2.0 * 2 * stats.t.ppf((1 + level) / 2, 19) / (math.sqrt(20) * 2.0) for level in (0.9, 0.95, 0.99)]
+    found = [line["estimate_low"], line["estimate"], line["estimate_high"]]
+    assert found == pytest.approx(ends, rel=1e-9)
 
 
 def test_tails_are_moved_over_whole_numbers_only() -> None:

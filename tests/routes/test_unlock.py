@@ -8,7 +8,7 @@ import pytest
 
 from extractor.api import read
 from extractor.asking.batch import unlocking
-from extractor.asking.questions import Aim, Offer, questions
+from extractor.asking.questions import Aim, Offer, burden, questions
 from extractor.asking.typical import width_left
 from extractor.codebook import Codebook
 from extractor.quantities import METRICS, VOCABULARY
@@ -16,6 +16,7 @@ from extractor.routes.conversion import Conversion, convert_evidence
 from extractor.routes.planner import Start
 from extractor.routes.unlock import (
     ASKABLE,
+    BURDEN,
     EASE,
     Ease,
     any_point,
@@ -25,7 +26,7 @@ from extractor.routes.unlock import (
     smallest_sets,
     unlocking_sets,
 )
-from tests.evidence.unlocking import tried
+from tests.evidence.unlocking import tried, with_precision
 from tests.simulated_review import ASSUMING, review
 
 DEFAULTS = frozenset({"tails", "confidence_level"})
@@ -59,6 +60,14 @@ def test_every_offer_does_what_it_promises_and_no_part_of_it_does(metric: str, s
     assert broken.empty, broken.to_string()
 
 
+@pytest.mark.parametrize("metric", ["hedges_g", "omega_squared"])
+def test_what_a_letter_asks_for_brings_estimate_and_variance(metric: str) -> None:
+    effects = with_precision(22, 80, metric)
+    assert len(effects) > 5
+    assert (effects["status"] == "converted").all()
+    assert np.isfinite(effects["variance"]).all()
+
+
 def test_the_promise_holds_for_bounds_and_assumptions() -> None:
     """Rows of the kinds that a simulated review has few of."""
     rows = [
@@ -80,7 +89,7 @@ def test_the_promise_holds_for_bounds_and_assumptions() -> None:
     )
     assert freed[0] == {"sd_difference"}
     assert {"correlation"} in freed
-    assert asked(offers("omega_squared", **rows[2]))[0] == {"n", "mean", "sd"}
+    assert asked(offers("omega_squared", **rows[2]))[0] == {"f_value"}
 
 
 # ---- order -----------------------------------------------------------------------------------------------
@@ -88,10 +97,23 @@ def test_the_promise_holds_for_bounds_and_assumptions() -> None:
 
 def test_sizes_means_and_sds_come_before_tests_and_tests_before_raw_scores() -> None:
     assert EASE["n"] == EASE["mean"] == EASE["sd"] < EASE["t_value"] < EASE["ss_error"] < EASE["correlation"]
+    costs = BURDEN["n"], BURDEN["t_value"], BURDEN["ss_error"], BURDEN["correlation"]
+    assert list(costs) == sorted(set(costs))
     sheet, _ = review(34, 60)
     for some in questions(convert_evidence(read(sheet, ASSUMING).evidence, "cohens_d")):
-        eases = [offer.ease for offer in some.offers]
-        assert eases == sorted(eases)
+        groups = some.block.groups or (3 if some.block.design == "one-way" else 2)
+        found = [burden(offer.asked, groups) for offer in some.offers]
+        assert found == sorted(found)
+
+
+def test_short_questions_come_before_long_ones() -> None:
+    """Two SDs rather than an F, but one F rather than the nine summary statistics of three groups."""
+    two = offers("omega_squared", design="two-group", n_1="20", n_2="22", mean_1="5.1", mean_2="4.2")
+    assert asked(two)[:2] == [{"sd"}, {"f_value"}]
+    three = asked(offers("omega_squared", design="one-way", df_effect="2", df_error="57"))
+    assert three[0] == {"f_value"}
+    # whoever has no F is shown a way without it
+    assert any("f_value" not in some for some in three)
 
 
 def test_an_omnibus_f_asks_for_the_contrast_itself() -> None:
@@ -218,7 +240,8 @@ def test_the_batch_view_counts_the_rows_that_one_question_serves() -> None:
     both = batch[batch["question"] == "n of each group; SD of each group"].iloc[0]
     assert both["row_numbers"] == [2, 3, 4]
     assert (both["opens"], both["studies"]) == (3, 3)
-    assert batch["opens"].is_monotonic_decreasing
+    # of questions that do the same, only the one that costs least is shown, and nothing that does less for more
+    assert len(batch) == 2
 
 
 def test_rows_show_what_an_answer_would_narrow() -> None:

@@ -1,0 +1,109 @@
+"""Inputs that once ended in a traceback or without end, each as small as it can be."""
+
+from __future__ import annotations
+
+import datetime
+from pathlib import Path
+
+import openpyxl
+import pandas as pd
+import pytest
+from click.testing import CliRunner
+
+from extractor.api import convert
+from extractor.commands.main import cli
+from tests.fuzz.faults import as_csv
+from tests.fuzz.judging import time_limit
+
+MANY = [
+    ["study", "design", "term", "f_value", "df_effect", "df_error"],
+    ["A", "factorial", "t", "2", "1000000", "20"],
+]
+PLAIN = [["study", "design", "f_value", "df_effect", "df_error"], ["A", "one-way", "4.31", "2", "57"]]
+
+
+def run(*words: object) -> tuple[int, str]:
+    found = CliRunner().invoke(cli, [str(word) for word in words])
+    assert found.exception is None or isinstance(found.exception, SystemExit)
+    return found.exit_code, found.output
+
+
+def test_a_million_groups_to_ask_for(tmp_path: Path) -> None:
+    with time_limit(5):
+        assert (
+            run("unlock", as_csv(tmp_path, MANY), "--to", "hedges_g", "--letters", tmp_path / "letters")[0]
+            == 0
+        )
+
+
+def test_weights_beyond_doubles() -> None:
+    cells = {"design": "one-way", "contrast": "1e400, -1e400, 0"}
+    for group in (1, 2, 3):
+        cells |= {f"n_{group}": "20", f"mean_{group}": f"{group}.1", f"sd_{group}": "1.5"}
+    found = convert(pd.DataFrame([cells], dtype=object), to="hedges_g")
+    assert found.effects["status"].tolist() == ["blocked"]
+    assert "a weight that is no number" in found.effects["reason"][0]
+
+
+def test_half_a_surrogate_pair() -> None:
+    cells = {
+        "study": "Site \ud800",
+        "design": "one-way",
+        "f_value": "4.31",
+        "df_effect": "2",
+        "df_error": "57",
+    }
+    frame = pd.DataFrame({name: pd.Series([cell], dtype=object) for name, cell in cells.items()})
+    assert convert(frame, to="omega_squared").effects["study"].tolist() == ["Site ?"]
+
+
+def test_a_bound_on_the_mean_of_a_part() -> None:
+    rows = pd.DataFrame([{"analysis": "A1", "design": "one-way"}], dtype=object)
+    groups = pd.DataFrame(
+        {
+            "analysis": ["A1"] * 3,
+            "group": ["a", "a", "b"],
+            "n": ["20", "22", "21"],
+            "mean": ["> 5", "4.1", "5"],
+        }
+        | {"sd": ["1.1", "1.2", "1.3"]}
+    )
+    assert convert(rows, to="omega_squared", groups=groups).effects["status"].tolist() != ["converted"]
+
+
+def test_a_name_longer_than_any_file(tmp_path: Path) -> None:
+    status, said = run("convert", tmp_path / ("x" * 400 + ".csv"), "--to", "r", "--out", tmp_path / "out")
+    assert status == 4
+    assert "cannot be opened" in said
+
+
+def test_a_date_no_calendar_has(tmp_path: Path) -> None:
+    book = openpyxl.Workbook()
+    for row in PLAIN:
+        book.worksheets[0].append(row)
+    book.worksheets[0].append(["B", "one-way", 1e308, 2, 57])
+    book.worksheets[0]["C3"].number_format = "yyyy-mm-dd"
+    book.worksheets[0]["F1"] = datetime.date(2024, 5, 3)
+    book.save(tmp_path / "sheet.xlsx")
+    words = ("--to", "omega_squared", "--out", tmp_path / "out", "--format", "xlsx")
+    assert run("convert", tmp_path / "sheet.xlsx", *words)[0] == 0
+
+
+@pytest.mark.parametrize(
+    ("name", "content"),
+    [
+        ("derivations.json", "[" * 100_000),
+        ("derivations.json", '{"rows": [1], "relations": {}}'),
+        ("effects.csv", None),
+    ],
+)
+def test_damaged_folders_of_runs(tmp_path: Path, name: str, content: str | None) -> None:
+    out = tmp_path / "out"
+    assert run("convert", as_csv(tmp_path, PLAIN), "--to", "omega_squared", "--out", out)[0] == 0
+    path = out / name
+    path.write_text(
+        path.read_text("utf-8").replace("0.", "x.") if content is None else content, encoding="utf-8"
+    )
+    status, said = run("changes", out, out)
+    assert status == 4
+    assert name in said and "damaged" in said
