@@ -143,7 +143,7 @@ def command(
         running.check(wanted)
         return streaming.write(coded, out, request, workers, fail_on, force=force)
     result = running.convert(coded, wanted, vary)
-    ranged = has_ranges(result.conversion.evidence.table)
+    ranged = has_ranges(result.conversion.evidence.table.assumptions)
     if figure is not None:
         _draw(result.effects, figure, wanted.level, figure_by, force)
     said = (*cautions.EFFECTS, *(cautions.FINDINGS if result.audit.findings else ()))

@@ -19,6 +19,10 @@ if TYPE_CHECKING:
 
 LARGE = 1 << 25
 """Bytes of a csv or parquet file from which it is worked through in blocks unasked."""
+NOT_VARIED = (
+    "assumptions were not moved over the ranges of the codebook: the sheet was worked through in blocks; "
+    "name a range with --vary to have all rows worked on at once"
+)
 
 
 def in_blocks(coded: Coded, out: Path | None, workers: int | None, whole: Sequence[str]) -> bool:
@@ -57,6 +61,7 @@ def write(
     from extractor.blockwise import NOT_COMPARED, looked_through, run, sheet_of
     from extractor.output import terminal
     from extractor.output.appended import Auditing, Converting, write_blocks
+    from extractor.routes.sensitivity import has_ranges
 
     converting = request.metric is not None
     sheet = sheet_of(coded.sheet, coded.codebook, coded.groups, coded.decisions)
@@ -68,7 +73,8 @@ def write(
     with running.stage(doing, rows, counts=True) as tick:
         texts = run(sheet, blocks, work, workers or 1)
         tally, notes = write_blocks(out, texts, request, force=force, tick=tick)
-    running.mention([*notes, NOT_COMPARED])
+    unvaried = [NOT_VARIED] if converting and has_ranges(sheet.codebook.assumptions) else []
+    running.mention([*notes, NOT_COMPARED, *unvaried])
     click.echo(f"written to {out}", err=True)
     page = terminal.console()
     for line in tally.lines():

@@ -108,9 +108,9 @@ def with_ranges(table: ReportedTable, varied: Mapping[str, Assumption]) -> Repor
     return replace(table, assumptions=taken)
 
 
-def has_ranges(table: ReportedTable) -> bool:
+def has_ranges(assumptions: Mapping[str, Assumption]) -> bool:
     """Whether any assumption has a range to be moved over."""
-    return any(taken.low < taken.high for taken in table.assumptions.values())
+    return any(taken.low < taken.high for taken in assumptions.values())
 
 
 def sensitivity(conversion: Conversion, *, method: str | None = None, level: float = 0.95) -> Sensitivity:

@@ -55,3 +55,15 @@ def test_a_range_from_an_option_or_a_codebook(tmp_path: Path, way: str) -> None:
 def test_without_ranges_nothing_is_written_about_them(tmp_path: Path) -> None:
     converted(tmp_path)
     assert not any((tmp_path / "out" / name).exists() for name in TABLES)
+
+
+def test_in_blocks_ranges_of_a_codebook_are_said_to_be_left_alone(tmp_path: Path) -> None:
+    book = tmp_path / "book.toml"
+    book.write_text(
+        '[assume.confidence_level]\nvalue = 0.95\nrange = [0.9, 0.99]\nby = "protocol"\n', encoding="utf-8"
+    )
+    words = ["convert", str(DEMO), "--to", "hedges_g", "--out", str(tmp_path / "out"), "--workers", "1"]
+    done = CliRunner().invoke(cli, [*words, "--codebook", str(book)], catch_exceptions=False)
+    assert done.exit_code == 0
+    assert "not moved over the ranges of the codebook" in " ".join(done.stderr.split())
+    assert "ranges of the codebook" not in CliRunner().invoke(cli, [*words, "--force"]).stderr
