@@ -17,8 +17,8 @@ from extractor.codebook import Codebook
 from extractor.labels import plain_label
 from extractor.output.columns import whole_counts
 from extractor.routes.conversion import check_method, check_metric, check_standardizer, convert_evidence
+from extractor.source.frame import from_frame
 from extractor.source.grid import typed_row
-from extractor.source.reader import from_frame
 
 if TYPE_CHECKING:
     from dask.dataframe import DataFrame

@@ -9,6 +9,7 @@ from typing import TYPE_CHECKING, Any
 
 from extractor.errors import UnreadableInput
 from extractor.printed.reading import quoted
+from extractor.source.frame import from_frame
 from extractor.source.grid import Grid, NoRows
 
 if TYPE_CHECKING:
@@ -58,8 +59,6 @@ def whole(path: Path) -> Iterator[None]:
 
 def cells(table: pyarrow.Table, path: Path, first: int = 2) -> Grid | None:
     """The cells of some rows, the first of which counts as row ``first``; None where all are blank."""
-    from extractor.source.reader import from_frame
-
     with whole(path):
         frame = table.to_pandas()
     return from_frame(frame, quoted(path, 200), first)
