@@ -52,7 +52,7 @@ _SECTIONS = (
 _MEANINGS = {
     Severity.IMPOSSIBLE: "no data could give this value under the coded design",
     Severity.INCONSISTENT: "printed values that cannot hold together",
-    Severity.DOUBTFUL: "values that disagree by no more than careless rounding",
+    Severity.DOUBTFUL: "worth another look at the page: unusual, careless rounding, or another design",
     Severity.NOTE: "something to know",
 }
 
