@@ -142,7 +142,8 @@ class _Models:
         for values, outward in ((each.value, 0.0), (each.low, -1e-12), (each.high, 1e-12)):
             mine = np.where(own > 0, values, 0.0)
             total = self._total(values, rows)
-            rest = np.maximum(total - mine, 0.0)
+            # a bound without an upper end leaves the sum of the others without one, too
+            rest = np.maximum(np.subtract(total, mine, where=~np.isinf(total), out=total.copy()), 0.0)
             ends.append(np.where(where, rest + outward * np.abs(total), np.nan))
         return Estimate(ends[0], np.maximum(ends[1], 0.0), ends[2])
 

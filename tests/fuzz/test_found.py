@@ -107,3 +107,18 @@ def test_damaged_folders_of_runs(tmp_path: Path, name: str, content: str | None)
     status, said = run("changes", out, out)
     assert status == 4
     assert name in said and "damaged" in said
+
+
+def test_a_bound_without_an_upper_end_among_the_terms_of_a_model() -> None:
+    rows = [
+        {
+            "analysis": "1",
+            "design": "factorial",
+            "term": term,
+            "f_value": f,
+            "df_effect": "1",
+            "df_error": "36",
+        }
+        for term, f in (("a", "> 4"), ("b", "2.5"), ("a:b", "1.2"))
+    ]
+    assert convert(pd.DataFrame(rows), to="eta_squared").effects["status"].isin(["bounded", "blocked"]).all()
