@@ -24,8 +24,10 @@ import subprocess
 import sys
 import tempfile
 import time
+from collections.abc import Callable
 from dataclasses import dataclass
 from pathlib import Path
+from typing import TypeVar
 
 import numpy as np
 from scipy import optimize, special, stats
@@ -38,6 +40,8 @@ from extractor.routes.conversion import Conversion, convert_evidence
 from extractor.sheet import read_table
 from extractor.table import FloatArray
 from tests.evidence import mixed
+
+Made = TypeVar("Made")
 
 METRIC = "partial_eta_squared"
 _STARTS = 7
@@ -60,10 +64,10 @@ class Timed:
     audit_floor: float
 
 
-def seconds(work: object) -> tuple[float, object]:
+def seconds(work: Callable[[], Made]) -> tuple[float, Made]:
     """Processor seconds of a call, and what it gave."""
     started = time.process_time()
-    made = work()  # type: ignore[operator]
+    made = work()
     return time.process_time() - started, made
 
 
@@ -185,11 +189,9 @@ def measure(rows: int, folder: Path, workers: int, sample: int) -> Timed:
         path.unlink()
         return Timed(rows, *[math.nan] * 5, whole, peak, *[math.nan] * 3)
     read, table = seconds(lambda: read_table(path, default_codebook()))
-    gathering, evidence = seconds(lambda: gather(table))  # type: ignore[arg-type]
-    assert isinstance(evidence, Evidence)
+    gathering, evidence = seconds(lambda: gather(table))
     first, _ = seconds(lambda: convert_evidence(evidence, METRIC))
     again, conversion = seconds(lambda: convert_evidence(evidence, METRIC))
-    assert isinstance(conversion, Conversion)
     audit, _ = seconds(lambda: audit_evidence(evidence, conversion))
     tests = tests_of(conversion)
     loop, floor = loop_seconds(*tests, sample), floor_seconds(*tests)

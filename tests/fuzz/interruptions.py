@@ -99,6 +99,7 @@ def _started(words: list[str], prepare: Callable[[], object] = lambda: None) -> 
         os.dup2(write, 1)
         os.dup2(write, 2)
         os.close(write)
+        # open until the process ends, which a with block would cut short
         sys.stdout, sys.stderr = (open(at, "w", encoding="utf-8", closefd=False) for at in (1, 2))  # noqa: SIM115
         prepare()
         cli.main(words)

@@ -159,7 +159,7 @@ def _function(case: Case) -> Judgement:
         return lambda _: Verdict(_outcome(status))
     except ExtractorError as error:
         status, message = error.exit_code, str(error)
-    except Exception as error:
+    except Exception as error:  # whatever it is, it is what the judge looks for
         fallen = _fallen(error)
         return lambda _: fallen
 

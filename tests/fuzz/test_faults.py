@@ -59,6 +59,7 @@ def _spoilt(monkeypatch: pytest.MonkeyPatch, name: str, text: str) -> None:
     invoke = CliRunner.invoke
 
     def spoiling(*given: object, **named: object) -> object:
+        # handed on as they came; their types are those of the wrapped function
         found = invoke(*given, **named)  # type: ignore[arg-type]
         words = given[2]
         assert isinstance(words, list)

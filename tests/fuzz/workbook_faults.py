@@ -78,6 +78,7 @@ def _stored(text: str) -> object:
 
 def _set(sheet: Worksheet, row: int, column: int, value: object) -> None:
     try:
+        # the point is to try what the library does not take
         sheet.cell(row, column).value = value  # type: ignore[assignment]
     except (ValueError, IllegalCharacterError):
         # what a workbook cannot hold is no fault of the reader
