@@ -11,6 +11,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from extractor.catalogue.refusals import why_no_route, why_no_value
+from extractor.codebook import EFFECT_COLUMNS
 from extractor.errors import UsageError
 from extractor.evidence import Block, Evidence
 from extractor.quantities import METRICS, STANDARDIZERS, VOCABULARY, Role, close_matches, is_signed
@@ -25,29 +26,6 @@ if TYPE_CHECKING:
 
 Column = NDArray[np.generic] | ObjectArray
 
-COLUMNS = [
-    "row",
-    "study",
-    "outcome",
-    "effect",
-    "metric",
-    "estimate",
-    "variance",
-    "standard_error",
-    "ci_low",
-    "ci_high",
-    "n_total",
-    "grade",
-    "route",
-    "assumptions",
-    "standardizer",
-    "estimate_low",
-    "estimate_high",
-    "variance_method",
-    "status",
-    "reason",
-    "findings",
-]
 _SCOPED = frozenset(
     {"contrast_weight", "direction", "k_groups", "tails", "confidence_level", "one_factor", "only_factor"}
 )
@@ -271,7 +249,7 @@ class _Effects:
             **self.words,
             "findings": np.full(table.rows, "", dtype=object),
         }
-        ordered = {name: columns[name] for name in COLUMNS}
+        ordered = {name: columns[name] for name in EFFECT_COLUMNS}
         for heading, words in table.carried.items():
             while heading in ordered:
                 heading += " (sheet)"

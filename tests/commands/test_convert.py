@@ -20,9 +20,9 @@ import pytest
 import extractor
 from extractor import cautions
 from extractor.api import convert
+from extractor.codebook import EFFECT_COLUMNS
 from extractor.output import package
 from extractor.output.columns import EFFECTS, FINDINGS
-from extractor.routes.conversion import COLUMNS
 
 from .conftest import Run, environment
 
@@ -155,7 +155,7 @@ def test_formulas_are_neutralised_in_csv_unless_asked(run: Run) -> None:
 def test_columns_are_described_one_by_one() -> None:
     from extractor.findings import COLUMNS as FINDING_COLUMNS
 
-    assert list(EFFECTS) == COLUMNS
+    assert tuple(EFFECTS) == EFFECT_COLUMNS
     assert list(FINDINGS) == FINDING_COLUMNS
 
 

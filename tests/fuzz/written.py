@@ -14,7 +14,7 @@ from pathlib import Path
 import openpyxl
 import pandas as pd
 
-from extractor.routes.conversion import COLUMNS
+from extractor.codebook import EFFECT_COLUMNS
 
 _FORMULA = re.compile(r"[\s\x00-\x20\u00a0\u200b\ufeff]*[=+\-@＝＋－＠]")
 _NUMBER = re.compile(r"[+-]?(?:[0-9]+(?:\.[0-9]*)?|\.[0-9]+)(?:[eE][+-]?[0-9]+)?")
@@ -71,7 +71,7 @@ def _breach_of_csv(text: str, rows: int | None) -> str:
     head = lines[0]
     if len(set(head)) != len(head):
         return "two columns of one name"
-    if not set(COLUMNS) <= set(head):
+    if not set(EFFECT_COLUMNS) <= set(head):
         return ""
     for line in lines[1:]:
         breach = breach_of_effect(dict(zip(head, line, strict=True)))
