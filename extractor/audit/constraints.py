@@ -75,7 +75,7 @@ class Constraints:
             domain.low[cell.quantity], domain.high[cell.quantity] = low, high
             return
         for ends, new in ((domain.low, low), (domain.high, high)):
-            ends[cell.quantity] = ends[cell.quantity].copy()
+            ends[cell.quantity] = ends[cell.quantity].copy("K")
             ends[cell.quantity][:, cell.column] = new
 
     @property
@@ -103,7 +103,7 @@ def constraints_of(block: Block, table: ReportedTable) -> Constraints:
             continue
         if name not in block.origins and name not in _FACTS:
             continue
-        low[name], high[name] = estimate.low, estimate.high
+        low[name], high[name] = np.asfortranarray(estimate.low), np.asfortranarray(estimate.high)
         for column, variable in enumerate(block.origins.get(name, ())):
             numbers = table.numbers.get(variable)
             scalar = VOCABULARY[name].shape.value == "scalar"

@@ -37,7 +37,10 @@ Number = TypeVar("Number", np.float64, np.int32)
 
 @dataclass(slots=True)
 class Domain:
-    """Intervals of the quantities of a block; arrays of shape (rows,) or (rows, groups)."""
+    """Intervals of the quantities of a block; arrays of shape (rows,) or (rows, groups).
+
+    The numbers of one group lie side by side in memory (Fortran order), which makes sums over groups many times faster.
+    """
 
     low: dict[str, FloatArray]
     high: dict[str, FloatArray]
@@ -48,7 +51,10 @@ class Domain:
 
     def take(self, rows: NDArray[np.intp] | BoolArray | slice) -> Domain:
         """The rows named, in that order."""
-        return Domain({q: a[rows] for q, a in self.low.items()}, {q: a[rows] for q, a in self.high.items()})
+        return Domain(
+            {q: _at(ends, rows) for q, ends in self.low.items()},
+            {q: _at(ends, rows) for q, ends in self.high.items()},
+        )
 
     def pair(self, quantity: str) -> Interval:
         """(low, high)."""
@@ -172,7 +178,7 @@ class _Work:
         whole = len(rows) >= _WORTH_CHOOSING * self.rows
 
         def chosen(values: NDArray[Number]) -> NDArray[Number]:
-            return values if whole else values[rows]
+            return values if whole else _at(values, rows)
 
         inputs = {n: (chosen(domain.low[n]), chosen(domain.high[n])) for n in relation.needs}
         known = gives in domain.low
@@ -200,13 +206,12 @@ class _Work:
         if not known:
             shape = (self.rows, *low.shape[1:])
             domain.low[gives], domain.high[gives] = (
-                np.full(shape, quantity.low),
-                np.full(shape, quantity.high),
+                np.full(shape, end, order="F") for end in (quantity.low, quantity.high)
             )
             self.changed[gives] = np.zeros(self.rows, dtype=np.int32)
             self.own.add(gives)
         elif gives not in self.own:
-            domain.low[gives], domain.high[gives] = domain.low[gives].copy(), domain.high[gives].copy()
+            domain.low[gives], domain.high[gives] = (end.copy("K") for end in domain.pair(gives))
             self.own.add(gives)
         at = np.flatnonzero(where)
         into = at if whole else rows[at]
@@ -245,11 +250,16 @@ def _spread(narrowed: Domain, domain: Domain, left: NDArray[np.intp], rows: int)
             known = into.get(quantity)
             if known is None:
                 support = getattr(VOCABULARY[quantity], side)
-                whole = np.full((rows, *values.shape[1:]), support)
+                whole = np.full((rows, *values.shape[1:]), support, order="F")
             else:
-                whole = known.copy()
+                whole = known.copy("K")
             whole[left] = values
             into[quantity] = whole
+
+
+def _at(values: NDArray[Number], rows: NDArray[np.intp] | BoolArray | slice) -> NDArray[Number]:
+    """Some rows; choosing from one group after the other keeps each group's numbers side by side."""
+    return values[rows] if values.ndim == 1 else values.T[:, rows].T
 
 
 def _any(rows: BoolArray) -> BoolArray:

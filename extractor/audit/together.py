@@ -49,7 +49,7 @@ def _joined(domains: Sequence[Domain]) -> tuple[Domain, dict[str, BoolArray]]:
         known = [quantity in domain.low for domain in domains]
         for into, side, end in ((joined.low, "low", support.low), (joined.high, "high", support.high)):
             parts: list[FloatArray] = [
-                getattr(domain, side)[quantity] if there else np.full((count, *width), end)
+                getattr(domain, side)[quantity] if there else np.full((count, *width), end, order="F")
                 for domain, there, count in zip(domains, known, rows, strict=True)
             ]
             into[quantity] = np.concatenate(parts)

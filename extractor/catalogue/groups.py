@@ -31,8 +31,10 @@ def least_between(n: FloatArray, low: FloatArray, high: FloatArray) -> FloatArra
     All arrays have shape (rows, groups); the result has shape (rows,). The sum of squares is the least over a centre c
     of Σ n·(M - c)², so the means are clamped to a common centre and the centre solves a piecewise linear equation.
     """
-    # the centre lies between the smallest upper end and the largest lower end, else the means can all be equal
     left, right = high.min(axis=-1), low.max(axis=-1)
+    if n.shape[1] <= 2:
+        return np.asarray(np.where(left < right, n.prod(axis=-1) / n.sum(axis=-1) * (right - left) ** 2, 0.0))
+    # the centre lies between the smallest upper end and the largest lower end, else the means can all be equal
     apart = left < right
     left, right = np.where(apart, left, 0.0), np.where(apart, right, 0.0)
     low, high = np.where(apart[:, None], low, 0.0), np.where(apart[:, None], high, 0.0)

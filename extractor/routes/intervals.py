@@ -15,6 +15,8 @@ from extractor.catalogue.relation import FloatArray, Interval, Relation
 from extractor.quantities import VOCABULARY
 
 _TINY = 1e-300
+_PAIRWISE = 8
+"""From so many numbers on, numpy sums those that lie side by side in another order than those of several rows."""
 
 
 def image(relation: Relation, inputs: dict[str, Interval], current: Interval | None = None) -> Interval:
@@ -26,6 +28,12 @@ def image(relation: Relation, inputs: dict[str, Interval], current: Interval | N
     current : (low, high) already known of the quantity given; lets an image with a hole drop one side of it.
     """
     pairs = [inputs[name] for name in relation.needs]
+    if any(low.ndim > 1 and low.shape[0] == 1 and low.shape[1] >= _PAIRWISE for low, _ in pairs):
+        # what a row gives must not depend, not even in its last bit, on whether it stands alone
+        low, high = image(
+            relation, {n: _twice(ends) for n, ends in inputs.items()}, current and _twice(current)
+        )
+        return low[:1], high[:1]
     with np.errstate(all="ignore"):
         if relation.image is not None:
             low, high = relation.image(*pairs, current) if relation.narrows else relation.image(*pairs)
@@ -40,6 +48,11 @@ def image(relation: Relation, inputs: dict[str, Interval], current: Interval | N
             low = np.where(known, low, -np.inf)
             high = np.where(known, high, np.inf)
         return _padded(relation, low, high)
+
+
+def _twice(ends: Interval) -> Interval:
+    low, high = (np.asfortranarray(np.concatenate([end, end])) for end in ends)
+    return low, high
 
 
 def _vertices(relation: Relation, inputs: dict[str, Interval]) -> Interval:
