@@ -215,7 +215,7 @@ def mark(
         for i in mine:
             severity = marked[i].severity if decision.decision == CORRECT else Severity.NOTE
             explanation = "; ".join(filter(None, (said, marked[i].explanation)))
-            marked[i] = replace(marked[i], severity=severity, explanation=explanation)
+            marked[i] = marked[i]._replace(severity=severity, explanation=explanation)
         rule, message = _NO_FINDING, ""
         if decision.decision == CORRECT:
             old, new = table.numbers[variables[0]], _reading(decision, variables[0], codebook)

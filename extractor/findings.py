@@ -4,9 +4,8 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterable
-from dataclasses import dataclass
 from enum import IntEnum
-from typing import TYPE_CHECKING
+from typing import TYPE_CHECKING, Any, NamedTuple
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -24,6 +23,7 @@ COLUMNS = [
     "message",
     "explanation",
 ]
+_TYPES: dict[str, Any] = {"row": "int64", "expected_low": float, "expected_high": float, "slack": float}
 
 
 class Severity(IntEnum):
@@ -37,11 +37,13 @@ class Severity(IntEnum):
     @property
     def word(self) -> str:
         """The severity as it is printed."""
-        return self.name.lower()
+        return _WORDS[self]
 
 
-@dataclass(frozen=True, slots=True)
-class Finding:
+_WORDS = {severity: severity.name.lower() for severity in Severity}
+
+
+class Finding(NamedTuple):
     """One finding. ``cells`` are headings with addresses, the most suspect first."""
 
     row: int
@@ -56,26 +58,15 @@ class Finding:
     expected_high: float = math.nan
     slack: float = math.nan
 
-    def record(self) -> dict[str, object]:
-        """The finding as a row of ``findings.csv``."""
-        return {
-            "row": self.row,
-            "study": self.study,
-            "severity": self.severity.word,
-            "rule": self.rule,
-            "cells": "; ".join(self.cells),
-            "printed": self.printed,
-            "expected_low": self.expected_low,
-            "expected_high": self.expected_high,
-            "slack": self.slack,
-            "message": self.message,
-            "explanation": self.explanation,
-        }
-
 
 def frame(findings: Iterable[Finding]) -> pd.DataFrame:
     """Findings as a table in sheet order, the strongest of a row first."""
     import pandas as pd
 
     ordered = sorted(findings, key=lambda f: (f.row, -f.severity, f.rule, f.cells))
-    return pd.DataFrame([f.record() for f in ordered], columns=COLUMNS)
+    columns: dict[str, list[Any]] = {name: [getattr(f, name) for f in ordered] for name in COLUMNS}
+    columns["severity"] = [severity.word for severity in columns["severity"]]
+    columns["cells"] = list(map("; ".join, columns["cells"]))
+    return pd.DataFrame(
+        {name: pd.Series(values, dtype=_TYPES.get(name, object)) for name, values in columns.items()}
+    )

@@ -16,6 +16,8 @@ from extractor.table import ObjectArray
 _BETWEEN_DIGITS = re.compile(r"(?<=\d)[\W_]+(?=\d)")
 _APART = "\x1f"
 _LETTER = re.compile(r"[^\W_]")
+_NEITHER = re.compile(rf"[^a-z0-9{_APART}]+")
+"""In plain ASCII, neither letter nor digit nor what keeps numbers apart."""
 
 
 def plain_label(text: str) -> str:
@@ -23,6 +25,9 @@ def plain_label(text: str) -> str:
 
     Numbers stay apart: 1.2 is not 12.
     """
+    if text.isascii() and _LETTER.search(text) is not None:
+        spaced = text.lower().replace(_APART, " ")
+        return _NEITHER.sub("", _BETWEEN_DIGITS.sub(_APART, spaced))
     folded = unicodedata.normalize("NFKC", tidy(text)).casefold()
     if _LETTER.search(folded) is None:
         return folded
@@ -33,3 +38,11 @@ def compared(words: ObjectArray, plain: Callable[[str], str]) -> NDArray[np.str_
     """Words as they are compared; each distinct one is worked out once."""
     found, codes = distinct(words)
     return np.array([plain(str(word)) for word in found], dtype=np.str_)[codes]
+
+
+def label_codes(labels: ObjectArray) -> NDArray[np.int64]:
+    """A number for every row, the same for labels that are compared as equal; 0 where the label is blank."""
+    found, codes = distinct(labels)
+    known = {"": 0}
+    numbers = [known.setdefault(plain_label(str(label)), len(known)) for label in found]
+    return np.array(numbers, dtype=np.int64)[codes]

@@ -4,8 +4,13 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
+from typing import TYPE_CHECKING
 
 from extractor.table import ReportedTable, Variable
+
+if TYPE_CHECKING:
+    import numpy as np
+    from numpy.typing import NDArray
 
 
 def plain(value: float) -> str:
@@ -26,13 +31,23 @@ def listed(words: Sequence[str]) -> str:
 
 def printed_text(table: ReportedTable, variable: Variable, position: int) -> str:
     """A cell as it was printed, as far as it was understood."""
-    numbers = table.numbers[variable]
-    if not numbers.given[position]:
+    n = table.numbers[variable]
+    if not n.given[position]:
         return ""
-    decimals = int(numbers.decimals[position])
-    comparator = str(numbers.comparator[position])
+    ends = float(n.low[position]), float(n.high[position])
+    return _printed(n.comparator[position], float(n.value[position]), int(n.decimals[position]), *ends)
+
+
+def printed_texts(table: ReportedTable, variable: Variable, positions: NDArray[np.intp]) -> list[str]:
+    """Cells of a column as they were printed, as far as they were understood."""
+    numbers = table.numbers[variable]
+    columns = (numbers.comparator, numbers.value, numbers.decimals, numbers.low, numbers.high)
+    cells = zip(*(column[positions].tolist() for column in columns), strict=True)
+    given = numbers.given[positions].tolist()
+    return [_printed(*cell) if there else "" for there, cell in zip(given, cells, strict=True)]
+
+
+def _printed(comparator: str, value: float, decimals: int, low: float, high: float) -> str:
     if comparator in ("<", ">"):
-        bound = numbers.high[position] if comparator == "<" else numbers.low[position]
-        return f"{comparator} {plain(float(bound))}"
-    value = float(numbers.value[position])
+        return f"{comparator} {plain(high if comparator == '<' else low)}"
     return f"{value:.{decimals}f}" if 0 <= decimals <= 12 else f"{value:g}"

@@ -10,6 +10,7 @@ from collections.abc import Iterator
 from typing import NamedTuple, cast
 
 import numpy as np
+from numpy.typing import NDArray
 
 from extractor.audit import granularity
 from extractor.audit.granularity import Printed, Rounding
@@ -31,10 +32,11 @@ def unreachable(evidence: Evidence) -> Iterator[Finding]:
     """Findings about scores off the scale, and about means and SDs that no whole-number responses have."""
     table = evidence.table
     yield from _off_the_scale(table)
+    responses = _responses(table)
     for mean, sd in _PAIRS:
         for group in groups_in(table):
             yield from _too_spread(table, (mean, group), (sd, group))
-            yield from _granular(table, (mean, group), (sd, group))
+            yield from _granular(table, (mean, group), (sd, group), responses)
 
 
 def _off_the_scale(table: ReportedTable) -> Iterator[Finding]:
@@ -72,10 +74,13 @@ def _too_spread(table: ReportedTable, mean: Variable, sd: Variable) -> Iterator[
         group = None if bottom == "scale_min" else mean[1]
         limits: list[Variable] = [(bottom, group), (top, group)]
         low, high = ends(table, limits[0])[0], ends(table, limits[1])[1]
-        nearest, furthest = (
-            np.where(np.isnan(m), end, m) for m, end in zip(centre, (low, high), strict=True)
-        )
-        limit = granularity.sd_upper_limit(least_n, nearest, furthest, low, high)
+        rows = np.flatnonzero(table.numbers[sd].given & ~np.isnan(low) & ~np.isnan(high))
+        if not len(rows):
+            continue
+        scale = low[rows], high[rows]
+        known_mean = (np.where(np.isnan(m[rows]), end, m[rows]) for m, end in zip(centre, scale, strict=True))
+        limit = np.full(table.rows, np.nan)
+        limit[rows] = granularity.sd_upper_limit(least_n[rows], *known_mean, *scale)
         for i in positions(beyond(table.numbers[sd].low, limit)):
             known = [v for v in (mean, size) if v in table.numbers and table.numbers[v].given[i]]
             beside = "".join(f", {shown(table, variable, i)}" for variable in known)
@@ -103,58 +108,71 @@ class _Scores(NamedTuple):
     low: FloatArray
     high: FloatArray
 
+    def take(self, rows: NDArray[np.intp]) -> _Scores:
+        """The rows named."""
+        return _Scores(*(values[rows] for values in self))
 
-def _scores(table: ReportedTable, mean: Variable) -> _Scores:
-    responses = table.fact("responses").astype(str)
-    binary = responses == "binary"
+
+def _responses(table: ReportedTable) -> _Scores:
+    """What is known of the responses whatever the group; ``n`` is blank."""
+    responses = table.fact("responses")
+    binary = np.asarray(responses == "binary", dtype=bool)
     items = value_of(table, ("scale_items", None))
     items = np.where(np.isnan(items) | binary, 1.0, items)
     low, high = (value_of(table, (name, None)) for name in ("scale_min", "scale_max"))
     low = np.where(binary & np.isnan(low), np.where(np.isnan(high), 0.0, high - 1), low)
     high = np.where(binary & np.isnan(high), low + 1, high)
     # percentages, and other ways to score two answers, lie on another grid
-    whole = (responses == "integer") | (binary & (high - low == 1))
+    whole = np.asarray(responses == "integer", dtype=bool) | (binary & (high - low == 1))
+    return _Scores(whole, binary & (low == 0), np.full(table.rows, np.nan), items, low, high)
+
+
+def _scores(table: ReportedTable, mean: Variable, responses: _Scores) -> _Scores:
+    """The responses of one group."""
+    whole, zero_one, _, items, low, high = responses
     if mean[0] == _CHANGE:
-        low, high, binary = np.full_like(low, np.nan), np.full_like(high, np.nan), np.zeros_like(binary)
-    value = ends(table, mean)
+        low, high, zero_one = np.full_like(low, np.nan), np.full_like(high, np.nan), np.zeros_like(zero_one)
+    least, most = ends(table, mean)
     # a mean off the scale is said once, by the check of the scale
-    whole &= ~beyond(low, value[1]) & ~beyond(value[0], high)
-    return _Scores(whole, binary & (low == 0), value_of(table, ("n", mean[1])), items, low, high)
+    whole = whole & ~beyond(low, most) & ~beyond(least, high)
+    return _Scores(whole, zero_one, value_of(table, ("n", mean[1])), items, low, high)
 
 
-def _printed(table: ReportedTable, variable: Variable) -> Printed:
+def _printed(table: ReportedTable, variable: Variable, rows: NDArray[np.intp]) -> Printed:
     """The printed intervals in whole numbers; unreadable where the decimals are unknown or it is a bound."""
     numbers = table.numbers[variable]
-    decimals = np.maximum(numbers.decimals, 0)
+    known, unit, comparator = numbers.decimals[rows], numbers.unit[rows], numbers.comparator[rows]
+    decimals = np.maximum(known, 0)
     # numbers printed to tens or hundreds say 0 decimals and a larger unit
-    to_the_place = np.abs(numbers.unit * 10.0**decimals - 1) < 1e-9
-    readable = (numbers.comparator == "=") & (numbers.decimals >= 0) & to_the_place
-    value = np.where(readable, numbers.value, np.nan)
+    to_the_place = np.abs(unit * 10.0**decimals - 1) < 1e-9
+    readable = (comparator == "=") & (known >= 0) & to_the_place
+    value = np.where(readable, numbers.value[rows], np.nan)
     return granularity.printed_interval(value, decimals, cast(Rounding, table.rounding))
 
 
-def _granular(table: ReportedTable, mean: Variable, sd: Variable) -> Iterator[Finding]:
+def _granular(table: ReportedTable, mean: Variable, sd: Variable, responses: _Scores) -> Iterator[Finding]:
     if mean not in table.numbers or ("n", mean[1]) not in table.numbers:
         return
-    scores = _scores(table, mean)
-    if not scores.whole.any():
+    scores = _scores(table, mean, responses)
+    rows = np.flatnonzero(scores.whole & table.numbers[mean].given)
+    if not len(rows):
         return
-    centre = _printed(table, mean)
-    missed = scores.whole & ~granularity.mean_is_reachable(scores.n, scores.items, *centre)
-    for i in positions(missed):
+    some, centre = scores.take(rows), _printed(table, mean, rows)
+    missed = ~granularity.mean_is_reachable(some.n, some.items, *centre)
+    for i in rows[missed].tolist():
         yield _mean_finding(table, i, mean, scores)
     if sd not in table.numbers:
         return
     # so is an SD beyond the scale, where one is stated
-    stated = [value_of(table, (name, None)) for name in ("scale_min", "scale_max")]
-    limit = granularity.sd_upper_limit(scores.n, *ends(table, mean), *stated)
-    judged = scores.whole & ~missed & ~(beyond(ends(table, sd)[0], limit) & (mean[0] != _CHANGE))
-    spread = _printed(table, sd)
-    reached = granularity.sd_is_reachable(scores.n, scores.items, centre, spread, scores.low, scores.high)
-    for i in positions(judged & ~scores.zero_one & ~reached):
-        yield _sd_finding(table, i, mean, sd, scores, Printed(*(end[i] for end in centre)))
-    reached = granularity.binary_sd_is_reachable(scores.n, centre, spread)
-    for i in positions(judged & scores.zero_one & ~reached):
+    stated = [value_of(table, (name, None))[rows] for name in ("scale_min", "scale_max")]
+    limit = granularity.sd_upper_limit(some.n, *(end[rows] for end in ends(table, mean)), *stated)
+    judged = ~missed & ~(beyond(ends(table, sd)[0][rows], limit) & (mean[0] != _CHANGE))
+    spread = _printed(table, sd, rows)
+    reached = granularity.sd_is_reachable(some.n, some.items, centre, spread, some.low, some.high)
+    for at in positions(judged & ~some.zero_one & ~reached):
+        yield _sd_finding(table, int(rows[at]), mean, sd, scores, Printed(*(end[at] for end in centre)))
+    reached = granularity.binary_sd_is_reachable(some.n, centre, spread)
+    for i in rows[judged & some.zero_one & ~reached].tolist():
         yield _binary_finding(table, i, mean, sd, scores)
 
 

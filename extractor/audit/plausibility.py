@@ -12,8 +12,17 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import NDArray
 
-from extractor.audit.support import beyond, ends, finding_at, groups_in, positions, shown, value_of
-from extractor.distinct import distinct, together
+from extractor.audit.support import (
+    beyond,
+    ends,
+    finding_at,
+    findings_at,
+    groups_in,
+    positions,
+    shown,
+    value_of,
+)
+from extractor.distinct import distinct, repeated, together
 from extractor.evidence import Evidence
 from extractor.findings import Finding, Severity
 from extractor.quantities import VOCABULARY
@@ -40,13 +49,13 @@ _BETWEEN_GROUPS = ("one-way", "two-group")
 
 def implausible(evidence: Evidence, across: bool = True) -> Iterator[Finding]:
     """Findings of every plausibility check that needs no effects; ``across`` studies, too, where asked for."""
-    table = evidence.table
-    yield from _large_effects(table)
+    summaries = _Summaries(evidence.table)
+    yield from _large_effects(summaries)
     for name in ("sd", "se"):
-        yield from _identical_spreads(table, name)
+        yield from _identical_spreads(summaries, name)
     if across:
-        yield from _unlike_spreads(table)
-        yield from _coded_twice(table)
+        yield from _unlike_spreads(summaries)
+        yield from _coded_twice(summaries)
 
 
 def outlying(evidence: Evidence, effects: Effects) -> Iterator[Finding]:
@@ -122,33 +131,50 @@ def _studies(table: ReportedTable) -> NDArray[np.str_]:
     return np.asarray(np.where(label == "", own, label), dtype=np.str_)
 
 
-def _matrix(table: ReportedTable, name: str, part: str = "value") -> FloatArray:
-    """The value, low, high or unit of a group quantity, shape (rows, groups); NaN where it is not printed."""
-    columns = [np.full(table.rows, np.nan) for _ in groups_in(table)]
-    for column, group in zip(columns, groups_in(table), strict=True):
-        if (name, group) in table.numbers:
-            known = ~np.isnan(value_of(table, (name, group)))
-            column[known] = getattr(table.numbers[name, group], part)[known]
-    return np.column_stack(columns) if columns else np.empty((table.rows, 0))
+class _Summaries:
+    """What is printed of each group, as arrays of shape (rows, groups); NaN where nothing is.
+
+    Each array is put together once, the numbers of a group side by side in memory.
+    """
+
+    def __init__(self, table: ReportedTable) -> None:
+        self.table, self.groups = table, groups_in(table)
+        self._known: dict[tuple[str, str], FloatArray] = {}
+
+    def of(self, name: str, part: str = "value") -> FloatArray:
+        """The value, low, high or unit of a quantity."""
+        found = self._known.get((name, part))
+        if found is None:
+            found = np.full((self.table.rows, len(self.groups)), np.nan, order="F")
+            for at, group in enumerate(self.groups):
+                if (name, group) in self.table.numbers:
+                    value = value_of(self.table, (name, group))
+                    printed = value if part == "value" else getattr(self.table.numbers[name, group], part)
+                    found[:, at] = np.where(np.isnan(value), np.nan, printed)
+            self._known[name, part] = found
+        return found
+
+    def spread(self, part: str = "value") -> FloatArray:
+        """SDs, or SE·sqrt(n) where no SD is printed."""
+        sd, rebuilt = self.of("sd", part), self.of("se", part) * np.sqrt(self.of("n"))
+        return np.where(np.isnan(sd), rebuilt, sd)
+
+    def pooled(self, spread: FloatArray, used: BoolArray) -> FloatArray:
+        """Pooled SD of the groups used, shape (rows,); unweighted where a size is unknown, NaN without groups."""
+        n = self.of("n")
+        sized = (~used | (n >= 2)).all(axis=1, keepdims=True)
+        weight = np.where(used, np.where(sized, n - 1, 1.0), 0.0)
+        total = weight.sum(axis=1)
+        squares = (weight * np.where(used, spread, 0.0) ** 2).sum(axis=1)
+        return np.where(total > 0, np.sqrt(squares / np.where(total > 0, total, 1.0)), np.nan)
+
+    def cells(self, name: str, row: int) -> list[Variable]:
+        """The cells of a quantity in which something is printed."""
+        return [(name, g) for g in self.groups if _given(self.table, (name, g), row)]
 
 
-def _spread(table: ReportedTable, part: str = "value") -> FloatArray:
-    """SDs, or SE·sqrt(n) where no SD is printed, shape (rows, groups)."""
-    sd, rebuilt = _matrix(table, "sd", part), _matrix(table, "se", part) * np.sqrt(_matrix(table, "n"))
-    return np.where(np.isnan(sd), rebuilt, sd)
-
-
-def _pooled(table: ReportedTable, spread: FloatArray, used: BoolArray) -> FloatArray:
-    """Pooled SD of the groups used, shape (rows,); unweighted where a size is unknown, NaN without groups."""
-    n = _matrix(table, "n")
-    sized = (~used | (n >= 2)).all(axis=1, keepdims=True)
-    weight = np.where(used, np.where(sized, n - 1, 1.0), 0.0)
-    total = weight.sum(axis=1)
-    squares = (weight * np.where(used, spread, 0.0) ** 2).sum(axis=1)
-    return np.where(total > 0, np.sqrt(squares / np.where(total > 0, total, 1.0)), np.nan)
-
-
-def _large_effects(table: ReportedTable) -> Iterator[Finding]:
+def _large_effects(summaries: _Summaries) -> Iterator[Finding]:
+    table, groups = summaries.table, summaries.groups
     why = "a large effect is no error by itself"
     printed = np.zeros(table.rows, dtype=bool)
     for variable in (("cohens_d", None), ("hedges_g", None)):
@@ -160,15 +186,14 @@ def _large_effects(table: ReportedTable) -> Iterator[Finding]:
                 f"{shown(table, variable, i)} is beyond 3 SDs: look for an SE used as SD, or a decimal point"
             )
             yield finding_at(table, i, Severity.DOUBTFUL, "large effect", [variable], said, explanation=why)
-    groups = groups_in(table)
     if len(groups) < 2:
         return
-    mean, spread = _matrix(table, "mean"), _spread(table)
+    mean, spread = summaries.of("mean"), summaries.spread()
     used = ~np.isnan(mean) & ~np.isnan(spread)
-    pooled, widest = (_pooled(table, s, used) for s in (spread, _spread(table, "high")))
+    pooled, widest = (summaries.pooled(s, used) for s in (spread, summaries.spread("high")))
     # the gap that remains when every mean is rounded towards the others
-    lowest = np.where(used, _matrix(table, "mean", "high"), np.inf)
-    highest = np.where(used, _matrix(table, "mean", "low"), -np.inf)
+    lowest = np.where(used, summaries.of("mean", "high"), np.inf)
+    highest = np.where(used, summaries.of("mean", "low"), -np.inf)
     gap = highest.max(axis=1) - lowest.min(axis=1)
     between = np.isin(table.fact("design").astype(str), _BETWEEN_GROUPS) & (used.sum(axis=1) >= 2) & ~printed
     for i in positions(between & beyond(gap, _LARGE * widest)):
@@ -183,11 +208,11 @@ def _large_effects(table: ReportedTable) -> Iterator[Finding]:
         yield finding_at(table, i, Severity.DOUBTFUL, "large effect", cells, said, explanation=why)
 
 
-def _unlike_spreads(table: ReportedTable) -> Iterator[Finding]:
+def _unlike_spreads(summaries: _Summaries) -> Iterator[Finding]:
     """Pooled SDs that differ from the median of the outcome's other studies by about sqrt(n)."""
-    spread, n = _spread(table), _matrix(table, "n")
+    table, spread, n = summaries.table, summaries.spread(), summaries.of("n")
     used = ~np.isnan(spread) & (np.where(np.isnan(spread), 1.0, spread) > 0)
-    pooled = _pooled(table, spread, used)
+    pooled = summaries.pooled(spread, used)
     sized = used & ~np.isnan(n)
     mean_n = np.where(sized, n, 0.0).sum(axis=1) / np.maximum(sized.sum(axis=1), 1)
     median, others = _median_of_others(table, pooled)
@@ -198,8 +223,8 @@ def _unlike_spreads(table: ReportedTable) -> Iterator[Finding]:
         ratio = np.where(known, pooled / median, np.nan)
         small, large = np.abs(ratio * root - 1) <= _NEAR, np.abs(ratio / root - 1) <= _NEAR
     for i in positions(small | large):
-        name = next(q for q in ("sd", "se") if any(_given(table, (q, g), i) for g in groups_in(table)))
-        cells: list[Variable] = [(name, g) for g in groups_in(table) if _given(table, (name, g), i)]
+        cells = summaries.cells("sd", i) or summaries.cells("se", i)
+        name = cells[0][0]
         why = _SLIPS[name, bool(small[i])]
         factor, text = (1 / root[i], "1/sqrt(n)") if small[i] else (root[i], "sqrt(n)")
         said = (
@@ -254,11 +279,11 @@ def _leave_one_out_median(values: pd.Series[float]) -> FloatArray:
     return found
 
 
-def _identical_spreads(table: ReportedTable, name: str) -> Iterator[Finding]:
-    values, n = _matrix(table, name), _matrix(table, "n")
+def _identical_spreads(summaries: _Summaries, name: str) -> Iterator[Finding]:
+    table, values, n = summaries.table, summaries.of(name), summaries.of("n")
     if values.shape[1] < 2:
         return
-    units = _matrix(table, name, "unit")
+    units = summaries.of(name, "unit")
     count = (~np.isnan(values)).sum(axis=1)
     value, unit = np.fmax.reduce(values, axis=1), np.fmin.reduce(units, axis=1)
     alike = (
@@ -270,22 +295,20 @@ def _identical_spreads(table: ReportedTable, name: str) -> Iterator[Finding]:
     digits = np.floor(np.log10(np.where(alike, value / np.where(alike, unit, 1.0), 1.0)) + 1e-9) + 1
     # coarse printing makes two or three SDs alike by chance
     for i in positions(alike & (((count == 2) & (digits >= 3)) | ((count > 2) & (digits >= 2)))):
-        cells: list[Variable] = [
-            (name, group) for group in groups_in(table) if _given(table, (name, group), i)
-        ]
+        cells = summaries.cells(name, i)
         spread = f"{VOCABULARY[name].symbol} = {printed_text(table, cells[0], i)}"
         said = f"all {count[i]} groups, of equal size, have {spread}: look whether it is one pooled value"
         why = "a pooled or adjusted SE, as software prints beside adjusted means"
         yield finding_at(table, i, Severity.NOTE, "identical spreads", cells, said, explanation=why)
 
 
-def _coded_twice(table: ReportedTable) -> Iterator[Finding]:
+def _coded_twice(summaries: _Summaries) -> Iterator[Finding]:
     """Rows of different studies with the same sizes and means in all groups, whatever their order."""
-    n, mean = _matrix(table, "n"), _matrix(table, "mean")
+    table, n, mean = summaries.table, summaries.of("n"), summaries.of("mean")
     both = ~np.isnan(n) & ~np.isnan(mean)
-    study = table.fact("study").astype(str)
+    study = table.fact("study")
     # how many values the printed means could have had, in whatever unit they are: by chance few ones agree
-    steps = np.abs(mean) / _matrix(table, "mean", "unit")
+    steps = np.abs(mean) / summaries.of("mean", "unit")
     readable = both & (steps > 1)
     digits = np.where(readable, np.log10(np.where(readable, steps, 1.0)), 0.0).sum(axis=1)
     telling = (both.sum(axis=1) >= 2) & (digits >= _TELLING_DIGITS)
@@ -295,20 +318,21 @@ def _coded_twice(table: ReportedTable) -> Iterator[Finding]:
         return
     n, mean = (np.where(both, part, np.inf)[rows] for part in (n, mean))
     order = np.lexsort((n, mean), axis=-1)
-    key = np.hstack([np.take_along_axis(part, order, axis=1) for part in (n, mean)])
-    _, codes, counts = np.unique(key, axis=0, return_inverse=True, return_counts=True)
-    codes = codes.ravel()
-    again = counts[codes] > 1
+    ordered = (np.take_along_axis(part, order, axis=1) for part in (n, mean))
+    codes, again = repeated([column for part in ordered for column in part.T])
+    said: dict[int, str] = {}
     for members in together(rows[again], codes[again]):
         first: dict[str, int] = {}
-        for i in members:
-            first.setdefault(study[i], int(i))
-        for i in members if len(first) > 1 else ():
-            others = islice((row for label, row in first.items() if label != study[i]), 3)
-            named = listed([f"row {table.row_numbers[row]} ({study[row]})" for row in others])
-            said = f"the same group sizes and means stand in {named}: look whether one sample was coded twice"
-            cells: list[Variable] = [("mean", g) for g in groups_in(table) if _given(table, ("mean", g), i)]
-            why = "possible double counting of one sample"
-            yield finding_at(
-                table, int(i), Severity.DOUBTFUL, "same sizes and means", cells, said, explanation=why
-            )
+        for i in members.tolist():
+            first.setdefault(study[i], i)
+        named = {label: f"row {table.row_numbers[row]} ({label})" for label, row in islice(first.items(), 4)}
+        for i in members.tolist() if len(first) > 1 else ():
+            others = [text for label, text in named.items() if label != study[i]][:3]
+            where = f"the same group sizes and means stand in {listed(others)}"
+            said[i] = f"{where}: look whether one sample was coded twice"
+    alike = np.array(list(said), dtype=np.intp)
+    for members in together(alike, repeated(list(both[alike].T))[0]) if said else ():
+        cells: list[Variable] = [("mean", summaries.groups[at]) for at in np.flatnonzero(both[members[0]])]
+        messages = [said[i] for i in members.tolist()]
+        rule, why = "same sizes and means", "possible double counting of one sample"
+        yield from findings_at(table, members.tolist(), Severity.DOUBTFUL, rule, cells, messages, why)

@@ -97,11 +97,10 @@ def audit_evidence(
 
 
 def _summarise(conversion: Conversion, findings: list[Finding]) -> None:
-    said: dict[int, list[str]] = {}
+    said: dict[int, dict[str, None]] = {}
     for finding in findings:
-        said.setdefault(finding.row, []).append(f"{finding.severity.word}: {finding.rule}")
+        said.setdefault(finding.row, {})[f"{finding.severity.word}: {finding.rule}"] = None
     rows = conversion.evidence.table.row_numbers
     words = np.full(len(rows), "", dtype=object)
-    for row, texts in said.items():
-        words[np.searchsorted(rows, row)] = "; ".join(dict.fromkeys(texts))
+    words[np.searchsorted(rows, list(said))] = list(map("; ".join, said.values()))
     conversion.note_findings(words)

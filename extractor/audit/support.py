@@ -8,6 +8,7 @@ all others reach every row, also those that cannot be converted.
 from __future__ import annotations
 
 from collections.abc import Iterable, Iterator, Sequence
+from itertools import repeat
 
 import numpy as np
 
@@ -15,7 +16,7 @@ from extractor.evidence import Evidence, usable
 from extractor.findings import Finding, Severity
 from extractor.quantities import METRICS, VOCABULARY, Quantity
 from extractor.table import BoolArray, FloatArray, ReportedTable, Variable
-from extractor.words import plain, printed_text
+from extractor.words import plain, printed_text, printed_texts
 
 _TOLERANCE = 1e-9
 _UNKNOWN = (np.nan, np.nan)
@@ -96,11 +97,10 @@ def finding_at(
     expected: tuple[float, float] = _UNKNOWN,
 ) -> Finding:
     """A finding about cells of one row, the most suspect first; open ends of ``expected`` are left blank."""
-    row = int(table.row_numbers[position])
     low, high = (float(end) if np.isfinite(end) else np.nan for end in expected)
     studies = table.facts.get("study")
     return Finding(
-        row=row,
+        row=int(table.row_numbers[position]),
         study="" if studies is None else str(studies[position]),
         severity=severity,
         rule=rule,
@@ -111,6 +111,29 @@ def finding_at(
         expected_low=low,
         expected_high=high,
     )
+
+
+def findings_at(
+    table: ReportedTable,
+    rows: Sequence[int],
+    severity: Severity,
+    rule: str,
+    variables: Sequence[Variable],
+    messages: Iterable[str],
+    explanation: str = "",
+) -> Iterator[Finding]:
+    """A finding for each of some rows, all about the same columns, the most suspect first."""
+    at = np.asarray(rows, dtype=np.intp)
+    cells: Iterable[tuple[str, ...]] = repeat(())
+    printed: Iterable[str] = repeat("")
+    if variables:
+        cells = zip(*(table.wheres(variable, at).tolist() for variable in variables), strict=True)
+        printed = printed_texts(table, variables[0], at)
+    studies = map(str, table.fact("study")[at].tolist())
+    numbers = table.row_numbers[at].tolist()
+    for number, study, where, text, message in zip(numbers, studies, cells, printed, messages, strict=False):
+        unique = tuple(dict.fromkeys(where))
+        yield Finding(number, study, severity, rule, unique, text, message, explanation)
 
 
 def positions(where: BoolArray) -> list[int]:
