@@ -78,9 +78,11 @@ def _too_spread(table: ReportedTable, mean: Variable, sd: Variable) -> Iterator[
         if not len(rows):
             continue
         scale = low[rows], high[rows]
-        known_mean = (np.where(np.isnan(m[rows]), end, m[rows]) for m, end in zip(centre, scale, strict=True))
+        nearest, furthest = (
+            np.where(np.isnan(m[rows]), end, m[rows]) for m, end in zip(centre, scale, strict=True)
+        )
         limit = np.full(table.rows, np.nan)
-        limit[rows] = granularity.sd_upper_limit(least_n[rows], *known_mean, *scale)
+        limit[rows] = granularity.sd_upper_limit(least_n[rows], nearest, furthest, *scale)
         for i in positions(beyond(table.numbers[sd].low, limit)):
             known = [v for v in (mean, size) if v in table.numbers and table.numbers[v].given[i]]
             beside = "".join(f", {shown(table, variable, i)}" for variable in known)
@@ -110,7 +112,8 @@ class _Scores(NamedTuple):
 
     def take(self, rows: NDArray[np.intp]) -> _Scores:
         """The rows named."""
-        return _Scores(*(values[rows] for values in self))
+        whole, zero_one, *numbers = self
+        return _Scores(whole[rows], zero_one[rows], *(values[rows] for values in numbers))
 
 
 def _responses(table: ReportedTable) -> _Scores:

@@ -10,7 +10,7 @@ and in no other, so that what becomes of a row does not depend on the rows besid
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
 from functools import lru_cache
 from typing import TypeVar
@@ -25,7 +25,7 @@ from extractor.table import BoolArray
 
 _NEAR = 1e-9
 _SHRINKS = 1e-3
-_ROUNDS = 40
+_ROUNDS = 200
 _WORTH_DROPPING = 0.7
 """Rows that are done with are dropped when fewer than this share are left."""
 _WORTH_CHOOSING = 0.5
@@ -68,10 +68,24 @@ def judges_of(design: str) -> tuple[Relation, ...]:
 
 
 @lru_cache(maxsize=64)
-def _tiers(design: str) -> tuple[tuple[Relation, ...], tuple[Relation, ...]]:
-    """The relations that give something new, and those that only narrow: costly, and seldom what empties a row."""
-    judges = judges_of(design)
-    return tuple(r for r in judges if r.routes), tuple(r for r in judges if not r.routes)
+def _tiers(design: str) -> tuple[tuple[Relation, ...], ...]:
+    """The relations in the order in which they settle: the cheap ones, special functions, and what only narrows.
+
+    The last are costly, too, and seldom what empties a row.
+    """
+    new = [r for r in judges_of(design) if r.routes]
+    narrowing = tuple(r for r in judges_of(design) if not r.routes)
+    return tuple(r for r in new if not r.costly), tuple(r for r in new if r.costly), narrowing
+
+
+@lru_cache(maxsize=1024)
+def _equation(relation: Relation) -> tuple[Relation, ...]:
+    """The relations that solve the same equation and need what this one gives."""
+    return tuple(
+        r
+        for r in catalogue().values()
+        if relation.gives in r.needs and {*r.needs, r.gives} == {*relation.needs, relation.gives}
+    )
 
 
 def propagate(design: str, domain: Domain, unknown: Mapping[str, BoolArray] | None = None) -> BoolArray:
@@ -89,17 +103,19 @@ def propagate(design: str, domain: Domain, unknown: Mapping[str, BoolArray] | No
         empty |= _any(domain.low[quantity] > domain.high[quantity])
     work = _Work(domain, rows, unknown or {})
     left = np.arange(rows)
-    for _ in range(_ROUNDS):
-        moved = False
-        for tier in _tiers(design):
-            moved = work.narrow(tier, empty, left)
-            alive = ~empty[left]
-            if alive.sum() < _WORTH_DROPPING * len(left):
-                left = left[alive]
-                if not len(left):
-                    return empty
-                work.keep(alive)
-        if not moved:
+    tiers = _tiers(design)
+    at = 0
+    for _ in range(_ROUNDS * len(tiers)):
+        moved = work.narrow(tiers[at], empty, left)
+        alive = ~empty[left]
+        if alive.sum() < _WORTH_DROPPING * len(left):
+            left = left[alive]
+            if not len(left):
+                return empty
+            work.keep(alive)
+        # what a costly relation gave is passed on by the cheap ones first
+        at = 0 if moved else at + 1
+        if at == len(tiers):
             break
     if len(left) < rows:
         _spread(work.domain, domain, left, rows)
@@ -117,6 +133,7 @@ class _Work:
         self.changed: dict[str, Clock] = {q: np.ones(rows, dtype=np.int32) for q in domain.low}
         for quantity, where in unknown.items():
             self.changed[quantity][where] = 0
+        self.given = {q: when > 0 for q, when in self.changed.items()}
         self.done: dict[str, Clock] = {}
         self.latest = dict.fromkeys(domain.low, 1)
         self.looked: dict[str, int] = {}
@@ -127,12 +144,13 @@ class _Work:
         """Go on with some rows only."""
         self.domain = self.domain.take(rows)
         self.changed = {quantity: when[rows] for quantity, when in self.changed.items()}
+        self.given = {quantity: known[rows] for quantity, known in self.given.items()}
         self.done = {name: when[rows] for name, when in self.done.items()}
         self.own = set(self.changed)
         self.rows = int(rows.sum())
 
     def narrow(self, tier: tuple[Relation, ...], empty: BoolArray, left: NDArray[np.intp]) -> bool:
-        """Run the relations of a tier until none changes anything; whether any did. Marks rows that become empty.
+        """Run each relation of a tier once; whether any changed anything. Marks rows that become empty.
 
         Parameters
         ----------
@@ -140,14 +158,10 @@ class _Work:
         """
         gone = empty[left]
         moved = False
-        for _ in range(_ROUNDS):
-            again = False
-            for relation in tier:
-                rows = self._due(relation, gone)
-                if rows is not None and self._run(relation, rows, gone):
-                    moved = again = True
-            if not again:
-                break
+        for relation in tier:
+            rows = self._due(relation, gone)
+            if rows is not None and self._run(relation, rows, gone):
+                moved = True
         empty[left] = gone
         return moved
 
@@ -167,9 +181,16 @@ class _Work:
         if last is None:
             last = self.done[relation.name] = np.zeros(self.rows, dtype=np.int32)
         due = (newest > last) & (oldest > 0) & ~gone
+        if relation.beside:
+            due &= self._beside(relation)
         last[due] = self.clock
         rows = np.flatnonzero(due)
         return rows if len(rows) else None
+
+    def _beside(self, relation: Relation) -> BoolArray:
+        """Rows in which something was known from the start of what a relation is used beside."""
+        known = [self.given[q] for q in relation.beside if q in self.given]
+        return np.logical_or.reduce(known) if known else np.zeros(self.rows, dtype=bool)
 
     def _run(self, relation: Relation, rows: NDArray[np.intp], gone: BoolArray) -> bool:
         """Cut what a relation gives to its image in these rows; whether that mattered in any."""
@@ -218,10 +239,27 @@ class _Work:
         domain.low[gives][into], domain.high[gives][into] = new[0][at], new[1][at]
         emptied = _any(new[0][at] > new[1][at])
         gone[into[emptied]] = True
+        settled = [] if quantity.integer else list(self._settled(relation, into))
         self.clock += 1
         self.changed[gives][into] = self.clock
         self.latest[gives] = self.clock
+        for last, there in settled:
+            last[there] = self.clock
         return not bool(emptied.all())
+
+    def _settled(
+        self, relation: Relation, rows: NDArray[np.intp]
+    ) -> Iterator[tuple[Clock, NDArray[np.intp]]]:
+        """When relations of the same equation last ran, and in which rows they have nothing new to say.
+
+        What is left of each of an equation's quantities goes with something left of the others. What the equation
+        itself takes from one of them therefore takes no more from the others, unless it was made whole as well.
+        """
+        for other in _equation(relation):
+            last = self.done.get(other.name)
+            if last is not None:
+                newest = np.maximum.reduce([self.changed[need][rows] for need in other.needs])
+                yield last, rows[newest <= last[rows]]
 
 
 def _support(relation: Relation, inputs: dict[str, Interval]) -> Interval | None:

@@ -68,6 +68,8 @@ def _upper_tail(explained: FloatArray, df_effect: FloatArray, df_error: FloatArr
     designs=WITH_F,
     source=_F_TAIL,
     accuracy=_ACCURACY,
+    costly=True,
+    beside=["p_value", "adjusted_p"],
 )
 def p_from_f(f_value: FloatArray, df_effect: FloatArray, df_error: FloatArray) -> FloatArray:
     """p = P(F(df1, df2) ≥ F)."""
@@ -91,6 +93,7 @@ def _f_at_upper_tail(p: FloatArray, df_effect: FloatArray, df_error: FloatArray)
     designs=WITH_F,
     source=_F_TAIL,
     accuracy=_ACCURACY,
+    costly=True,
 )
 def f_from_p(p_two_sided: FloatArray, df_effect: FloatArray, df_error: FloatArray) -> FloatArray:
     """F such that P(F(df1, df2) ≥ F) = p."""
@@ -109,7 +112,13 @@ def _contrast_p_image(t_value: Interval, df_error: Interval) -> Interval:
 
 
 @relation(
-    gives="p_contrast", image=_contrast_p_image, designs=SEVERAL_GROUPS, source=_T_TAIL, accuracy=_ACCURACY
+    gives="p_contrast",
+    image=_contrast_p_image,
+    designs=SEVERAL_GROUPS,
+    source=_T_TAIL,
+    accuracy=_ACCURACY,
+    costly=True,
+    beside=["p_contrast", "adjusted_p"],
 )
 def contrast_p(t_value: FloatArray, df_error: FloatArray) -> FloatArray:
     """p = P(|t(df2)| ≥ |t|)."""
@@ -133,6 +142,7 @@ def _contrast_t_image(
     designs=SEVERAL_GROUPS,
     source=_T_TAIL,
     accuracy=_ACCURACY,
+    costly=True,
 )
 def contrast_t_from_p(p_contrast: FloatArray, df_error: FloatArray, direction: FloatArray) -> FloatArray:
     """t = sign · (value with P(|t(df2)| ≥ t) = p)."""

@@ -74,6 +74,8 @@ class Relation:
         when ``narrows`` is set, the current (low, high) of the quantity given.
     accuracy : relative error of the formula in floating point; images are widened by it.
     standardizer : which standard deviation a d or g gets by this step, where that is not the design's usual one.
+    costly : the formula is a special function; an audit lets all others settle before it.
+    beside : quantities for whose sake an audit uses it: without one of them in a row it could contradict nothing.
     """
 
     name: str
@@ -93,6 +95,8 @@ class Relation:
     accuracy: float
     assumes: str
     standardizer: str
+    costly: bool
+    beside: frozenset[str]
     family: str
 
     @property
@@ -127,6 +131,8 @@ def relation(
     accuracy: float = 1e-13,
     assumes: str = "",
     standardizer: str = "",
+    costly: bool = False,
+    beside: Iterable[str] = (),
 ) -> Callable[[Formula], Formula]:
     """Enter a formula into the catalogue. Every parameter must be declared, or ``image`` be given.
 
@@ -140,7 +146,7 @@ def relation(
     def enter(formula: Formula) -> Formula:
         needs = tuple(inspect.signature(formula).parameters)
         declared = [*rising, *falling, *either, *exact]
-        unknown = {gives, *needs, *declared} - VOCABULARY.keys()
+        unknown = {gives, *needs, *declared, *beside} - VOCABULARY.keys()
         if unknown:
             raise ValueError(f"{formula.__name__}: not in the vocabulary: {sorted(unknown)}")
         if image is None and sorted(declared) != sorted(needs):
@@ -173,6 +179,8 @@ def relation(
             accuracy=accuracy,
             assumes=assumes,
             standardizer=standardizer,
+            costly=costly,
+            beside=frozenset(beside),
             family=formula.__module__.rsplit(".", 1)[-1],
         )
         return formula

@@ -32,11 +32,17 @@ def _mean_image(mean: Interval, n: Interval, ss_effect: Interval) -> Interval:
         weight = size_low / size_low.sum(axis=-1, keepdims=True)
         centre_low = np.where(known, (weight * rest_low).sum(axis=-1), rest_low.min(axis=-1))
         centre_high = np.where(known, (weight * rest_high).sum(axis=-1), rest_high.max(axis=-1))
-        least_rest = least_between(size_low, rest_low, rest_high)
         middle = ((centre_low + centre_high) / 2)[:, None]
         most_rest = (size_high * np.maximum((rest_low - middle) ** 2, (rest_high - middle) ** 2)).sum(axis=-1)
         share_low = 1 / (1 / own_low + 1 / size_low.sum(axis=-1))
         share_high = 1 / (1 / own_high + 1 / size_high.sum(axis=-1))
+        # the others' own sum of squares narrows the reach, which is worth its price where this could cut an end
+        rest_middle = (rest_low + rest_high) / 2
+        some_rest = (size_low * (rest_middle - middle) ** 2).sum(axis=-1)
+        shortest = np.sqrt(np.maximum(ss_effect[1] - some_rest, 0) / share_low)
+        inside = (centre_low - shortest <= mean[0][:, j]) & (mean[1][:, j] <= centre_high + shortest)
+        least_rest, cut = np.zeros(len(low)), np.flatnonzero(~inside)
+        least_rest[cut] = least_between(*(v.T[:, cut].T for v in (size_low, rest_low, rest_high)))
         reach = np.sqrt(np.maximum(ss_effect[1] - least_rest * (1 - _WIDEN), 0) / share_low) * (1 + _WIDEN)
         away = np.sqrt(np.maximum(ss_effect[0] - most_rest * (1 + _WIDEN), 0) / share_high) * (1 - _WIDEN)
         away = np.where(np.isfinite(away), away, 0.0)

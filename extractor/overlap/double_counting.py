@@ -233,8 +233,8 @@ def _sized_notes(
             f"group sizes {listed(sizes)} {shared[i][1]}"
             for i, sizes in zip(members.tolist(), texts, strict=True)
         ]
-        cells: list[Variable] = [("n", groups[i]) for i in at]
-        yield from findings_at(table, rows[members], Severity.NOTE, SAMPLE, cells, messages, _WHY)
+        cells: list[Variable] = [("n", groups[i]) for i in at.tolist()]
+        yield from findings_at(table, rows[members].tolist(), Severity.NOTE, SAMPLE, cells, messages, _WHY)
 
 
 def _total_notes(

@@ -29,7 +29,7 @@ from tests.evidence.oracle import feasible, feasible_without, row_of
 from tests.evidence.planted import KINDS, Planted, plant
 from tests.evidence.printing import Sheet, table
 
-ROWS_PER_SHEET = 250
+ROWS_PER_SHEET = 500
 SHEETS = 40
 ORACLE_ROWS = 300
 CAUGHT, NAMED, FIRST, EXPLAINED = 0.98, 0.999, 0.95, 0.80
