@@ -13,11 +13,11 @@ from extractor.distinct import distinct
 from extractor.printed.reading import tidy
 from extractor.table import ObjectArray
 
-_BETWEEN_DIGITS = re.compile(r"(?<=\d)[\W_]+(?=\d)")
 _APART = "\x1f"
+_BETWEEN_DIGITS = re.compile(r"(?<=\d)(?:[^\w\n]|_)+(?=\d)")
 _LETTER = re.compile(r"[^\W_]")
-_NEITHER = re.compile(rf"[^a-z0-9{_APART}]+")
-"""In plain ASCII, neither letter nor digit nor what keeps numbers apart."""
+_NEITHER = re.compile(rf"[^a-z0-9{_APART}\n]+")
+"""In plain ASCII, neither letter nor digit nor what keeps numbers or lines apart."""
 
 
 def plain_label(text: str) -> str:
@@ -25,13 +25,20 @@ def plain_label(text: str) -> str:
 
     Numbers stay apart: 1.2 is not 12.
     """
-    if text.isascii() and _LETTER.search(text) is not None:
-        spaced = text.lower().replace(_APART, " ")
-        return _NEITHER.sub("", _BETWEEN_DIGITS.sub(_APART, spaced))
     folded = unicodedata.normalize("NFKC", tidy(text)).casefold()
     if _LETTER.search(folded) is None:
         return folded
     return "".join(c for c in _BETWEEN_DIGITS.sub(_APART, folded) if c.isalnum() or c == _APART)
+
+
+def _plain_labels(texts: list[str]) -> list[str]:
+    """Many labels as they are compared: those in plain ASCII all at once, a line each."""
+    lines = "\n".join(texts)
+    if not lines.isascii() or lines.count("\n") >= len(texts):
+        return [plain_label(text) for text in texts]
+    spaced = lines.lower().replace(_APART, " ")
+    found = _NEITHER.sub("", _BETWEEN_DIGITS.sub(_APART, spaced)).split("\n")
+    return [plain or plain_label(text) for plain, text in zip(found, texts, strict=True)]
 
 
 def compared(words: ObjectArray, plain: Callable[[str], str]) -> NDArray[np.str_]:
@@ -44,5 +51,6 @@ def label_codes(labels: ObjectArray) -> NDArray[np.int64]:
     """A number for every row, the same for labels that are compared as equal; 0 where the label is blank."""
     found, codes = distinct(labels)
     known = {"": 0}
-    numbers = [known.setdefault(plain_label(str(label)), len(known)) for label in found]
+    plain = _plain_labels(list(map(str, found)))
+    numbers = [known.setdefault(label, len(known)) for label in plain]
     return np.array(numbers, dtype=np.int64)[codes]

@@ -10,6 +10,7 @@ from hypothesis import strategies as st
 from extractor.coders.disputes import reading_text
 from extractor.coders.matching import Printed, alike, plain_label
 from extractor.coders.reconcile import reconcile
+from extractor.labels import label_codes
 from extractor.printed.reading import Reading
 from extractor.printed.reported import read_number
 from extractor.quantities import VOCABULARY
@@ -191,3 +192,12 @@ def test_a_term_in_another_order_is_the_same_term() -> None:
     found = reconcile([FACTORIAL, changed(FACTORIAL, (2, "term", "sex × age"))])
     assert pairs_of(found) == [(2, 2), (3, 3), (4, 4)]
     assert not len(found.disputes)
+
+
+@given(st.lists(st.text(alphabet="ab1 2.-_\x1f\n\tÉA", max_size=6), min_size=1, max_size=5))
+@settings(max_examples=300, deadline=None)
+def test_many_labels_at_once_are_compared_as_each_alone(texts: list[str]) -> None:
+    codes = label_codes(np.array(texts, dtype=object)).tolist()
+    alone = [plain_label(text) for text in texts]
+    assert [a == b for a in codes for b in codes] == [a == b for a in alone for b in alone]
+    assert [code == 0 for code in codes] == [label == "" for label in alone]
