@@ -26,6 +26,7 @@ from extractor.table import BoolArray
 _NEAR = 1e-9
 _SHRINKS = 1e-3
 _ROUNDS = 200
+_EVERY = slice(None)
 _WORTH_DROPPING = 0.7
 """Rows that are done with are dropped when fewer than this share are left."""
 _WORTH_CHOOSING = 0.5
@@ -126,6 +127,7 @@ class _Work:
     """A domain being narrowed, with when each row of it last changed and when each relation last ran there.
 
     changed : by quantity, shape (rows,); 0 where nothing is known of it yet. done : by relation.
+    patchy : quantities of which nothing is known in some row.
     """
 
     def __init__(self, domain: Domain, rows: int, unknown: Mapping[str, BoolArray]) -> None:
@@ -133,6 +135,7 @@ class _Work:
         self.changed: dict[str, Clock] = {q: np.ones(rows, dtype=np.int32) for q in domain.low}
         for quantity, where in unknown.items():
             self.changed[quantity][where] = 0
+        self.patchy = {q for q in unknown if not self.changed[q].all()}
         self.given = {q: when > 0 for q, when in self.changed.items()}
         self.done: dict[str, Clock] = {}
         self.latest = dict.fromkeys(domain.low, 1)
@@ -174,18 +177,24 @@ class _Work:
         if max(latest[need] for need in relation.needs) <= self.looked.get(relation.name, 0):
             return None
         self.looked[relation.name] = self.clock
-        whens = [self.changed[need] for need in relation.needs]
-        newest = whens[0] if len(whens) == 1 else np.maximum.reduce(whens)
-        oldest = whens[0] if len(whens) == 1 else np.minimum.reduce(whens)
         last = self.done.get(relation.name)
         if last is None:
             last = self.done[relation.name] = np.zeros(self.rows, dtype=np.int32)
-        due = (newest > last) & (oldest > 0) & ~gone
+        due = (self._newest(relation) > last) & ~gone
+        for need in self.patchy.intersection(relation.needs):
+            due &= self.changed[need] > 0
         if relation.beside:
             due &= self._beside(relation)
         last[due] = self.clock
         rows = np.flatnonzero(due)
         return rows if len(rows) else None
+
+    def _newest(self, relation: Relation, rows: NDArray[np.intp] | slice = _EVERY) -> Clock:
+        """When something that a relation needs last changed, in some rows."""
+        first, *others = (self.changed[need][rows] for need in relation.needs)
+        for other in others:
+            first = np.maximum(first, other)
+        return first
 
     def _beside(self, relation: Relation) -> BoolArray:
         """Rows in which something was known from the start of what a relation is used beside."""
@@ -211,7 +220,7 @@ class _Work:
             old = np.full(low.shape, quantity.low), np.full(low.shape, quantity.high)
         new = np.maximum(old[0], low), np.minimum(old[1], high)
         shrunk = _shrunk(old, new)
-        if not known or not self.changed[gives].all():
+        if not known or gives in self.patchy:
             # where nothing was known, anything tighter than the support matters
             first = chosen(self.changed[gives]) == 0 if known else np.ones(len(new[0]), dtype=bool)
             tighter = (new[0] > quantity.low) | (new[1] < quantity.high)
@@ -230,6 +239,7 @@ class _Work:
                 np.full(shape, end, order="F") for end in (quantity.low, quantity.high)
             )
             self.changed[gives] = np.zeros(self.rows, dtype=np.int32)
+            self.patchy.add(gives)
             self.own.add(gives)
         elif gives not in self.own:
             domain.low[gives], domain.high[gives] = (end.copy("K") for end in domain.pair(gives))
@@ -243,6 +253,8 @@ class _Work:
         self.clock += 1
         self.changed[gives][into] = self.clock
         self.latest[gives] = self.clock
+        if gives in self.patchy and self.changed[gives].all():
+            self.patchy.remove(gives)
         for last, there in settled:
             last[there] = self.clock
         return not bool(emptied.all())
@@ -258,8 +270,7 @@ class _Work:
         for other in _equation(relation):
             last = self.done.get(other.name)
             if last is not None:
-                newest = np.maximum.reduce([self.changed[need][rows] for need in other.needs])
-                yield last, rows[newest <= last[rows]]
+                yield last, rows[self._newest(other, rows) <= last[rows]]
 
 
 def _support(relation: Relation, inputs: dict[str, Interval]) -> Interval | None:
@@ -274,9 +285,11 @@ def _shrunk(old: Interval, new: Interval) -> BoolArray:
     """Where an interval lost enough to matter: a share of its width or, where that is infinite, of the new end."""
     with np.errstate(invalid="ignore", over="ignore"):
         width = old[1] - old[0]
+        below = above = _SHRINKS * width
         open_ended = np.isinf(width)
-        below = _SHRINKS * np.where(open_ended, np.abs(new[0]), width)
-        above = _SHRINKS * np.where(open_ended, np.abs(new[1]), width)
+        if open_ended.any():
+            below = np.where(open_ended, _SHRINKS * np.abs(new[0]), below)
+            above = np.where(open_ended, _SHRINKS * np.abs(new[1]), above)
         shrunk = (new[0] > old[0] + below) | (new[1] < old[1] - above)
     return np.asarray(shrunk | (new[0] > new[1]))
 

@@ -74,9 +74,7 @@ def _vertices(relation: Relation, inputs: dict[str, Interval]) -> Interval:
 
 def _padded(relation: Relation, low: FloatArray, high: FloatArray) -> Interval:
     support = VOCABULARY[relation.gives]
-    low = np.where(np.isnan(low), -np.inf, low - relation.accuracy * np.abs(low) - _TINY)
-    high = np.where(np.isnan(high), np.inf, high + relation.accuracy * np.abs(high) + _TINY)
-    # an infinite end of the wrong sign says nothing either: an overflow, not a bound
-    low = np.where(low == np.inf, -np.inf, low)
-    high = np.where(high == -np.inf, np.inf, high)
-    return np.maximum(low, support.low), np.minimum(high, support.high)
+    # fmax and fmin pass over NaN, as which an infinite end of the wrong sign, an overflow and no bound, comes out, too
+    low = np.fmax(low - (relation.accuracy * np.abs(low) + _TINY), support.low)
+    high = np.fmin(high + (relation.accuracy * np.abs(high) + _TINY), support.high)
+    return low, high
