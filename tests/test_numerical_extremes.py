@@ -18,6 +18,7 @@ import pandas as pd
 import pytest
 
 import extractor
+from extractor.sampling.noncentral import f_noncentrality_limits
 
 DIGITS = 50
 CLOSE = 1e-10
@@ -205,6 +206,34 @@ def test_limits_of_omega_squared(f: str, df1: int, df2: int) -> None:
             lam = share / (1 - share) * n
             reach = mp.mpf("1e-8") + 8 * EPS / (1 - share)
             below, above = (noncentral_f(mp.mpf(f), df1, df2, lam * (1 + s * reach)) for s in (-1, 1))
+            assert above < tail < below
+
+
+def noncentral_f_of_one_df(f: mp.mpf, df2: int, lam: mp.mpf) -> mp.mpf:
+    """P(F' <= f) with df1 = 1: the chance that |Z + sqrt(λ)| <= s·sqrt(f), over s = sqrt(chi-square(df2)/df2)."""
+    half, delta, root = mp.mpf(df2) / 2, mp.sqrt(lam), mp.sqrt(f)
+    log_scale = mp.log(2) + half * mp.log(half) - mp.loggamma(half)
+
+    def weighed(s: mp.mpf) -> mp.mpf:
+        density = mp.exp(log_scale + (df2 - 1) * mp.log(s) - half * s**2)
+        return density * (mp.ncdf(root * s - delta) - mp.ncdf(-root * s - delta))
+
+    # pieces along the density of s, and short ones where the chance climbs from 0 to 1
+    ends = {max(1 + step / mp.sqrt(2 * mp.mpf(df2)), mp.mpf(0)) for step in range(-14, 41)}
+    ends |= {max(delta + step, 0) / root for step in range(-12, 13, 3)}
+    return mp.quad(weighed, sorted(ends))
+
+
+@pytest.mark.parametrize(("f", "df2"), [("1e12", 1_000_000), ("1e6", 1_000_000), ("1e12", 60), ("40000", 60)])
+def test_limits_of_huge_noncentralities(f: str, df2: int) -> None:
+    """Non-centralities to 1e12, where sums over Poisson counts are out of reach, within 1e-9 of the exact ones."""
+    low, high = f_noncentrality_limits(float(f), 1.0, float(df2))
+    with mp.workdps(30):
+        for end, tail in ((low, mp.mpf("0.975")), (high, mp.mpf("0.025"))):
+            lam = mp.mpf(float(end))
+            below, above = (
+                noncentral_f_of_one_df(mp.mpf(f), df2, lam * (1 + s * mp.mpf("1e-9"))) for s in (-1, 1)
+            )
             assert above < tail < below
 
 
