@@ -121,12 +121,12 @@ def sensitivity(conversion: Conversion, *, method: str | None = None, level: flo
     method, level : as the conversion was made with.
     """
     parts = [p for chosen in conversion.chosen for p in _varied(conversion, chosen, method, level)]
-    effects = in_sheet_order(parts, EFFECT_COLUMNS)
+    effects = in_sheet_order(parts, VARIED_COLUMNS)
     fixed = [p for chosen in conversion.chosen for p in _not_values(conversion, chosen)]
     return Sensitivity(effects, _summary(conversion.evidence.table, effects, fixed))
 
 
-EFFECT_COLUMNS = [
+VARIED_COLUMNS = [
     *("row", *LABELS, "metric", "assumption", "by", "value", "range_low", "range_high"),
     *("estimate", "estimate_low", "estimate_high", "variance", "variance_low", "variance_high"),
     *("swing", "swing_in_se"),
