@@ -107,6 +107,7 @@ class _Gathering:
         self.table = table
         self.rows = table.rows
         self.coding = Coding(table)
+        self.constants: dict[float, FloatArray] = {}
         self.joint = self._joint_term()
         self.numbers = {v: n for v, n in table.numbers.items() if VOCABULARY[v[0]].role is Role.REPORTED}
         self.use = {v: usable(VOCABULARY[v[0]], n) for v, n in self.numbers.items()}
@@ -116,6 +117,7 @@ class _Gathering:
         )
         self._set_aside()
         self.weights = self.coding.weights(self.design, self.groups)
+        self.contrasts = distinct(table.fact("contrast"))
         self.direction = self.coding.directions()
         self.compared = self._compared()
         self.standardizer = self.coding.standardizers(self.design)
@@ -235,7 +237,7 @@ class _Gathering:
         for variable in columns:
             known = np.where(np.isnan(self.numbers[variable].value), _BOUND, _POINT)
             parts.append(np.where(self.use[variable], known, _ABSENT))
-        return np.column_stack(parts).astype(np.int16), columns
+        return np.column_stack([part.astype(np.int16) for part in parts]), columns
 
     def _block(self, rows: NDArray[np.intp], codes: NDArray[np.int16], columns: list[Variable]) -> Block:
         first = int(rows[0])
@@ -349,21 +351,22 @@ class _Gathering:
         # the two groups of a table of counts have no columns of their own
         several = block.groups >= 2 or (block.design == "two-group" and not block.groups)
         if several and self.compared[first]:
-            texts, which = np.unique(self.table.fact("contrast")[rows].astype(str), return_inverse=True)
-            stacked = np.stack([self.weights[str(t), block.groups] for t in texts])[which]
+            texts, codes = self.contrasts
+            held, which = np.unique(codes[rows], return_inverse=True)
+            stacked = np.stack([self.weights[str(texts[at]), block.groups] for at in held])[which]
             if stacked.any(axis=-1).all():
                 block.leaves["contrast_weight"] = Estimate(stacked, stacked, stacked)
         if not np.isnan(self.direction[first]):
             block.leaves["direction"] = _certain(self.direction[rows])
         count = coded_k(block)
         if count:
-            block.leaves.setdefault("k_groups", _certain(np.full(len(rows), count)))
+            block.leaves.setdefault("k_groups", self._constant(count, block))
         if not self.joint[first]:
-            block.leaves["one_factor"] = _certain(np.ones(len(rows)))
+            block.leaves["one_factor"] = self._constant(1.0, block)
         if block.design == "pre-post-control":
-            block.leaves.setdefault("df_effect", _certain(np.ones(len(rows))))
+            block.leaves.setdefault("df_effect", self._constant(1.0, block))
         if "p_value" in block.leaves and self.f_test[first] and "tails" not in block.leaves:
-            block.leaves["tails"] = _certain(np.full(len(rows), 2.0))
+            block.leaves["tails"] = self._constant(2.0, block)
         for name, estimate in self.sums.items():
             if np.isfinite(estimate.low[first]):
                 block.leaves[name] = Estimate(estimate.value[rows], estimate.low[rows], estimate.high[rows])
@@ -371,11 +374,17 @@ class _Gathering:
     def _add_assumptions(self, block: Block) -> None:
         supplied = {name: Assumption(d.value, d.by) for name, d in DEFAULTS.items()}
         supplied |= dict(self.table.assumptions)
-        size = len(block.positions)
         taken = {name: a for name, a in supplied.items() if name not in block.leaves and name in VOCABULARY}
         for name, assumption in taken.items():
-            block.leaves[name] = _certain(np.full(size, assumption.value))
+            block.leaves[name] = self._constant(assumption.value, block)
         block.assumed = taken
+
+    def _constant(self, value: float, block: Block) -> Estimate:
+        """One value known of all rows of a block; blocks share it, so nobody may write into it."""
+        if value not in self.constants:
+            self.constants[value] = np.full(self.rows, value)
+            self.constants[value].flags.writeable = False
+        return _certain(self.constants[value][: len(block.positions)])
 
 
 def coded_k(block: Block) -> float:

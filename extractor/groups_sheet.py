@@ -6,6 +6,7 @@ designs get them as cells, with one column per factor.
 
 from __future__ import annotations
 
+import zipfile
 from dataclasses import replace
 from pathlib import Path
 from typing import TYPE_CHECKING
@@ -80,6 +81,9 @@ def with_groups(
 
 
 def _has_sheet(source: str | Path) -> bool:
+    # what reads workbooks is heavy, and comes only for what may be one
+    if not zipfile.is_zipfile(source):
+        return False
     from extractor.source.workbook import has_sheet
 
     return has_sheet(Path(source), SHEET)

@@ -51,7 +51,7 @@ def convert_partitions(
     numbered = frame if ROW in frame.columns else numbered_rows(frame)
     # a blank row says which columns come out, without computing anything
     blank = arranged(typed_row({str(name): "" for name in frame.columns if name != ROW}), book, None, [])
-    shape = whole_counts(convert_evidence(blank.evidence, **wanted).effects).iloc[:0]
+    shape = pd.DataFrame(whole_counts(convert_evidence(blank.evidence, **wanted).columns)).iloc[:0]
     return numbered.map_partitions(_effects, book, wanted, shape, meta=shape, enforce_metadata=False)
 
 
@@ -116,4 +116,4 @@ def _effects(part: pd.DataFrame, book: Codebook, wanted: dict[str, Any], empty: 
     reading = arranged(grid, book, None, [])
     conversion = convert_evidence(reading.evidence, **wanted)
     reading.audit(conversion, across=False)
-    return whole_counts(conversion.effects)
+    return pd.DataFrame(whole_counts(conversion.columns))

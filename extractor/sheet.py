@@ -9,21 +9,39 @@ from __future__ import annotations
 import datetime
 import difflib
 import re
+from dataclasses import replace
 from pathlib import Path
 from typing import TYPE_CHECKING
 
 import numpy as np
 
 from extractor.codebook import MOST_GROUPS, RESPONSES, Codebook, Meaning, canonical_names, normalised
+from extractor.distinct import spread
 from extractor.errors import UnreadableInput
 from extractor.printed.apa import columns_from_text
+from extractor.printed.plain import read_plain
 from extractor.printed.reading import BLANK, Reading, is_missing, quoted, refuse, tidy
-from extractor.printed.reported import DATE_ADVICE, CellError, UncachedFormula, read_number
+from extractor.printed.reported import (
+    DATE_ADVICE,
+    CellError,
+    Setting,
+    UncachedFormula,
+    read_cell,
+    read_number,
+)
 from extractor.quantities import DESIGNS, VOCABULARY, Shape, group_heading
-from extractor.source.columns import Mask, factorized, filled, numbers_from, printed, take_rows
-from extractor.source.grid import Grid, ObjectArray, column_letters, heading_text, is_blank
+from extractor.source.columns import (
+    Mask,
+    factorized,
+    filled,
+    numbers_from,
+    numbers_with_plain,
+    printed,
+    take_rows,
+)
+from extractor.source.grid import Grid, column_letters, heading_text, is_blank
 from extractor.source.reader import read_grid
-from extractor.table import Numbers, Place, ReportedTable, Variable
+from extractor.table import Numbers, ObjectArray, Place, ReportedTable, Variable
 
 if TYPE_CHECKING:
     import pandas as pd
@@ -171,48 +189,48 @@ class _Assembly:
 
     def number_column(self, index: int, variable: Variable) -> Numbers:
         """One column of printed numbers."""
-        distinct, codes = factorized(self.grid.columns[index], self.grid.formats[index])
+        cells, formats, codes = factorized(self.grid.columns[index], self.grid.formats[index])
         book, quantity = self.codebook, VOCABULARY[variable[0]]
-        decimals = book.decimals_of(variable)
-        readings = [
-            read_number(
-                raw,
-                quantity,
-                decimal_mark=book.decimal_mark,
-                rounding=book.rounding,
-                missing=book.missing,
-                # text in a workbook kept every digit that was typed
-                decimals=None if self.grid.stored and isinstance(raw, str) else decimals,
-                number_format=code,
-                alpha=book.alpha,
-            )
-            for raw, code in distinct
-        ]
-        return numbers_from(readings, codes, self.place(index))
+        reads = Setting(
+            quantity, book.decimal_mark, book.rounding, book.missing, book.alpha, book.decimals_of(variable)
+        )
+        # text in a workbook kept every digit that was typed
+        typed = replace(reads, decimals=None) if self.grid.stored else reads
+        plain = read_plain(cells, typed)
+        others = np.setdiff1d(np.arange(len(cells)), plain.at, assume_unique=True).tolist()
+        read = {
+            at: read_cell(cells[at], typed if isinstance(cells[at], str) else reads, formats[at])
+            for at in others
+        }
+        return numbers_with_plain(plain, read, len(cells), codes, self.place(index))
 
     def fact_column(self, index: int, name: str) -> ObjectArray:
         """One column of coded words, "" where blank."""
-        distinct, codes = factorized(self.grid.columns[index])
-        read = [self.fact(name, raw) for raw, _ in distinct]
+        cells, _, codes = factorized(self.grid.columns[index])
+        read = [self.fact(name, raw) for raw in cells]
         if any(problem for _, problem in read):
             remarks = self.understood if name in _LABELS else self.problems
-            remarks += [self.remark(index, row, read[at][1]) for row, at in enumerate(codes) if read[at][1]]
-        return np.fromiter((word for word, _ in read), dtype=object, count=len(read))[codes]
+            remarks += [
+                self.remark(index, row, read[at][1]) for row, at in enumerate(codes.tolist()) if read[at][1]
+            ]
+        return spread((word for word, _ in read), codes)
 
     def fact(self, name: str, raw: object) -> tuple[str, str]:
         """A coded word, and what is wrong with it."""
-        if raw is None or is_blank(raw):
+        if raw is None:
             return "", ""
         if isinstance(raw, (CellError, UncachedFormula)):
             return "", read_number(raw, VOCABULARY["f_value"]).problem
         if isinstance(raw, (datetime.date, datetime.time)):
             return str(raw), f"the cell holds a date or time: {DATE_ADVICE}"
         # fixed-width arrays of words lose a NUL at the end, so that two words would become one
-        text = heading_text(raw).replace("\x00", "").strip()
+        text = (raw if isinstance(raw, str) else heading_text(raw)).replace("\x00", "").strip()
+        if name in _LABELS:
+            return text, ""
         plain = tidy(text)
         if name in _SIGNED and plain in _SIGNS:
             return _SIGNS[plain], ""
-        if name not in _LABELS and is_missing(plain, self.codebook.missing):
+        if is_missing(plain, self.codebook.missing):
             return "", ""
         if name in _WORDS:
             word = normalised(plain).replace("_", "-")
@@ -221,19 +239,19 @@ class _Assembly:
 
     def extra_column(self, index: int) -> None:
         """A column nobody knows, kept as text; a heading that nearly is known is pointed out."""
-        column = self.grid.columns[index]
+        cells, _, codes = factorized(self.grid.columns[index])
         heading = self.grid.headings[index].strip()
         if heading:
             self.point_out(heading)
-        elif all(map(is_blank, column)):
+        elif all(map(is_blank, cells)):
             return
         else:
             heading = f"column {self.letters[index]}"
             self.notes.append(f"{heading} has no heading; its cells are carried along unread")
         while heading in self.extras:
             heading = f"{heading} [{self.letters[index]}]"
-        texts = (raw if isinstance(raw, str) else "" if raw is None else heading_text(raw) for raw in column)
-        self.extras[heading] = np.fromiter(texts, dtype=object, count=self.rows)
+        texts = (raw if isinstance(raw, str) else "" if raw is None else heading_text(raw) for raw in cells)
+        self.extras[heading] = spread(texts, codes)
 
     def point_out(self, heading: str) -> None:
         """Note a heading that looks like one that would have been read."""
@@ -252,11 +270,9 @@ class _Assembly:
         """Numbers in running text, as if they stood in columns of their own; a filled column wins."""
         book, place = self.codebook, self.place(index)
         self.reported_place = place
-        distinct, codes = factorized(self.facts["reported"])
-        parsed = [
-            columns_from_text(str(t), book.decimal_mark, book.rounding, book.alpha) for t, _ in distinct
-        ]
-        for row, at in enumerate(codes):
+        texts, _, codes = factorized(self.facts["reported"])
+        parsed = [columns_from_text(str(t), book.decimal_mark, book.rounding, book.alpha) for t in texts]
+        for row, at in enumerate(codes.tolist()):
             _, understood, problem = parsed[at]
             if problem:
                 self.problems.append(self.remark(index, row, problem))

@@ -149,7 +149,7 @@ def command(
     said = (*cautions.EFFECTS, *(cautions.FINDINGS if result.audit.findings else ()))
     if out is not None:
         request = replace(request, sensitivity=ranged)
-        rows = len(result.effects)
+        rows = result.conversion.evidence.table.rows
         with running.stage(f"writing {rows} rows", rows, counts=True) as tick:
             running.mention(package.write_conversion(out, result, request, force=force, tick=tick))
         click.echo(f"written to {out}", err=True)
@@ -160,8 +160,8 @@ def command(
         terminal.show_cautions(page, said)
     elif formats:
         effects = effects_as_written(result, renamed)
-        change = str if csv_raw else tables.neutralised
-        lines = tables.csv_lines(effects, change) if formats[0] == "csv" else tables.json_lines(effects)
+        is_csv = formats[0] == "csv"
+        lines = tables.csv_lines(effects, raw=csv_raw) if is_csv else tables.json_lines(effects)
         sys.stdout.writelines(lines)
         terminal.show_cautions(terminal.console(stderr=True), said)
     else:

@@ -7,22 +7,19 @@ from collections.abc import Iterable
 from contextlib import ExitStack
 from dataclasses import dataclass, field, replace
 from pathlib import Path
-from typing import IO
-
-import pandas as pd
 
 from extractor import cautions
-from extractor.api import Reading, Result
+from extractor.api import Reading
 from extractor.audit.run import Audit
 from extractor.blockwise import NOT_COMPARED, Tally
 from extractor.output import trail
 from extractor.output.cells import reading_notes
-from extractor.output.columns import EFFECTS, FINDINGS, whole_counts
+from extractor.output.columns import EFFECTS, FINDINGS, Table
 from extractor.output.description import Resource, csv_resource, describe, resource
-from extractor.output.files import output_folder
+from extractor.output.files import encoded, output_folder
 from extractor.output.package import AUDIT_FILES, CONVERT_FILES
-from extractor.output.request import Request, effects_as_written
-from extractor.output.tables import csv_lines, neutralised
+from extractor.output.request import Request, columns_as_written, csv_headings
+from extractor.output.tables import csv_lines
 from extractor.routes.conversion import convert_evidence
 from extractor.table import ReportedTable
 
@@ -34,12 +31,12 @@ _MOST_NOTES = 1_000
 class Written:
     """One block as text.
 
-    headings : the first line of a csv file, by file. bodies : what follows it, or the rows of the derivations.
+    headings : the first line of a csv file, by file. bodies : the lines after it, or the rows of the derivations.
     relations : used in any row. sample : the block's table and effects without rows, for the description.
     """
 
     headings: dict[str, str]
-    bodies: dict[str, str]
+    bodies: dict[str, bytes]
     relations: set[str]
     tally: Tally
     notes: list[str]
@@ -51,8 +48,8 @@ class Sample:
     """What the description of the folder says of its tables: their columns and how the sheet was read."""
 
     table: ReportedTable
-    effects: pd.DataFrame
-    findings: pd.DataFrame
+    effects: Table
+    findings: Table
     named: dict[str, str] = field(default_factory=dict)
 
 
@@ -74,18 +71,16 @@ class Converting:
             standardizer=request.standardizer,
         )
         audit = reading.audit(conversion, across=False)
-        result = Result(conversion, audit)
-        effects = effects_as_written(result, request.rename)
+        effects = columns_as_written(conversion, request.rename)
         written = _audited(reading, audit, request)
         _put(written, "effects.csv", effects, request)
-        written.bodies["derivations.json"] = ",\n".join(
-            row for rows in trail.row_texts(conversion) for row in rows
-        )
+        written.bodies["derivations.json"] = b"".join(map(encoded, trail.rows_in_parts(conversion)))
         written.relations = trail.relations_used(conversion)
         written.tally.statuses = Counter(conversion.columns["status"].tolist())
-        headings = effects.columns if request.raw else map(neutralised, effects.columns)
-        written.sample.effects = whole_counts(result.effects).iloc[:0]
-        written.sample.named = dict(zip(result.effects.columns, headings, strict=True))
+        written.sample.named = csv_headings(conversion, request)
+        written.sample.effects = {
+            name: values[:0] for name, values in zip(written.sample.named, effects.values(), strict=True)
+        }
         return written
 
 
@@ -113,15 +108,15 @@ def _audited(reading: Reading, audit: Audit, request: Request) -> Written:
     bare = replace(bare, settings={**table.settings, "from_reported": {}, "problems": (), "conflicts": ()})
     notes = [*reading_notes(table), *reading.notes]
     frame = audit.frame
-    written = Written({}, {}, set(), tally, notes, Sample(bare, pd.DataFrame(), frame.iloc[:0]))
+    written = Written({}, {}, set(), tally, notes, Sample(bare, {}, frame.iloc[:0]))
     _put(written, "findings.csv", frame, request)
     return written
 
 
-def _put(written: Written, name: str, frame: pd.DataFrame, request: Request) -> None:
-    lines = csv_lines(frame, str if request.raw else neutralised)
+def _put(written: Written, name: str, table: Table, request: Request) -> None:
+    lines = csv_lines(table, raw=request.raw)
     written.headings[name] = next(lines)
-    written.bodies[name] = "".join(lines)
+    written.bodies[name] = b"".join(map(encoded, lines))
 
 
 def write_blocks(
@@ -143,13 +138,13 @@ def write_blocks(
     first: Sample | None = None
     with output_folder(folder, CONVERT_FILES if converting else AUDIT_FILES, force=force) as made:
         with ExitStack() as open_files:
-            streams = {name: open_files.enter_context(_opened(made / name)) for name in names}
+            streams = {name: open_files.enter_context((made / name).open("wb")) for name in names}
             for block in blocks:
                 for name, stream in streams.items():
                     if first is None:
-                        stream.write(block.headings.get(name, trail.OPENING))
+                        stream.write(encoded(block.headings.get(name, trail.OPENING)))
                     elif name not in block.headings:
-                        stream.write(",\n")
+                        stream.write(b",\n")
                     stream.write(block.bodies[name])
                 first = first or block.sample
                 relations |= block.relations
@@ -157,15 +152,11 @@ def write_blocks(
                 notes.update(dict.fromkeys(block.notes[: _MOST_NOTES - len(notes)]))
                 tick(block.tally.rows)
             if converting:
-                streams["derivations.json"].write(trail.closing(relations))
+                streams["derivations.json"].write(encoded(trail.closing(relations)))
         assert first is not None
         said = (*(cautions.EFFECTS if converting else ()), *cautions.FINDINGS)
         describe(made, first.table, request, _resources(made, first, request), said, [*notes, NOT_COMPARED])
     return tally, list(notes)
-
-
-def _opened(path: Path) -> IO[str]:
-    return path.open("w", encoding="utf-8", errors="backslashreplace", newline="")
 
 
 def _resources(made: Path, sample: Sample, request: Request) -> list[Resource]:

@@ -4,12 +4,20 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass, field
+from typing import Any
 
+import numpy as np
 import pandas as pd
+from numpy.typing import NDArray
+from pandas.api.extensions import ExtensionArray
 
 from extractor.catalogue.relation import Grade
 from extractor.findings import Severity
 from extractor.quantities import METRICS
+
+Values = NDArray[Any] | ExtensionArray
+Table = pd.DataFrame | Mapping[str, Values]
+"""Columns of one length by name; in order, an effect table's need no frame to be written."""
 
 
 @dataclass(frozen=True, slots=True)
@@ -126,35 +134,40 @@ ROUTES: dict[str, Column] = {
 }
 
 
-def is_text(column: pd.Series) -> bool:
+def is_text(column: Values | pd.Series) -> bool:
     """Whether a column holds words."""
     return bool(pd.api.types.is_object_dtype(column) or pd.api.types.is_string_dtype(column))
 
 
-def texts(column: pd.Series) -> list[str]:
+def texts(column: Values | pd.Series) -> list[str]:
     """A column's words; "" where blank."""
-    listed = column.tolist()
+    listed: list[str] = column.tolist()
     if set(map(type, listed)) <= {str}:
         return listed
-    blank = column.isna().tolist()
+    blank = pd.isna(column).tolist()
     return ["" if empty else str(value) for value, empty in zip(listed, blank, strict=True)]
 
 
-def whole_counts(frame: pd.DataFrame) -> pd.DataFrame:
-    """The frame with columns of counts as integers, where every value is one; blanks stay blanks."""
-    counts = [
-        name
-        for name, column in EFFECTS.items()
-        if column.kind == "integer" and name in frame and pd.api.types.is_float_dtype(frame[name])
-    ]
-    whole = [name for name in counts if (frame[name].isna() | (frame[name] % 1 == 0)).all()]
-    return frame.astype(dict.fromkeys(whole, "Int64"))
+def whole_counts(columns: Mapping[str, NDArray[Any]]) -> dict[str, Values]:
+    """The effect table with columns of counts as integers, where every value is one; blanks stay blanks."""
+    return {
+        name: _whole(values)
+        if name in EFFECTS and EFFECTS[name].kind == "integer" and values.dtype.kind == "f"
+        else values
+        for name, values in columns.items()
+    }
 
 
-def fields(
-    frame: pd.DataFrame, known: Mapping[str, Column], headings: Mapping[str, str]
-) -> list[dict[str, object]]:
-    """Table Schema fields of a frame's columns, in order.
+def _whole(values: NDArray[np.float64]) -> Values:
+    blank = np.isnan(values)
+    counts = np.where(blank, 0, values)
+    if (counts % 1 != 0).any():
+        return values
+    return pd.arrays.IntegerArray(counts.astype(np.int64), blank)
+
+
+def fields(table: Table, known: Mapping[str, Column], headings: Mapping[str, str]) -> list[dict[str, object]]:
+    """Table Schema fields of a table's columns, in order.
 
     Parameters
     ----------
@@ -162,10 +175,10 @@ def fields(
     headings : heading as written, by column.
     """
     found: list[dict[str, object]] = []
-    for name in frame.columns:
+    for name in map(str, table):
         column = known.get(name) or Column("string", "carried through from the sheet as it stood")
         kind = column.kind
-        if kind == "integer" and not pd.api.types.is_integer_dtype(frame[name]):
+        if kind == "integer" and not pd.api.types.is_integer_dtype(table[name]):
             kind = "number"
         described: dict[str, object] = {
             "name": headings[name],

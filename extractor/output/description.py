@@ -6,11 +6,9 @@ import json
 from collections.abc import Mapping, Sequence
 from pathlib import Path
 
-import pandas as pd
-
 from extractor import __version__
 from extractor.output.cells import reading_notes
-from extractor.output.columns import Column, fields
+from extractor.output.columns import Column, Table, fields
 from extractor.output.record import settings, sha256_of, sources
 from extractor.output.request import Request
 from extractor.table import ReportedTable
@@ -51,7 +49,7 @@ def resource(path: Path, title: str) -> Resource:
 def csv_resource(
     path: Path,
     title: str,
-    frame: pd.DataFrame,
+    table: Table,
     columns: Mapping[str, Column],
     *,
     raw: bool,
@@ -63,14 +61,14 @@ def csv_resource(
 
     Parameters
     ----------
-    frame : what was written. columns : meaning of its columns. raw : its texts are as they stood.
+    table : what was written. columns : meaning of its columns. raw : its texts are as they stood.
     key : columns that tell its rows apart. points : field of the effect table by column that names one of its rows.
     headings : heading as written by column, where they differ.
     """
-    named = dict(headings or {name: name for name in frame.columns})
+    named = dict(headings or {name: name for name in map(str, table)})
     schema: dict[str, object] = {
         "$schema": f"{_PROFILES}/tableschema.json",
-        "fields": fields(frame, columns, named),
+        "fields": fields(table, columns, named),
         "missingValues": [""],
     }
     if key:

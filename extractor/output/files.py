@@ -7,9 +7,10 @@ import importlib.util
 import os
 import shutil
 import tempfile
-from collections.abc import Collection, Iterator
+from collections.abc import Collection, Iterable, Iterator
 from contextlib import ExitStack, contextmanager, suppress
 from datetime import UTC, datetime
+from itertools import islice
 from pathlib import Path
 
 from extractor.errors import UsageError
@@ -28,6 +29,24 @@ def fixed_time() -> datetime:
     if not (said.isascii() and said.isdigit() and len(said) < 12):
         return _STAMP
     return min(max(datetime.fromtimestamp(int(said), UTC), _FIRST), _LAST)
+
+
+def write_parts(path: Path, parts: Iterable[str]) -> None:
+    """Write text that comes in parts; they are best some hundred kilobytes long, so that memory is used again."""
+    with path.open("wb") as stream:
+        stream.writelines(map(encoded, parts))
+
+
+def encoded(text: str) -> bytes:
+    """Text as UTF-8, line feeds as they are; signs that cannot be written so become escapes."""
+    return text.encode("utf-8", "backslashreplace")
+
+
+def batches(texts: Iterable[str], size: int, between: str) -> Iterator[str]:
+    """So many texts at a time as one, with what stands between them."""
+    left = iter(texts)
+    while batch := list(islice(left, size)):
+        yield between.join(batch)
 
 
 def refuse_existing(path: Path, *, force: bool) -> None:

@@ -21,14 +21,10 @@ from extractor.output.columns import (
 )
 from extractor.output.description import Resource, csv_resource, describe, resource
 from extractor.output.files import output_folder
-from extractor.output.prov import write_prov
-from extractor.output.request import Request, effects_as_written
-from extractor.output.tables import WRITERS, neutralised, write_csv
+from extractor.output.request import Request, columns_as_written, csv_headings
+from extractor.output.tables import WRITERS, write_csv
 from extractor.output.terminal import counted
 from extractor.output.trail import Tick, write_derivations
-from extractor.overlap.dependence import covariance_matrix, dependence
-from extractor.routes.by_route import by_route
-from extractor.routes.sensitivity import sensitivity
 from extractor.table import ReportedTable
 
 AUDIT_FILES = ("findings.csv", "datapackage.json")
@@ -67,29 +63,29 @@ def write_conversion(folder: Path, result: Result, request: Request, *, force: b
     UsageError : the folder exists without ``force``, it cannot be written, or a renaming is impossible.
     """
     table = result.conversion.evidence.table
-    effects = effects_as_written(result, request.rename)
-    written = effects.columns if request.raw else map(neutralised, effects.columns)
-    named = dict(zip(result.effects.columns, written, strict=True))
+    conversion, findings = result.conversion, result.findings
+    named = csv_headings(conversion, request)
     notes: list[str] = []
     with output_folder(folder, CONVERT_FILES, force=force) as made:
+        effects = columns_as_written(conversion, request.rename)
         write_csv(effects, made / "effects.csv", raw=request.raw)
-        write_csv(result.findings, made / "findings.csv", raw=request.raw)
+        write_csv(findings, made / "findings.csv", raw=request.raw)
         write_derivations(result, made / "derivations.json", tick)
         resources = [
             csv_resource(
                 made / "effects.csv",
                 "the effect table, one row per row of the sheet",
-                whole_counts(result.effects),
+                whole_counts(conversion.columns),
                 EFFECTS,
                 raw=request.raw,
                 key=["row"],
                 headings=named,
             ),
-            _findings_resource(made, result.findings, request, {"row": named["row"]}),
+            _findings_resource(made, findings, request, {"row": named["row"]}),
             resource(made / "derivations.json", "how every effect came about, with the routes not taken"),
         ]
         for ending in sorted(set(request.formats) & set(WRITERS) - {"csv"}):
-            notes += WRITERS[ending](effects, made / f"effects.{ending}")
+            notes += WRITERS[ending](pd.DataFrame(effects), made / f"effects.{ending}")
             resources.append(resource(made / f"effects.{ending}", "the effect table again"))
         if request.covariance:
             resources += _covariances(made, result, request, named["row"], notes)
@@ -103,6 +99,8 @@ def write_conversion(folder: Path, result: Result, request: Request, *, force: b
 
 def _covariances(made: Path, result: Result, request: Request, row: str, notes: list[str]) -> list[Resource]:
     """Covariances of effects that share participants: as a list, and as a matrix unless that is too large."""
+    from extractor.overlap.dependence import covariance_matrix, dependence
+
     shared = dependence(result, request.outcomes)
     notes += _unresolved(shared.unresolved)
     write_csv(shared.table, made / COVARIANCE, raw=request.raw)
@@ -151,6 +149,9 @@ def _unresolved(pairs: pd.DataFrame) -> list[str]:
 
 def _sensitivity(made: Path, result: Result, request: Request, row: str) -> list[Resource]:
     """What effects become over the ranges of assumptions and along other routes."""
+    from extractor.routes.by_route import by_route
+    from extractor.routes.sensitivity import sensitivity
+
     found = sensitivity(result.conversion, method=request.variance, level=request.level)
     tables = (
         (
@@ -181,6 +182,8 @@ def _views(made: Path, result: Result, request: Request, notes: list[str]) -> li
             resource(made / ANNOTATED, "the coder's sheets with marks on the cells findings name")
         )
     if "prov" in request.formats:
+        from extractor.output.prov import write_prov
+
         write_prov(result, request.sheet, made / PROVENANCE)
         resources.append(resource(made / PROVENANCE, "where every value came from, in PROV-JSON"))
     if "html" in request.formats:

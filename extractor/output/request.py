@@ -9,9 +9,11 @@ import pandas as pd
 
 from extractor.api import Result
 from extractor.errors import UsageError
-from extractor.output.columns import whole_counts
+from extractor.output.columns import Values, whole_counts
+from extractor.output.tables import neutralised
 from extractor.printed.reading import quoted
 from extractor.quantities import close_matches
+from extractor.routes.conversion import Conversion
 from extractor.table import Assumption
 
 
@@ -61,8 +63,23 @@ def headings(columns: list[str], rename: Mapping[str, str]) -> dict[str, str]:
     return found
 
 
+def headings_of(conversion: Conversion, rename: Mapping[str, str]) -> dict[str, str]:
+    """The heading of each column, over those of the codebook; raises as ``headings`` does."""
+    return headings(list(conversion.columns), {**conversion.evidence.table.rename, **rename})
+
+
+def columns_as_written(conversion: Conversion, rename: Mapping[str, str]) -> dict[str, Values]:
+    """The columns of the effect table under the headings asked for; raises as ``headings`` does."""
+    named = headings_of(conversion, rename)
+    return {named[name]: values for name, values in whole_counts(conversion.columns).items()}
+
+
+def csv_headings(conversion: Conversion, request: Request) -> dict[str, str]:
+    """The heading of each column of the effect table in csv files; raises as ``headings`` does."""
+    named = headings_of(conversion, request.rename)
+    return named if request.raw else {name: neutralised(heading) for name, heading in named.items()}
+
+
 def effects_as_written(result: Result, rename: Mapping[str, str]) -> pd.DataFrame:
-    """The effect table under the headings asked for; raises as ``headings`` does."""
-    effects = whole_counts(result.effects)
-    merged = {**result.conversion.evidence.table.rename, **rename}
-    return effects.rename(columns=headings(list(effects.columns), merged))
+    """The same as a frame."""
+    return pd.DataFrame(columns_as_written(result.conversion, rename))

@@ -16,20 +16,20 @@ import numpy as np
 import pandas as pd
 
 from extractor.errors import UsageError
-from extractor.output.columns import is_text, texts
-from extractor.output.files import fixed_time
-from extractor.output.workbook import write_xlsx
-from extractor.table import FloatArray
+from extractor.output.columns import Table, Values, is_text, texts
+from extractor.output.files import batches, fixed_time, write_parts
+from extractor.output.pieces import number_texts
 
 Writer = Callable[[pd.DataFrame, Path], list[str]]
 
-_CHUNK = 20_000
-"""Rows formatted at a time, so that memory stays flat."""
+_CHUNK, _BATCH = 20_000, 1_000
+"""Rows formatted at a time, so that memory stays flat, and lines put together at a time."""
 _NUMBER = re.compile(r"[+-]?(?:[0-9]+(?:\.[0-9]*)?|\.[0-9]+)(?:[eE][+-]?[0-9]+)?")
 _SIGN = "[=+\\-@＝＋－＠]"
 """What a formula begins with, in the width of East Asian keyboards too."""
-_FORMULA = re.compile(rf"\A(?=[\t\r\n]|[\s\x00-\x1f\u200b\ufeff]*{_SIGN})|(?<=[;\t\r\n])(?={_SIGN})")
-_QUOTED = re.compile(r'[",;|\t\r\n]|\A\s|\s\Z')
+_FORMULA = re.compile(rf"[\t\r\n]|[\s\x00-\x1f\u200b\ufeff]*{_SIGN}")
+_LATER = re.compile(rf"[;\t\r\n](?={_SIGN})")
+_QUOTED = re.compile(r'[",;|\t\r\n]')
 _STATA_NAME = 32
 _STATA_TEXT = 2045
 """Longest text of a fixed-width column, in bytes (Stata's dta format, version 118)."""
@@ -43,46 +43,53 @@ def neutralised(text: str) -> str:
     or line break, where some spreadsheets begin a new cell (OWASP, CSV injection). Spaces at the start, and signs
     there that no screen shows, hide nothing.
     """
-    return text if _NUMBER.fullmatch(text) else _FORMULA.sub("'", text)
+    if _NUMBER.fullmatch(text):
+        return text
+    # to look for single signs first is much faster than the search for what they come before
+    if ";" in text or "\n" in text or "\t" in text or "\r" in text:
+        text = _LATER.sub(r"\g<0>'", text)
+    return "'" + text if _FORMULA.match(text) else text
 
 
-def write_csv(frame: pd.DataFrame, path: Path, *, raw: bool = False) -> list[str]:
+def write_csv(table: Table, path: Path, *, raw: bool = False) -> list[str]:
     """UTF-8, line feeds, shortest numbers that read back exactly; ``raw`` leaves texts as they are."""
-    change = str if raw else neutralised
-    with path.open("w", encoding="utf-8", errors="backslashreplace", newline="") as stream:
-        stream.writelines(csv_lines(frame, change))
+    write_parts(path, csv_lines(table, raw=raw))
     return []
 
 
-def csv_lines(frame: pd.DataFrame, change: Callable[[str], str] = neutralised) -> Iterator[str]:
+def csv_lines(table: Table, *, raw: bool = False) -> Iterator[str]:
     """The lines of a csv file, many at a time, each with its line feed."""
-    yield ",".join(_quoted(change(str(name))) for name in frame.columns) + "\n"
-    for start in range(0, len(frame), _CHUNK):
-        part = frame.iloc[start : start + _CHUNK]
-        columns = [_csv_cells(part.iloc[:, at], change) for at in range(part.shape[1])]
-        yield "\n".join(map(",".join, zip(*columns, strict=True))) + "\n"
+
+    def cell(text: str) -> str:
+        return _quoted(text if raw else neutralised(text))
+
+    yield ",".join(cell(str(name)) for name in table) + "\n"
+    columns = [column.values if isinstance(column, pd.Series) else column for _, column in table.items()]
+    rows = len(columns[0]) if columns else 0
+    for start in range(0, rows, _CHUNK):
+        parts = [_csv_cells(column[start : start + _CHUNK], cell) for column in columns]
+        for lines in batches(map(",".join, zip(*parts, strict=True)), _BATCH, "\n"):
+            yield lines + "\n"
 
 
 def _quoted(text: str) -> str:
-    return '"' + text.replace('"', '""') + '"' if _QUOTED.search(text) else text
+    if _QUOTED.search(text) or text[:1].isspace() or text[-1:].isspace():
+        return '"' + text.replace('"', '""') + '"'
+    return text
 
 
-def _csv_cells(column: pd.Series, change: Callable[[str], str]) -> list[str]:
+def _csv_cells(column: Values, cell: Callable[[str], str]) -> list[str]:
     if is_text(column):
         shown = texts(column)
-        known = {text: _quoted(change(text)) for text in dict.fromkeys(shown)}
+        known = {text: cell(text) for text in dict.fromkeys(shown)}
         return list(map(known.__getitem__, shown))
     if column.dtype == np.float64:
-        return number_texts(column.to_numpy(), ("", "INF", "-INF"))
+        return number_texts(np.asarray(column), ("", "INF", "-INF"))
+    if column.dtype.kind in "iu":
+        counts = column.astype(object).tolist()
+        said = {count: _number(count) for count in dict.fromkeys(counts)}
+        return list(map(said.__getitem__, counts))
     return [_number(value) for value in column.astype(object)]
-
-
-def number_texts(values: FloatArray, odd: tuple[str, str, str]) -> list[str]:
-    """Shortest texts that read back exactly; ``odd`` stand for NaN, infinity and minus infinity."""
-    found = list(map(repr, values.tolist()))
-    for at in np.flatnonzero(~np.isfinite(values)).tolist():
-        found[at] = odd[0] if np.isnan(values[at]) else odd[1] if values[at] > 0 else odd[2]
-    return found
 
 
 def _number(value: object) -> str:
@@ -97,8 +104,7 @@ def _number(value: object) -> str:
 
 def write_json(frame: pd.DataFrame, path: Path) -> list[str]:
     """A list with one object a row; blank numbers are null, and so are ends without a limit."""
-    with path.open("w", encoding="utf-8", errors="backslashreplace", newline="") as stream:
-        stream.writelines(json_lines(frame))
+    write_parts(path, json_lines(frame))
     return []
 
 
@@ -132,6 +138,13 @@ def _plain(value: object) -> object:
 def as_json(value: object) -> str:
     """One line of JSON with sorted keys."""
     return json.dumps(value, ensure_ascii=False, allow_nan=False, sort_keys=True)
+
+
+def write_xlsx(frame: pd.DataFrame, path: Path) -> list[str]:
+    """An Excel workbook; what writes it is heavy and comes only when asked for."""
+    from extractor.output import workbook
+
+    return workbook.write_xlsx(frame, path)
 
 
 def write_parquet(frame: pd.DataFrame, path: Path) -> list[str]:

@@ -5,7 +5,8 @@ from __future__ import annotations
 import math
 import os
 import sys
-from collections.abc import Iterable, Sequence
+from collections import Counter
+from collections.abc import Iterable, Mapping, Sequence
 from typing import Any
 
 import pandas as pd
@@ -17,6 +18,7 @@ from extractor.api import Result
 from extractor.audit.run import Audit
 from extractor.findings import Finding, Severity
 from extractor.quantities import VOCABULARY
+from extractor.routes.conversion import Column
 from extractor.words import listed, plain
 
 MOST_ROWS = 1_000
@@ -108,7 +110,7 @@ def number(value: Any) -> str:
 
 def show_effects(to: Console, result: Result, level: float) -> None:
     """The effect table, what became of the rows, and why some have no effect."""
-    rows = len(result.effects)
+    rows = result.conversion.evidence.table.rows
     metric = result.conversion.metric
     say(to, Text(f"{metric} ({VOCABULARY[metric].symbol})", "bold"))
     headings = ["row", "study", "estimate", f"{level * 100:g} % CI"]
@@ -195,26 +197,25 @@ def _worst_by_row(audit: Audit) -> dict[int, Text]:
 
 def show_summary(to: Console, result: Result) -> None:
     """Counts by status, grade and severity, and the reasons of rows without an effect."""
-    effects = result.effects
-    by_status = [
-        f"{(effects['status'] == word).sum()} {word}" for word in ("converted", "bounded", "blocked")
-    ]
-    say(to, f"{counted(len(effects), 'row')}: {listed(by_status)}.")
-    grades = effects.loc[effects["grade"] != "", "grade"].value_counts()
-    if len(grades):
-        say(to, f"Grades: {listed([f'{grades[g]} {g}' for g in sorted(grades.index)])}.")
-    for (status, reason), rows in _reasons(effects).items():
+    columns = result.conversion.columns
+    statuses, grades = (Counter(columns[name].tolist()) for name in ("status", "grade"))
+    by_status = [f"{statuses[word]} {word}" for word in ("converted", "bounded", "blocked")]
+    say(to, f"{counted(statuses.total(), 'row')}: {listed(by_status)}.")
+    if by_grade := [f"{grades[word]} {word}" for word in sorted(grades) if word]:
+        say(to, f"Grades: {listed(by_grade)}.")
+    for (status, reason), rows in _reasons(columns).items():
         label = Text(f"{status}, {rows_in_words(rows)}: ", _STYLES[status])
         say(to, label.append(reason, "default"), 2, 2)
     more = "; extractor audit shows them in full." if result.audit.findings else "."
     say(to, _finding_counts(result.audit) + more)
 
 
-def _reasons(effects: pd.DataFrame) -> dict[tuple[str, str], list[int]]:
+def _reasons(effects: Mapping[str, Column]) -> dict[tuple[str, str], list[int]]:
     found: dict[tuple[str, str], list[int]] = {}
-    said = effects.loc[effects["reason"] != "", ["status", "reason", "row"]]
-    for status, reason, row in said.itertuples(index=False):
-        found.setdefault((str(status), str(reason)), []).append(int(row))
+    said = zip(*(effects[name].tolist() for name in ("status", "reason", "row")), strict=True)
+    for status, reason, row in said:
+        if reason:
+            found.setdefault((status, reason), []).append(row)
     return found
 
 

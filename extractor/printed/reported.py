@@ -73,8 +73,8 @@ class CellError:
 
 
 @dataclass(frozen=True, slots=True)
-class _Setting:
-    """What a column's cells are read with."""
+class Setting:
+    """What a column's cells are read with; see ``read_number``."""
 
     quantity: Quantity
     mark: str
@@ -103,7 +103,7 @@ def _plain(number: Decimal) -> str:
     return f"{number:f}".removeprefix("0") or "0"
 
 
-def _beyond(value: Decimal, decimals: int, to: _Setting) -> str:
+def _beyond(value: Decimal, decimals: int, to: Setting) -> str:
     """Why a number cannot be one that an article prints; "" where it can."""
     size = abs(value)
     if to.quantity.integer and size > MOST_COUNTED:
@@ -116,7 +116,7 @@ def _beyond(value: Decimal, decimals: int, to: _Setting) -> str:
     return ""
 
 
-def _printed(value: Decimal, decimals: int, notes: tuple[str, ...], to: _Setting) -> Reading:
+def _printed(value: Decimal, decimals: int, notes: tuple[str, ...], to: Setting) -> Reading:
     """The reading of a number printed with ``decimals`` decimals (negative: to tens, hundreds)."""
     if beyond := _beyond(value, decimals, to):
         return refuse(beyond)
@@ -135,7 +135,7 @@ def _printed(value: Decimal, decimals: int, notes: tuple[str, ...], to: _Setting
     return Reading(number, low, high, float(unit), shown, "=", "; ".join(notes))
 
 
-def _bound(value: Decimal, decimals: int, relation: str, notes: tuple[str, ...], to: _Setting) -> Reading:
+def _bound(value: Decimal, decimals: int, relation: str, notes: tuple[str, ...], to: Setting) -> Reading:
     """The reading of ``< value`` or ``> value``: everything between it and the end of the support."""
     comparator = "<" if any(sign in relation for sign in "<≤≦⩽") else ">"
     unit = Decimal(1).scaleb(-decimals)
@@ -169,7 +169,7 @@ def _without_marks(text: str) -> tuple[str, tuple[str, ...]]:
     return found["number"].strip(), (f"{found['marks'].strip()} after the number left out",)
 
 
-def _read_text(raw: str, to: _Setting) -> Reading:
+def _read_text(raw: str, to: Setting) -> Reading:
     """A cell of text: a label and a relation sign where there is one, then the number."""
     text = tidy(raw)
     if is_missing(text, to.missing):
@@ -197,7 +197,7 @@ def _read_text(raw: str, to: _Setting) -> Reading:
     return _read_printed(text, number, relation, notes, to)
 
 
-def _read_printed(text: str, number: str, relation: str, notes: tuple[str, ...], to: _Setting) -> Reading:
+def _read_printed(text: str, number: str, relation: str, notes: tuple[str, ...], to: Setting) -> Reading:
     """The number after its relation sign; ``text`` is the whole cell, for messages."""
     if _NOT_SIGNIFICANT.fullmatch(number):
         if to.name not in PROBABILITIES or relation != "=":
@@ -232,12 +232,12 @@ def _read_printed(text: str, number: str, relation: str, notes: tuple[str, ...],
     return _printed(value, decimals, notes, to)
 
 
-def _is_percent_level(value: Decimal, to: _Setting) -> bool:
+def _is_percent_level(value: Decimal, to: Setting) -> bool:
     """Whether a confidence level was written as 95 rather than 0.95."""
     return to.name == "confidence_level" and 50 <= value < 100
 
 
-def _computed(number: float, shown: Shown, to: _Setting) -> Reading:
+def _computed(number: float, shown: Shown, to: Setting) -> Reading:
     """A stored number with more digits than anyone types: computed, known as well as it is shown."""
     if shown.display in (Display.NUMBER, Display.PERCENT) and shown.least == shown.most:
         unit = Decimal(1).scaleb(-shown.most - (2 if shown.display is Display.PERCENT else 0))
@@ -249,7 +249,7 @@ def _computed(number: float, shown: Shown, to: _Setting) -> Reading:
     return Reading(number, low, high, step, -1, "=", "a computed number; taken as unrounded")
 
 
-def _read_stored(raw: int | float, number_format: str | None, to: _Setting) -> Reading:
+def _read_stored(raw: int | float, number_format: str | None, to: Setting) -> Reading:
     """A number cell: its format tells the printed decimals, or else its own digits do."""
     if abs(raw) > 1e300:
         return refuse("beyond the range of floating point numbers")
@@ -316,7 +316,11 @@ def read_number(
     -------
     A Reading; its ``problem`` says why a cell was refused. No cell raises.
     """
-    to = _Setting(quantity, decimal_mark, rounding, missing, alpha, decimals)
+    return read_cell(raw, Setting(quantity, decimal_mark, rounding, missing, alpha, decimals), number_format)
+
+
+def read_cell(raw: object, to: Setting, number_format: str | None = None) -> Reading:
+    """``read_number`` with its settings in one."""
     if raw is None:
         return BLANK
     if isinstance(raw, str):
@@ -325,7 +329,7 @@ def read_number(
         advice = "open, recalculate and save the workbook"
         return refuse(f"the formula {quoted(raw.formula)} has no stored result; {advice}")
     if isinstance(raw, CellError):
-        if spelled_missing(raw.code) in missing:
+        if spelled_missing(raw.code) in to.missing:
             return BLANK
         return refuse(f"the cell shows {quoted(raw.code)}; mend the formula or clear the cell")
     if isinstance(raw, (bool, np.bool_)):

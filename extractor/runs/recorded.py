@@ -3,12 +3,12 @@
 from __future__ import annotations
 
 import json
-from collections.abc import Iterator
+from dataclasses import dataclass
 
 import numpy as np
-from numpy.typing import NDArray
 
-from extractor.table import Numbers, ReportedTable, Variable
+from extractor.distinct import distinct, spread
+from extractor.table import BoolArray, Numbers, ObjectArray, ReportedTable, Variable
 from extractor.words import printed_text
 
 _LABELS = frozenset({"study", "outcome", "effect", "page", "quote", "coder"})
@@ -17,58 +17,78 @@ _MOST_DECIMALS = 12
 """With more, a number is recorded by its own digits."""
 
 
+@dataclass(slots=True)
+class Recorded:
+    """One column for some rows.
+
+    before : what stands before the row number in the addresses of its cells. given : the cell was understood.
+    texts : what it said, as JSON; "" where there is nothing.
+    """
+
+    before: str
+    given: BoolArray
+    texts: ObjectArray
+
+
 def recorded_cells(table: ReportedTable) -> list[dict[str, str]]:
     """For every row its cells that were understood, heading with address -> text; blanks are left out.
 
     Corrected cells hold their corrected number; the note of the decision says what was printed.
     """
-    return [json.loads(f"{{{text}}}") for text in recorded_texts(table, np.arange(table.rows))]
+    found: list[dict[str, str]] = [{} for _ in range(table.rows)]
+    for column in recorded_columns(table, slice(0, table.rows)):
+        for at in np.flatnonzero(column.given).tolist():
+            found[at][f"{column.before}{table.row_numbers[at]}]"] = json.loads(column.texts[at])
+    return found
 
 
-def recorded_texts(table: ReportedTable, rows: NDArray[np.intp]) -> list[str]:
-    """The members of ``recorded_cells`` as JSON, without braces, for some rows in ascending order."""
-    numbers = [f"{number}]" for number in table.row_numbers[rows].tolist()]
-    found: list[dict[str, str]] = [{} for _ in numbers]
-    for before, cells in sorted(_columns(table, rows), key=lambda column: column[0]):
-        key = _json(before)[:-1]
-        for at, text in cells:
-            found[at][f'{key}{numbers[at]}"'] = text
-    return [", ".join(f"{key}: {text}" for key, text in cells.items()) for cells in found]
-
-
-def _columns(table: ReportedTable, rows: NDArray[np.intp]) -> Iterator[tuple[str, Iterator[tuple[int, str]]]]:
-    """What stands before the row number in each column's addresses, and its cells: place among the rows, text."""
-    for variable, numbers in table.numbers.items():
-        yield numbers.place.before_row(), _numbers(table, variable, numbers, rows)
-    for name, words in table.facts.items():
-        if name not in _LABELS:
-            yield f"{name} [row ", _words(words[rows])
+def recorded_columns(table: ReportedTable, rows: slice) -> list[Recorded]:
+    """The columns of some rows in the order of their headings, without those that are blank in all of them."""
+    columns = [
+        Recorded(numbers.place.before_row(), given, _numbers(table, variable, numbers, rows, given))
+        for variable, numbers in table.numbers.items()
+        if (given := numbers.given[rows]).any()
+    ]
+    columns += [
+        Recorded(f"{name} [row ", given, _words(words[rows]))
+        for name, words in table.facts.items()
+        if name not in _LABELS and (given := words[rows] != "").any()
+    ]
+    found: dict[str, Recorded] = {}
+    for column in sorted(columns, key=lambda each: each.before):
+        other = found.setdefault(column.before, column)
+        if other is not column:
+            other.texts = np.where(column.given, column.texts, other.texts)
+            other.given = other.given | column.given
+    return list(found.values())
 
 
 def _numbers(
-    table: ReportedTable, variable: Variable, numbers: Numbers, rows: NDArray[np.intp]
-) -> Iterator[tuple[int, str]]:
-    at = np.flatnonzero(numbers.given[rows])
-    here = rows[at]
-    decimals, values = numbers.decimals[here], numbers.value[here]
-    plain = (decimals >= 0) & (decimals <= _MOST_DECIMALS) & ~np.isnan(values)
-    cells = zip(at.tolist(), here.tolist(), plain.tolist(), values.tolist(), decimals.tolist(), strict=True)
-    for place, row, simple, value, places in cells:
-        if simple:
-            yield place, f'"{value:.{places}f}"'
-        elif places > _MOST_DECIMALS:
-            yield place, f'"{value!r}"'
-        else:
-            yield place, _json(printed_text(table, variable, row))
+    table: ReportedTable, variable: Variable, numbers: Numbers, rows: slice, given: BoolArray
+) -> ObjectArray:
+    decimals, values = numbers.decimals[rows], numbers.value[rows]
+    texts = np.full(len(given), "", dtype=object)
+    plain = given & (decimals >= 0) & (decimals <= _MOST_DECIMALS) & ~np.isnan(values)
+    for places in np.unique(decimals[plain]).tolist():
+        those = np.flatnonzero(plain & (decimals == places))
+        # by their bits: 0 and -0 are printed otherwise
+        bits, codes = np.unique(values[those].view(np.int64), return_inverse=True)
+        texts[those] = spread((f'"{value:.{places}f}"' for value in bits.view(np.float64).tolist()), codes)
+    others = np.flatnonzero(given & ~plain)
+    if len(others):
+        said = [
+            repr(value) if places > _MOST_DECIMALS else printed_text(table, variable, rows.start + at)
+            for at, value, places in zip(
+                others.tolist(), values[others].tolist(), decimals[others].tolist(), strict=True
+            )
+        ]
+        texts[others] = _words(np.array(said, dtype=object))
+    return texts
 
 
-def _words(words: NDArray[np.object_]) -> Iterator[tuple[int, str]]:
-    known: dict[str, str] = {}
-    for at in np.flatnonzero(words != "").tolist():
-        word = str(words[at])
-        if word not in known:
-            known[word] = _json(word)
-        yield at, known[word]
+def _words(words: ObjectArray) -> ObjectArray:
+    said, codes = distinct(words)
+    return spread((_json(str(word)) if word else "" for word in said), codes)
 
 
 def _json(text: str) -> str:

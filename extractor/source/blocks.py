@@ -7,8 +7,6 @@ where it can be cut; then block by block. Where rows of one key lie far apart, t
 from __future__ import annotations
 
 import codecs
-import csv
-from array import array
 from collections.abc import Callable, Iterator, Sequence
 from dataclasses import dataclass
 from functools import lru_cache
@@ -22,13 +20,17 @@ from extractor.errors import UnreadableInput
 from extractor.labels import plain_label
 from extractor.printed.reading import quoted
 from extractor.source import parquet
-from extractor.source.delimited import BOMS, DECLARED, HEAD, NOT_UTF8, Known, delimiter_of, records
-from extractor.source.grid import Grid, Rows, is_blank
+from extractor.source.columns import factorized
+from extractor.source.delimited import BOMS, DECLARED, HEAD, NOT_UTF8, Known, delimiter_of
+from extractor.source.grid import Grid, is_blank, one_below_the_other, part_of
+from extractor.source.pieces import grids_of
 
 KeyColumns = Callable[[Sequence[str]], list[int]]
 """Which columns hold keys, from the headings."""
 
 _CHUNK = 1 << 20
+_PIECE = 1 << 21
+"""Letters that are read at once."""
 _DELIMITED = (".csv", ".tsv", ".tab", ".txt")
 _MUCH_LARGER = 3.0
 """A block so many times larger than asked for is worth a note."""
@@ -82,9 +84,8 @@ def blocks_of(path: Path, known: Known, key_columns: KeyColumns, size: int) -> B
     if path.suffix.lower() == parquet.ENDING:
         return _parquet_blocks(path, key_columns, size)
     text = _Text(path, known)
-    header, keys = text.look(key_columns)
-    cuts = _cuts(keys, size)
-    return Blocks(cuts, [*text.notes, *_scattered(cuts, size)], text.grids(header, cuts))
+    cuts = _cuts(text.look(key_columns), size)
+    return Blocks(cuts, [*text.notes, *_scattered(cuts, size)], text.blocks(cuts))
 
 
 def _scattered(cuts: Cuts, size: int) -> list[str]:
@@ -120,7 +121,7 @@ def _coded(text: object) -> int:
 
 
 class _Text:
-    """Delimited text that is read row by row."""
+    """Delimited text that is read piece by piece."""
 
     def __init__(self, path: Path, known: Known) -> None:
         self.path, self.name, self.known = path, quoted(path, 200), known
@@ -158,56 +159,43 @@ class _Text:
     def _open(self) -> TextIO:
         return self.path.open(encoding=self.encoding, newline="")
 
-    def rows(self) -> Iterator[tuple[int, list[str]]]:
-        """Record numbers and records that are not blank; the first is the heading row."""
-        number = 0
+    def grids(self, only: KeyColumns | None = None) -> Iterator[Grid]:
+        """The rows as grids one below the other; of the columns those that are asked for, from the headings."""
         try:
             with self._open() as stream:
                 if self.declared:
                     stream.readline()
-                for number, record in enumerate(records(stream, self.delimiter), 1):
-                    if not all(map(is_blank, record)):
-                        yield number, record
-        except csv.Error as fault:
-            advice = "look for a quotation mark left open"
-            raise UnreadableInput(f"{self.name}, after row {number}: {fault}; {advice}") from fault
+                yield from grids_of(stream, self.delimiter, self.name, _PIECE, only)
         except UnicodeDecodeError as fault:
             coding = self.encoding.upper()
             raise UnreadableInput(f"{self.name} is damaged {coding} text; save it as UTF-8") from fault
 
-    def look(self, key_columns: KeyColumns) -> tuple[Rows, list[NDArray[np.int64]]]:
-        """The heading row, and the keys of all rows below it."""
-        header = Rows(self.name, "", stored=False)
-        keys: list[array[int]] = []
-        at: list[int] = []
-        rows = 0
-        for number, record in self.rows():
-            if header.header is None:
-                header.add(number, list(record))
-                at = key_columns(header.header or [])
-                keys = [array("q") for _ in at]
-                continue
-            rows += 1
-            for column, found in zip(at, keys, strict=True):
-                found.append(_coded(record[column]) if column < len(record) else 0)
-        if header.header is None or not rows:
-            header.grid()  # says what is missing
-        return header, [np.zeros(rows, dtype=np.int64), *(np.array(key, dtype=np.int64) for key in keys)]
+    def look(self, key_columns: KeyColumns) -> list[NDArray[np.int64]]:
+        """The keys of all rows."""
+        keys: list[list[NDArray[np.int64]]] = []
+        for grid in self.grids(key_columns):
+            found = [np.zeros(len(grid.row_numbers), dtype=np.int64)]
+            for index in key_columns(grid.headings):
+                cells, _, codes = factorized(grid.columns[index])
+                found.append(np.array([_coded(cell) for cell in cells], dtype=np.int64)[codes])
+            keys.append(found)
+        return [np.concatenate(column) for column in zip(*keys, strict=True)]
 
-    def grids(self, header: Rows, cuts: Cuts) -> Iterator[Grid]:
+    def blocks(self, cuts: Cuts) -> Iterator[Grid]:
         """The blocks."""
-        below = self.rows()
-        next(below)
-        done = 0
+        grids = self.grids()
+        held: list[Grid] = []
+        start = rows = 0
         for end in cuts.ends:
-            block = Rows(self.name, "", stored=False)
-            block.header, block.header_row = header.header, header.header_row
-            for number, record in below:
-                block.add(number, list(record))
-                done += 1
-                if done == end:
-                    break
-            yield block.grid()
+            while rows < end - start and (grid := next(grids, None)) is not None:
+                held.append(grid)
+                rows += len(grid.row_numbers)
+            last = held.pop()
+            # the last rows of it belong to the next block
+            spare = max(rows - (end - start), 0)
+            size = len(last.row_numbers)
+            yield one_below_the_other([*held, part_of(last, 0, size - spare)])
+            held, start, rows = [part_of(last, size - spare, size)], end, spare
 
 
 def _parquet_blocks(path: Path, key_columns: KeyColumns, size: int) -> Blocks:

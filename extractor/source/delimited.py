@@ -6,10 +6,11 @@ import codecs
 import csv
 import io
 import re
-from collections.abc import Callable, Iterable, Iterator
+from collections.abc import Callable
 
 from extractor.errors import UnreadableInput
-from extractor.source.grid import Grid, Rows, is_blank
+from extractor.source.grid import Grid, is_blank, one_below_the_other
+from extractor.source.pieces import grids_of, records
 
 Known = Callable[[str], bool]
 """Whether a heading is understood."""
@@ -19,7 +20,8 @@ DECLARED = re.compile(r"sep=([!#-/:-@\[-`{-~\t])\r?\n")
 HEAD = 1 << 20
 """Letters looked at to find the delimiter."""
 
-_LONGEST_CELL = 131_072
+_PIECE = 1 << 24
+"""Letters that are read at once: of all but the largest sheets everything."""
 NOT_UTF8 = "the text is not UTF-8; it was read as {}, check letters beyond a to z"
 
 BOMS = (
@@ -51,17 +53,6 @@ def _decode(content: bytes, name: str) -> tuple[str, list[str]]:
         return content.decode("latin-1"), [NOT_UTF8.format("Latin-1")]
 
 
-def _records(text: str, delimiter: str) -> Iterator[list[str]]:
-    return records(io.StringIO(text, newline=""), delimiter)
-
-
-def records(stream: Iterable[str], delimiter: str) -> Iterator[list[str]]:
-    """Records of delimited text (RFC 4180); a blank line is a record without cells."""
-    # one limit for the whole process, which other packages lift
-    csv.field_size_limit(_LONGEST_CELL)
-    return csv.reader(stream, delimiter=delimiter, strict=True)
-
-
 def delimiter_of(text: str, known: Known, suffix: str) -> str:
     """The delimiter of the file ending, else that under which the heading row has the most known headings."""
     if suffix in (".tsv", ".tab"):
@@ -69,7 +60,14 @@ def delimiter_of(text: str, known: Known, suffix: str) -> str:
 
     def fit(delimiter: str) -> tuple[int, int]:
         try:
-            first = next((row for row in _records(text[:HEAD], delimiter) if not all(map(is_blank, row))), [])
+            first = next(
+                (
+                    row
+                    for row in records(io.StringIO(text[:HEAD], newline=""), delimiter)
+                    if not all(map(is_blank, row))
+                ),
+                [],
+            )
         except csv.Error:
             return (0, 0)
         return sum(known(heading) for heading in first if heading.strip()), len(first)
@@ -92,14 +90,7 @@ def from_text(content: bytes, name: str, suffix: str, known: Known) -> Grid:
         text, delimiter = text[declared.end() :], declared[1]
     else:
         delimiter = delimiter_of(text, known, suffix)
-    rows = Rows(name, "", stored=False)
-    number = 0
-    try:
-        for number, record in enumerate(_records(text, delimiter), 1):
-            rows.add(number, list(record))
-    except csv.Error as fault:
-        advice = "look for a quotation mark left open"
-        raise UnreadableInput(f"{name}, after row {number}: {fault}; {advice}") from fault
-    grid = rows.grid()
+    parts = list(grids_of(io.StringIO(text, newline=""), delimiter, name, _PIECE))
+    grid = parts[0] if len(parts) == 1 else one_below_the_other(parts)
     grid.notes += notes
     return grid

@@ -7,7 +7,8 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from extractor.errors import UnreadableInput
-from extractor.source.grid import MOST_COLUMNS, Grid, ObjectArray, is_blank, object_array
+from extractor.source.grid import MOST_COLUMNS, Grid, is_blank, object_array
+from extractor.table import ObjectArray
 
 if TYPE_CHECKING:
     import pandas as pd

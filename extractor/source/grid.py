@@ -2,8 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
-from dataclasses import dataclass, field
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -11,8 +11,8 @@ from numpy.typing import NDArray
 from extractor.errors import UnreadableInput
 from extractor.printed.reading import quoted, shortest
 from extractor.printed.reported import CellError, UncachedFormula
-
-ObjectArray = NDArray[np.object_]
+from extractor.source.coded import Column, joined
+from extractor.table import ObjectArray
 
 MOST_COLUMNS = 16_384
 """Columns of a spreadsheet (common to the programs in use); addresses end there."""
@@ -29,8 +29,8 @@ class Grid:
     source, sheet : for messages; ``sheet`` is "" where there is only one.
     headings : text of the heading row, "" where blank.
     header_row, row_numbers : the file's own numbers, the first row of a file being 1.
-    columns : raw cells of each column, shape (rows,): str, int, float, bool, dates, None, UncachedFormula,
-        CellError.
+    columns : raw cells of each column, shape (rows,), see ``coded.Column``: str, int, float, bool, dates, None,
+        UncachedFormula, CellError.
     formats : number formats of each column's cells, or None where the source has none.
     stored : whether numbers are stored as such, so that text shows every digit that was typed.
     ragged : row numbers with more cells than headings.
@@ -41,7 +41,7 @@ class Grid:
     headings: list[str]
     header_row: int
     row_numbers: NDArray[np.int64]
-    columns: list[ObjectArray]
+    columns: Sequence[Column]
     formats: list[ObjectArray | None]
     stored: bool
     ragged: dict[int, int] = field(default_factory=dict)
@@ -124,33 +124,64 @@ class Rows:
             self.codes.append(codes[:width] + [None] * (width - len(codes)))
 
     def grid(self) -> Grid:
-        """The finished grid."""
+        """The finished grid; raises where there is none."""
         where = f"{self.source}, sheet {quoted(self.sheet)}" if self.sheet else self.source
         if self.header is None:
             raise NoRows(f"{where} is empty; the first row must hold the headings")
         if not self.records:
             raise NoRows(f"{where} has headings in row {self.header_row} and no rows below them")
-        count, width = len(self.records), len(self.header)
+        count = len(self.records)
         columns = [object_array(list(column), count) for column in zip(*self.records, strict=True)]
-        formats: list[ObjectArray | None] = [None] * width
+        grid = self.grid_with(np.asarray(self.numbers, dtype=np.int64), columns)
         if self.codes:
-            formats = [object_array(list(column), count) for column in zip(*self.codes, strict=True)]
-        notes = []
+            grid.formats = [object_array(list(column), count) for column in zip(*self.codes, strict=True)]
         if self.ragged and self.stored:
             first = min(self.ragged)
-            notes.append(f"cells to the right of the last heading are left out, first in row {first}")
+            grid.notes.append(f"cells to the right of the last heading are left out, first in row {first}")
+        elif self.ragged:
+            grid.ragged = self.ragged
+        return grid
+
+    def grid_with(self, numbers: NDArray[np.int64], columns: Sequence[Column]) -> Grid:
+        """A grid of these rows below the heading row."""
         return Grid(
             source=self.source,
             sheet=self.sheet,
-            headings=self.header,
+            headings=self.header or [],
             header_row=self.header_row,
-            row_numbers=np.asarray(self.numbers, dtype=np.int64),
+            row_numbers=numbers,
             columns=columns,
-            formats=formats,
+            formats=[None] * len(columns),
             stored=self.stored,
-            ragged={} if self.stored else self.ragged,
-            notes=notes,
         )
+
+    def below(self) -> Rows:
+        """An empty gathering of further rows below the same headings."""
+        further = Rows(self.source, self.sheet, stored=self.stored)
+        further.header, further.header_row = self.header, self.header_row
+        return further
+
+
+def part_of(grid: Grid, start: int, stop: int) -> Grid:
+    """Some rows of a grid of delimited text."""
+    numbers = grid.row_numbers[start:stop]
+    here = set(numbers.tolist()) if grid.ragged else set()
+    return replace(
+        grid,
+        row_numbers=numbers,
+        columns=[column[start:stop] for column in grid.columns],
+        ragged={number: extra for number, extra in grid.ragged.items() if number in here},
+    )
+
+
+def one_below_the_other(grids: Sequence[Grid]) -> Grid:
+    """Grids of delimited text under the same headings as one."""
+    return replace(
+        grids[0],
+        row_numbers=np.concatenate([grid.row_numbers for grid in grids]),
+        columns=[joined(columns) for columns in zip(*(grid.columns for grid in grids), strict=True)],
+        ragged={number: extra for grid in grids for number, extra in grid.ragged.items()},
+    )
 
 
 def heading_text(value: object) -> str:

@@ -37,9 +37,11 @@ def factors_of(term: str) -> frozenset[str]:
 
 def analysis_ids(table: ReportedTable, design: ObjectArray) -> NDArray[np.int64]:
     """One number per model, -1 for rows that belong to none; shape (rows,)."""
-    _, codes = distinct(list(zip(table.fact("study").tolist(), table.fact("analysis").tolist(), strict=True)))
-    belongs = np.isin(design, TERM_DESIGNS) & (table.fact("analysis") != "")
-    return np.where(belongs, codes, -1)
+    study, analysis = table.fact("study"), table.fact("analysis")
+    belongs = np.isin(design, TERM_DESIGNS) & (analysis != "")
+    ids = np.full(table.rows, -1, dtype=np.int64)
+    ids[belongs] = distinct(list(zip(study[belongs].tolist(), analysis[belongs].tolist(), strict=True)))[1]
+    return ids
 
 
 def terms_per_row(table: ReportedTable, design: ObjectArray) -> NDArray[np.int64]:
@@ -73,14 +75,14 @@ class _Models:
         self.joint = self.factors > 1
 
     def sums(self) -> dict[str, Estimate]:
+        lone = ~self.inside & (self.design == "within") & ~self.joint
+        if not self.models:
+            return self._without_models(lone)
         df, f = self._cell("df_effect"), self._cell("f_value")
         ss, ss_error = self._cell("ss_effect"), self._cell("ss_error")
         explained = Estimate(df.value * f.value, df.low * f.low, df.high * f.high)
         complete = self._complete()
         measured = self._measured()
-        lone = ~self.inside & (self.design == "within") & ~self.joint
-        if not self.models:
-            return self._without_models(lone)
         one_stratum = complete & (self.design == "factorial")
         single = self._single()
         found = {
@@ -151,8 +153,9 @@ class _Models:
         """Models that hold all main effects and all their interactions, each once."""
         terms = self._total(np.ones(self.table.rows), self.inside)
         mains = self._total(np.ones(self.table.rows), self.inside & (self.factors == 1))
-        _, pairs = np.unique(np.stack([self.ids, self.which]), axis=1, return_inverse=True)
-        twice = (np.bincount(pairs.ravel())[pairs.ravel()] > 1) & self.inside
+        numbered = self.ids * (self.which.max(initial=0) + 1) + self.which
+        _, pairs = np.unique(numbered, return_inverse=True)
+        twice = (np.bincount(pairs)[pairs] > 1) & self.inside
         repeated = self._total(np.ones(self.table.rows), twice) > 0
         with np.errstate(invalid="ignore"):
             return np.asarray(self.inside & (terms == 2.0**mains - 1) & (mains > 0) & ~repeated)

@@ -9,8 +9,8 @@ audited stage by stage, and by the whole command ``convert --out``. Beside them 
   Poisson mixture of beta moments, its limits by a bracketing root finder on ``scipy.stats.ncf``. It is timed on a
   sample and scaled to the rows that have a variance;
 - the floor: only the calls of ``scipy.special`` that cannot be avoided, on contiguous arrays. For converting, the
-  non-centrality of both limits by ``ncfdtrinc``; for auditing, the p of both ends of every F and the F of both ends
-  of every p.
+  non-centrality of both limits by ``ncfdtrinc``; for auditing, wherever a p is printed with a test, printed or implied,
+  the p of both ends of its F and the F of both ends of the p, once; and Bartlett's p of every row with SDs and ns.
 
 Times are processor seconds, which a busy machine disturbs less than the clock.
 """
@@ -32,8 +32,11 @@ from typing import TypeVar
 import numpy as np
 from scipy import optimize, special, stats
 
+from extractor.audit.constraints import constraints_of
+from extractor.audit.homogeneity import bartlett_from_sds
+from extractor.audit.propagation import propagate
 from extractor.audit.run import audit_evidence
-from extractor.catalogue.relation import catalogue
+from extractor.catalogue.relation import BETWEEN, catalogue
 from extractor.codebook import default_codebook
 from extractor.evidence import Evidence, gather
 from extractor.routes.conversion import Conversion, convert_evidence
@@ -145,24 +148,30 @@ def floor_seconds(f: FloatArray, v1: FloatArray, v2: FloatArray) -> float:
 
 
 def audit_floor_seconds(evidence: Evidence) -> float:
-    """Seconds of the special functions that tie every printed F and p with its dfs to the other."""
-    forward, backward = [], []
+    """Seconds of the special functions that tie every printed p to its test, and test every row's SDs, once."""
+    tests: list[tuple[FloatArray, ...]] = []
+    spreads: list[tuple[FloatArray, ...]] = []
     for block in evidence.blocks:
-        leaves = block.leaves
-        dfs = [leaves[name].value for name in ("df_effect", "df_error") if name in leaves]
-        if len(dfs) < 2:
-            continue
-        for name, into in (("f_value", forward), ("p_value", backward)):
-            if name in leaves:
-                into += [(*dfs, end) for end in leaves[name].interval]
-    some, others = (
-        [np.ascontiguousarray(np.concatenate(parts)) for parts in zip(*calls, strict=True)]
-        for calls in (forward, backward)
-    )
+        own = constraints_of(block, evidence.table)
+        domain = own.domain.copy()
+        consistent = ~propagate(own.design, domain)
+        names = ("f_value", "p_two_sided", "df_effect", "df_error")
+        if "p_value" in own.domain.low and all(name in domain.low for name in names):
+            pairs = [domain.pair(name) for name in names]
+            known = consistent & (pairs[2][0] == pairs[2][1]) & (pairs[3][0] == pairs[3][1])
+            dfs = pairs[2][0][known], pairs[3][0][known]
+            tests += [(*dfs, f[known], p[known]) for f, p in zip(*pairs[:2], strict=True)]
+        if block.design in BETWEEN and {"n", "sd"} <= block.leaves.keys() - block.bounds:
+            n, sd = block.leaves["n"].value, block.leaves["sd"].value
+            judged = (n >= 2).all(axis=1) & (sd > 0).all(axis=1)
+            chi_squared, df, _ = bartlett_from_sds(n[judged], sd[judged])
+            spreads.append((np.full_like(chi_squared, df), chi_squared))
+    df1, df2, f, p = (np.ascontiguousarray(np.concatenate(parts)) for parts in zip(*tests, strict=True))
+    of, bartlett = (np.ascontiguousarray(np.concatenate(parts)) for parts in zip(*spreads, strict=True))
+    # the catalogue's own: accurate in both tails, as rounding intervals of p near 0 and 1 need
+    tails, quantiles = (catalogue()[name].formula for name in ("p_from_f", "f_from_p"))
     with np.errstate(all="ignore"):
-        # the catalogue's own: accurate in both tails, as rounding intervals of p near 0 and 1 need
-        tails, quantiles = (catalogue()[name].formula for name in ("p_from_f", "f_from_p"))
-        return seconds(lambda: (tails(some[2], *some[:2]), quantiles(others[2], *others[:2])))[0]
+        return seconds(lambda: (tails(f, df1, df2), quantiles(p, df1, df2), special.chdtrc(of, bartlett)))[0]
 
 
 # ---- the measurement ----------------------------------------------------------------------------------

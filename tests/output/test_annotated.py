@@ -227,7 +227,7 @@ def test_sheet_of_the_coder_with_our_name_is_kept(coded: Path, tmp_path: Path) -
 
 def test_control_characters_and_long_texts_are_said(coded: Path, tmp_path: Path) -> None:
     result = convert(coded, to="omega_squared")
-    result.effects.loc[0, "reason"] = "a\x07b" + "x" * 40_000
+    result.conversion.columns["reason"][0] = "a\x07b" + "x" * 40_000
     path = tmp_path / "annotated.xlsx"
     notes = write_annotated(result, Request(sheet=str(coded)), path)
     assert any("1 texts" in note for note in notes)
