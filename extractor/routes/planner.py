@@ -12,9 +12,9 @@ Between routes of equal grade the engine prefers, row by row, the one with the n
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Iterator, Mapping
+from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, field
-from functools import lru_cache
+from functools import cached_property, lru_cache
 from itertools import product
 from math import prod
 
@@ -32,7 +32,7 @@ _SUMMARY = frozenset({"minimum", "q1", "median", "q3", "maximum"})
 """Numbers of which an estimate of mean and SD had better use all that are printed."""
 
 
-@dataclass(frozen=True, slots=True)
+@dataclass(frozen=True)
 class Route:
     """One derivation of a quantity.
 
@@ -53,18 +53,22 @@ class Route:
     standardizer: str = ""
     behind: bool = False
 
-    @property
+    @cached_property
     def assumptions(self) -> int:
         """How many values and relations rest on something nobody reported."""
-        relations = catalogue()
-        return len(self.assumed) + sum(relations[s].grade is Grade.ASSUMPTION for s in self.steps.values())
+        return len(self.assumed) + len(_assuming().intersection(self.steps.values()))
 
-    @property
+    @cached_property
     def summary_numbers(self) -> int:
         """How many of a five-number summary it uses."""
         return len(self.leaves & _SUMMARY)
 
-    @property
+    @cached_property
+    def evidence(self) -> frozenset[str]:
+        """What it starts from besides counts."""
+        return self.leaves - _COUNTS
+
+    @cached_property
     def preference(self) -> tuple[int, bool, int, int, int, list[str], list[str]]:
         """Sort key: smaller is better; a total order over routes to one quantity."""
         return (
@@ -92,6 +96,12 @@ class Route:
 
         visit(self.gives)
         return order
+
+
+@lru_cache(maxsize=1)
+def _assuming() -> frozenset[str]:
+    """Names of the relations that rest on an assumption."""
+    return frozenset(name for name, r in catalogue().items() if r.grade is Grade.ASSUMPTION)
 
 
 @dataclass(frozen=True, slots=True)
@@ -125,13 +135,16 @@ def relations_of(design: str) -> tuple[Relation, ...]:
     return tuple(r for _, r in sorted(catalogue().items()) if design in r.designs and r.routes)
 
 
-@lru_cache(maxsize=4096)
 def search(start: Start, design: str, standardizer: str = "") -> Mapping[str, tuple[Route, ...]]:
     """The best routes to every quantity within reach, best first.
 
     ``standardizer`` makes that one the usual one of the search, in the place of the design's own.
     """
-    usual = standardizer or DEFAULT.get(design, "")
+    return _searched(start, design, standardizer or DEFAULT.get(design, ""))
+
+
+@lru_cache(maxsize=4096)
+def _searched(start: Start, design: str, usual: str) -> Mapping[str, tuple[Route, ...]]:
     best: dict[str, tuple[Route, ...]] = {}
     for route in start.leaves():
         best[route.gives] = _kept((*best.get(route.gives, ()), route))
@@ -154,17 +167,14 @@ def search(start: Start, design: str, standardizer: str = "") -> Mapping[str, tu
 
 def _combined(relation: Relation, choices: list[tuple[Route, ...]], usual: str) -> Iterator[Route]:
     """Routes through ``relation``: the best combinations of its inputs' routes that do not contradict each other."""
-    for ranks in product(*(range(len(c)) for c in choices)):
-        if prod(rank + 1 for rank in ranks) > _BEST:
+    for ranks in _rankings(tuple(map(len, choices))):
+        parts = [some[rank] for some, rank in zip(choices, ranks, strict=True)]
+        leaves = frozenset().union(*[part.leaves for part in parts])
+        if relation.gives in leaves or any(_astray(part, relation) for part in parts):
             continue
-        parts = [c[r] for c, r in zip(choices, ranks, strict=True)]
-        if any(_astray(part, relation) for part in parts):
-            continue
-        steps: dict[str, str] = {}
-        agreed = all(steps.setdefault(q, name) == name for part in parts for q, name in part.steps.items())
-        leaves = _union(part.leaves for part in parts)
+        steps = _agreed(parts)
         # a quantity is either taken as reported or derived, in one way, and never from itself
-        if not agreed or relation.gives in leaves or relation.gives in steps or leaves & steps.keys():
+        if steps is None or relation.gives in steps or not leaves.isdisjoint(steps):
             continue
         steps[relation.gives] = relation.name
         named = [s for s in (relation.standardizer, *(part.standardizer for part in parts)) if s]
@@ -173,11 +183,28 @@ def _combined(relation: Relation, choices: list[tuple[Route, ...]], usual: str) 
             leaves,
             steps,
             grade=max(relation.grade, *(part.grade for part in parts)),
-            assumed=_union(part.assumed for part in parts),
-            missing=_union(part.missing for part in parts),
+            assumed=frozenset().union(*[part.assumed for part in parts]),
+            missing=frozenset().union(*[part.missing for part in parts]),
             standardizer=named[0] if named else "",
             behind=any(s != usual for s in named),
         )
+
+
+@lru_cache(maxsize=1024)
+def _rankings(lengths: tuple[int, ...]) -> list[tuple[int, ...]]:
+    """The ranks that a combination of so many choices may take from each, the best first."""
+    ranks = product(*map(range, lengths))
+    return [some for some in ranks if prod(rank + 1 for rank in some) <= _BEST]
+
+
+def _agreed(parts: list[Route]) -> dict[str, str] | None:
+    """The steps of several routes together; None where they derive a quantity in different ways."""
+    steps: dict[str, str] = {}
+    for part in parts:
+        for quantity, name in part.steps.items():
+            if steps.setdefault(quantity, name) != name:
+                return None
+    return steps
 
 
 def _astray(part: Route, relation: Relation) -> bool:
@@ -191,10 +218,6 @@ def _astray(part: Route, relation: Relation) -> bool:
     return part.standardizer == "control" or relation.gives != "hedges_g"
 
 
-def _union(sets: Iterable[frozenset[str]]) -> frozenset[str]:
-    return frozenset().union(*sets)
-
-
 def _kept(routes: tuple[Route, ...]) -> tuple[Route, ...]:
     """The best routes with different evidence; one that asks for more and offers nothing better is dropped.
 
@@ -203,7 +226,7 @@ def _kept(routes: tuple[Route, ...]) -> tuple[Route, ...]:
     kept: list[Route] = []
     for route in sorted(routes, key=lambda r: r.preference):
         beaten = any(
-            other.leaves - _COUNTS <= route.leaves - _COUNTS
+            other.evidence <= route.evidence
             and other.missing <= route.missing
             and other.assumptions <= route.assumptions
             and other.grade <= route.grade
