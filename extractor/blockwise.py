@@ -15,6 +15,7 @@ from multiprocessing import get_context
 from pathlib import Path
 from typing import Any, Generic, Protocol, TypeVar
 
+from extractor import collector
 from extractor.api import Reading, arranged, codebook_of
 from extractor.codebook import Codebook
 from extractor.decisions import Decision, read_decisions
@@ -133,6 +134,7 @@ _job: list[_Job[object]] = []
 def _begin(sheet: Sheet, work: Work[object]) -> None:
     # an interrupt ends the worker without a word: the process that was started by hand says it
     signal.signal(signal.SIGINT, signal.SIG_DFL)
+    collector.ease()
     _job[:] = [_Job(sheet, work)]
 
 

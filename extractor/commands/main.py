@@ -10,7 +10,7 @@ from typing import Any
 
 import click
 
-from extractor import __version__
+from extractor import __version__, collector
 from extractor.commands import SETTINGS
 from extractor.errors import ExtractorError, UsageError
 
@@ -119,6 +119,7 @@ def cli(ctx: click.Context) -> None:
 
 def main() -> None:
     """Entry point of the command."""
+    collector.ease()
     for stream in (sys.stdout, sys.stderr):
         if hasattr(stream, "reconfigure"):
             # a terminal that cannot show a Greek letter must not stop the work

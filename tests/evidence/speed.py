@@ -32,6 +32,7 @@ from typing import TypeVar
 import numpy as np
 from scipy import optimize, special, stats
 
+from extractor import collector
 from extractor.audit.constraints import constraints_of
 from extractor.audit.homogeneity import bartlett_from_sds
 from extractor.audit.propagation import propagate
@@ -265,6 +266,7 @@ def main(argv: list[str] | None = None) -> None:
     parser.add_argument("--workers", type=int, default=1, help="processes of the whole command")
     parser.add_argument("--sample", type=int, default=300, help="rows of the row-by-row loop")
     options = parser.parse_args(argv)
+    collector.ease()
     sizes = [size for size in (1_000, 10_000, 100_000, 1_000_000) if size <= options.most]
     with tempfile.TemporaryDirectory() as folder:
         timed = [measure(size, Path(folder), options.workers, options.sample) for size in sizes]
