@@ -25,7 +25,7 @@ from extractor.source.grid import Grid
 from extractor.source.reader import read_grid
 from extractor.words import listed
 
-ROWS = 20_000
+ROWS = 40_000
 """Rows of a block: enough that what is done once for each block does not count."""
 KEYS = ("study", "analysis")
 NOT_COMPARED = (

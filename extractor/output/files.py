@@ -5,8 +5,8 @@ from __future__ import annotations
 import errno
 import importlib.util
 import os
+import secrets
 import shutil
-import tempfile
 from collections.abc import Collection, Iterable, Iterator
 from contextlib import ExitStack, contextmanager, suppress
 from datetime import UTC, datetime
@@ -79,12 +79,11 @@ def output_folder(path: Path, own: Collection[str], *, force: bool) -> Iterator[
     """
     refuse_existing(path, force=force)
     target = Path(os.path.realpath(path))
+    # named before it is made, so that no interrupt can fall between its making and its removal
+    workshop = target.parent / f".{target.name[:40]}-{secrets.token_hex(8)}"
     try:
         target.parent.mkdir(parents=True, exist_ok=True)
-        workshop = Path(tempfile.mkdtemp(prefix=f".{target.name[:40]}-", dir=target.parent))
-    except OSError as fault:
-        raise _refused(path, fault) from fault
-    try:
+        workshop.mkdir(mode=0o700)
         made = workshop / "made"
         made.mkdir()
         yield made
@@ -95,7 +94,16 @@ def output_folder(path: Path, own: Collection[str], *, force: bool) -> Iterator[
     except OSError as fault:
         raise _refused(path, fault) from fault
     finally:
+        _clear(workshop)
+
+
+def _clear(workshop: Path) -> None:
+    """Remove what was made beside a folder, all of it also when the removal itself is interrupted."""
+    try:
         shutil.rmtree(workshop, ignore_errors=True)
+    except KeyboardInterrupt:
+        shutil.rmtree(workshop, ignore_errors=True)
+        raise
 
 
 def _renamed(made: Path, target: Path) -> bool:

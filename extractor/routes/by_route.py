@@ -11,7 +11,14 @@ from extractor.catalogue.relation import Grade
 from extractor.routes.choice import Chosen
 from extractor.routes.conversion import Conversion, route_words
 from extractor.routes.planner import Route
-from extractor.routes.sensitivity import LABELS, flipped_rows, in_sheet_order, labelled, variance_of_rows
+from extractor.routes.sensitivity import (
+    LABELS,
+    flipped_rows,
+    in_sheet_order,
+    in_standard_errors,
+    labelled,
+    variance_of_rows,
+)
 from extractor.sampling.precision import standardizer_of
 
 COLUMNS = [
@@ -61,7 +68,7 @@ def _by_route(conversion: Conversion, chosen: Chosen) -> Iterator[pd.DataFrame]:
             lowest=np.where(flipped, -highest, lowest),
             highest=np.where(flipped, -lowest, highest),
             spread=highest - lowest,
-            spread_in_se=(highest - lowest) / np.sqrt(variance_of_rows(chosen, int(index))),
+            spread_in_se=in_standard_errors(highest - lowest, variance_of_rows(chosen, int(index))),
             beyond_rounding=apart,
             lowest_route=np.where(flipped, last, first),
             highest_route=np.where(flipped, first, last),

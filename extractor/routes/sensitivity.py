@@ -204,7 +204,7 @@ def _moved(
         variance_low=variance_low,
         variance_high=variance_high,
         swing=high - low,
-        swing_in_se=(high - low) / np.sqrt(variance),
+        swing_in_se=in_standard_errors(high - low, variance),
     )
 
 
@@ -212,6 +212,11 @@ def _reach(values: list[FloatArray]) -> tuple[FloatArray, FloatArray]:
     """Least and greatest over the combinations, shape (rows,); those without a value do not count."""
     stacked = np.stack(values)
     return np.fmin.reduce(stacked), np.fmax.reduce(stacked)
+
+
+def in_standard_errors(distance: FloatArray, variance: FloatArray) -> FloatArray:
+    """Distances in standard errors; NaN where an effect at the end of its range has no variance."""
+    return np.asarray(distance / np.sqrt(np.where(variance > 0, variance, np.nan)))
 
 
 def variance_of_rows(chosen: Chosen, index: int) -> FloatArray:

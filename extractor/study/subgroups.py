@@ -20,6 +20,7 @@ from extractor.table import FloatArray, Numbers, ReportedTable
 _MERGED = ("n", "mean", "sd")
 _WIDEN = 1e-12
 _PARTS = tuple(field.name for field in fields(Numbers) if field.name != "place")
+_NOTHING = (np.nan, np.nan, np.nan)
 Ends = tuple[FloatArray, FloatArray, FloatArray]
 
 
@@ -41,8 +42,10 @@ def merged_lines(long: ReportedTable, labels: NDArray[np.object_]) -> ReportedTa
         merged = _merged([_ends(long, name, lines) for name in _MERGED])
         where = ", ".join(str(long.row_numbers[line]) for line in lines)
         for (name, _), column in numbers.items():
-            value = merged[_MERGED.index(name)] if name in _MERGED else (np.nan, np.nan, np.nan)
+            value = merged[_MERGED.index(name)] if name in _MERGED else _NOTHING
             _put(column, int(lines[0]), value, f"merged from lines {where}")
+            if name == "n" and value is _NOTHING:
+                column.problem[lines[0]] = f"lines {where} are not merged: each needs an n of 0 or more"
     keep = np.setdiff1d(np.arange(len(code)), np.concatenate([lines[1:] for lines in parts]))
     kept = {
         variable: Numbers(**{name: getattr(column, name)[keep] for name in _PARTS}, place=column.place)
@@ -68,6 +71,9 @@ def _ends(long: ReportedTable, name: str, lines: NDArray[np.intp]) -> Ends:
 def _merged(ends: list[Ends]) -> list[tuple[float, float, float]]:
     """n, mean and SD of the union as (value, low, high); NaN where a part lacks a number."""
     (n, _, _), mean, sd = ends
+    # without the size of one part nothing is known of the whole, and a negative one is a slip
+    if not (n >= 0).all():
+        return [_NOTHING] * len(ends)
     total, middle, spread = merged_groups(n, mean[0], sd[0])
     centres = [float((n * end).sum() / total[0]) for end in mean[1:]]
     within = [((n - 1) * end**2).sum(axis=-1) for end in sd[1:]]

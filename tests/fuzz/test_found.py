@@ -5,13 +5,15 @@ from __future__ import annotations
 import datetime
 from pathlib import Path
 
+import numpy as np
 import openpyxl
 import pandas as pd
 import pytest
 from click.testing import CliRunner
 
-from extractor.api import convert
+from extractor.api import audit_sheet, convert
 from extractor.commands.main import cli
+from extractor.routes.sensitivity import in_standard_errors
 from tests.fuzz.faults import as_csv
 from tests.fuzz.judging import time_limit
 
@@ -122,3 +124,19 @@ def test_a_bound_without_an_upper_end_among_the_terms_of_a_model() -> None:
         for term, f in (("a", "> 4"), ("b", "2.5"), ("a:b", "1.2"))
     ]
     assert convert(pd.DataFrame(rows), to="eta_squared").effects["status"].isin(["bounded", "blocked"]).all()
+
+
+@pytest.mark.parametrize("size", ["-5", ""])
+def test_subgroups_of_which_one_has_no_size_are_not_merged(size: str) -> None:
+    lines = [("a", size, "3.1", "1.2"), ("a", "6", "3.3", "1.1"), ("b", "11", "2.9", "1.3")]
+    groups = pd.DataFrame([{"analysis": "1", "group": g, "n": n, "mean": m, "sd": s} for g, n, m, s in lines])
+    row = {"analysis": "1", "design": "one-way", "f_value": "3.2", "df_effect": "1", "df_error": "20"}
+    found = audit_sheet(pd.DataFrame([row]), groups=groups).findings
+    assert [finding.message for finding in found] == [
+        "lines 2, 3 are not merged: each needs an n of 0 or more"
+    ]
+
+
+def test_distances_in_standard_errors_of_effects_without_variance() -> None:
+    found = in_standard_errors(np.array([0.0, 1.0, 1.0]), np.array([0.0, np.nan, 4.0]))
+    np.testing.assert_array_equal(found, [np.nan, np.nan, 0.5])
