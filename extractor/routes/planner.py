@@ -153,11 +153,18 @@ def _searched(start: Start, design: str, usual: str) -> Mapping[str, tuple[Route
         for need in relation.needs:
             users.setdefault(need, []).append(relation)
     changed = set(best)
+    tried: dict[str, set[tuple[int, ...]]] = {}
+    made: list[Route] = []
     while changed:
         due = {r.name: r for q in changed for r in users.get(q, ()) if all(n in best for n in r.needs)}
         changed = set()
         for _, relation in sorted(due.items()):
-            found = tuple(_combined(relation, [best[n] for n in relation.needs], usual))
+            before = tried.setdefault(relation.name, set())
+            found = tuple(_combined(relation, [best[n] for n in relation.needs], usual, before))
+            if not found:
+                continue
+            # what was made stays, so that no other route gets its identity
+            made.extend(found)
             kept = _kept((*best.get(relation.gives, ()), *found))
             if kept != best.get(relation.gives, ()):
                 best[relation.gives] = kept
@@ -165,10 +172,19 @@ def _searched(start: Start, design: str, usual: str) -> Mapping[str, tuple[Route
     return best
 
 
-def _combined(relation: Relation, choices: list[tuple[Route, ...]], usual: str) -> Iterator[Route]:
-    """Routes through ``relation``: the best combinations of its inputs' routes that do not contradict each other."""
+def _combined(
+    relation: Relation, choices: list[tuple[Route, ...]], usual: str, tried: set[tuple[int, ...]]
+) -> Iterator[Route]:
+    """Routes through ``relation``: the best combinations of its inputs' routes that do not contradict each other.
+
+    ``tried`` holds those that were already looked at, by the identity of their parts; the others are added to it.
+    """
     for ranks in _rankings(tuple(map(len, choices))):
         parts = [some[rank] for some, rank in zip(choices, ranks, strict=True)]
+        identity = tuple(map(id, parts))
+        if identity in tried:
+            continue
+        tried.add(identity)
         leaves = frozenset().union(*[part.leaves for part in parts])
         if relation.gives in leaves or any(_astray(part, relation) for part in parts):
             continue
