@@ -1,4 +1,4 @@
-"""Precision of differences: d and g with each standardizer, r, log odds ratios, raw differences.
+"""Precision of d and g with each standardizer.
 
 The letters d and g hide what was divided by; each standardizer has its own sampling distribution, and the formulas of
 one are not interchangeable with those of another.
@@ -19,7 +19,6 @@ from extractor.catalogue.relation import (
     ONE_FACTOR,
     PAIRED,
     PRE_POST,
-    TWO_GROUP,
     WITHIN,
     FloatArray,
     Interval,
@@ -38,13 +37,13 @@ _BONETT = "large sample: d²(1 + r²)/(4(n - 1)) + 2(1 - r)/(n - 1), times J² f
 _ADJUSTED = "large sample: (1 - R²)/ñ + d²/(2N), times J² for g (Borenstein 2009)"
 _RESTORED = "large sample: (MS_error/s²)/ñ + d²/(2N), s with the other terms put back, times J² for g"
 _MORRIS = "Morris (2008), exact variance of d_ppc2 at the estimate"
-_FISHER = "Fisher (1921): normal limits of z"
 
 Scale = Callable[..., FloatArray]
 J = moments.small_sample_factor
 
 
-def _normal(estimate: FloatArray, variance: FloatArray, level: float) -> Interval:
+def normal_limits(estimate: FloatArray, variance: FloatArray, level: float) -> Interval:
+    """Limits of an estimate whose sampling distribution is taken as normal."""
     half = special.ndtri((1 + level) / 2) * np.sqrt(variance)
     return estimate - half, estimate + half
 
@@ -147,7 +146,7 @@ def average_limits(
     estimate: FloatArray, n_total: FloatArray, correlation: FloatArray, level: float
 ) -> Interval:
     """Limits of the same."""
-    return _normal(estimate, average_large(estimate, n_total, correlation), level)
+    return normal_limits(estimate, average_large(estimate, n_total, correlation), level)
 
 
 def _corrected_variance(of_d: Scale) -> Scale:
@@ -232,7 +231,7 @@ def adjusted_limits(
     level: float,
 ) -> Interval:
     """Limits of d."""
-    return _normal(estimate, adjusted_large(estimate, inverse_effective_n, n_total, covariate_r), level)
+    return normal_limits(estimate, adjusted_large(estimate, inverse_effective_n, n_total, covariate_r), level)
 
 
 def restored_large(
@@ -262,7 +261,7 @@ def restored_limits(
     level: float,
 ) -> Interval:
     """Limits of d."""
-    return _normal(estimate, restored_large(estimate, inverse_effective_n, n_total, error_share), level)
+    return normal_limits(estimate, restored_large(estimate, inverse_effective_n, n_total, error_share), level)
 
 
 for _metric, _adjusted, _restored in (
@@ -304,7 +303,7 @@ def _morris_limits(variance: Scale) -> Callable[..., Interval]:
         correlation: FloatArray,
         level: float,
     ) -> Interval:
-        return _normal(estimate, variance(estimate, inverse_effective_n, n_total, correlation), level)
+        return normal_limits(estimate, variance(estimate, inverse_effective_n, n_total, correlation), level)
 
     return limits
 
@@ -318,91 +317,3 @@ for _metric, _morris in (("cohens_d", morris_d), ("hedges_g", morris_g)):
         _morris_limits(_morris),
         ["pre"],
     )
-
-
-# Correlations, odds ratios, raw differences
-
-
-def r_large(estimate: FloatArray, n_total: FloatArray) -> FloatArray:
-    """Variance of r."""
-    return (1 - estimate**2) ** 2 / (n_total - 1)
-
-
-def z_large(estimate: FloatArray, n_total: FloatArray) -> FloatArray:
-    """Variance of Fisher's z."""
-    return np.where(np.isnan(estimate), np.nan, 1 / (n_total - 3))
-
-
-def z_limits(estimate: FloatArray, n_total: FloatArray, level: float) -> Interval:
-    """Limits of Fisher's z."""
-    return _normal(estimate, 1 / (n_total - 3), level)
-
-
-def r_limits(estimate: FloatArray, n_total: FloatArray, level: float) -> Interval:
-    """Limits of r."""
-    low, high = z_limits(np.arctanh(estimate), n_total, level)
-    return np.tanh(low), np.tanh(high)
-
-
-_LOGISTIC = float(np.pi / np.sqrt(3))
-
-
-def log_odds_large(estimate: FloatArray, inverse_effective_n: FloatArray, n_total: FloatArray) -> FloatArray:
-    """Variance of a log odds ratio that stands for d."""
-    return pooled_large(estimate / _LOGISTIC, inverse_effective_n, n_total) * _LOGISTIC**2
-
-
-def log_odds_limits(
-    estimate: FloatArray, inverse_effective_n: FloatArray, df_error: FloatArray, level: float
-) -> Interval:
-    """Limits of the same."""
-    low, high = pooled_limits(estimate / _LOGISTIC, inverse_effective_n, df_error, level)
-    return low * _LOGISTIC, high * _LOGISTIC
-
-
-def raw_variance(estimate: FloatArray, se_difference: FloatArray) -> FloatArray:
-    """Variance of a mean difference."""
-    return np.where(np.isnan(estimate), np.nan, se_difference**2)
-
-
-def raw_limits(
-    estimate: FloatArray, se_difference: FloatArray, df_error: FloatArray, level: float
-) -> Interval:
-    """Limits of a mean difference."""
-    half = special.stdtrit(df_error, (1 + level) / 2) * se_difference
-    return estimate - half, estimate + half
-
-
-enter_variance("r", LARGE, "large sample: (1 - r²)² / (N - 1) (Borenstein et al. 2009)", TWO_GROUP, r_large)
-enter_limits("r", f"{_FISHER}, transformed back", TWO_GROUP, r_limits)
-enter_variance("fisher_z", LARGE, "large sample: 1 / (N - 3) (Fisher 1921)", TWO_GROUP, z_large)
-enter_limits("fisher_z", _FISHER, TWO_GROUP, z_limits)
-
-
-def printed_log_odds_variance(estimate: FloatArray, se_log_odds_ratio: FloatArray) -> FloatArray:
-    """Variance of a log odds ratio whose standard error is known."""
-    return np.where(np.isnan(estimate), np.nan, se_log_odds_ratio**2)
-
-
-def printed_log_odds_limits(estimate: FloatArray, se_log_odds_ratio: FloatArray, level: float) -> Interval:
-    """Normal limits of the same."""
-    return _normal(estimate, se_log_odds_ratio**2, level)
-
-
-_SQUARED = "squared standard error of the log odds ratio (Woolf 1955 where it comes from counts)"
-enter_variance("log_odds_ratio", LARGE, _SQUARED, TWO_GROUP, printed_log_odds_variance)
-enter_limits("log_odds_ratio", "normal limits of the log odds ratio", TWO_GROUP, printed_log_odds_limits)
-_LOGISTIC_NAME = "large-sample variance of d times π²/3 (Hasselblad & Hedges 1995)"
-enter_variance("log_odds_ratio", LARGE, _LOGISTIC_NAME, TWO_GROUP, log_odds_large)
-enter_limits("log_odds_ratio", "limits of d (noncentral t) times π/sqrt(3)", TWO_GROUP, log_odds_limits)
-_PLAIN = ONE_FACTOR | PAIRED | ANCOVA
-for _standardizer in ("pooled", "average"):
-    enter_variance(
-        "mean_difference",
-        EXACT,
-        "squared standard error of the difference",
-        _PLAIN,
-        raw_variance,
-        [_standardizer],
-    )
-    enter_limits("mean_difference", "Student's t with the error df", _PLAIN, raw_limits, [_standardizer])

@@ -1,8 +1,8 @@
 """Sampling variance and confidence interval of each metric: which function serves which metric, design and method.
 
 An entry is declared like a relation: a function whose parameter names are the quantities it needs, the metric's own
-estimate among them, so that the planner finds the rest. The functions stand in ``variance_explained_precision`` and
-``difference_precision``.
+estimate among them, so that the planner finds the rest. The functions stand in ``variance_explained_precision``,
+``difference_precision`` and ``association_precision``.
 """
 
 from __future__ import annotations
@@ -95,7 +95,12 @@ def _entry(
 
 def load() -> None:
     """Import the modules that enter their functions here."""
-    for module in ("variance_explained_precision", "difference_precision", "shared_control"):
+    for module in (
+        "variance_explained_precision",
+        "difference_precision",
+        "association_precision",
+        "shared_control",
+    ):
         import_module(f"extractor.sampling.{module}")
 
 

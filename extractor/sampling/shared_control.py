@@ -7,6 +7,7 @@ comparisons (Cochrane Handbook, ch. 23, 23.3.4; locator from memory). The effect
 from __future__ import annotations
 
 from extractor.catalogue.relation import TWO_GROUP, FloatArray, Interval
+from extractor.sampling import association_precision
 from extractor.sampling import difference_precision as undivided
 from extractor.sampling.precision import EXACT, LARGE, enter_limits, enter_variance
 
@@ -38,7 +39,7 @@ def divided_g_exact(estimate: FloatArray, inverse_divided_n: FloatArray, df_erro
 
 def divided_raw(estimate: FloatArray, inverse_divided_n: FloatArray, pooled_sd: FloatArray) -> FloatArray:
     """Variance of a mean difference."""
-    return undivided.raw_variance(estimate, pooled_sd * inverse_divided_n**0.5)
+    return association_precision.raw_variance(estimate, pooled_sd * inverse_divided_n**0.5)
 
 
 def divided_limits(
@@ -63,7 +64,7 @@ def divided_raw_limits(
     level: float,
 ) -> Interval:
     """Limits of a mean difference."""
-    return undivided.raw_limits(estimate, pooled_sd * inverse_divided_n**0.5, df_error, level)
+    return association_precision.raw_limits(estimate, pooled_sd * inverse_divided_n**0.5, df_error, level)
 
 
 for _metric, _large, _exact, _limits in (
