@@ -27,7 +27,7 @@ import time
 from collections.abc import Callable
 from dataclasses import dataclass
 from pathlib import Path
-from typing import TypeVar
+from typing import NamedTuple, TypeVar
 
 import numpy as np
 from scipy import optimize, special, stats
@@ -53,19 +53,24 @@ _STARTS = 7
 
 @dataclass
 class Timed:
-    """Processor seconds per stage, and what the whole command took."""
+    """Processor seconds per stage, and what the whole command took.
+
+    clock, shared : seconds by the clock of the whole command in one process, and in as many as there are processors.
+    """
 
     rows: int
-    read: float
-    gather: float
-    first: float
-    convert: float
-    audit: float
     command: float
     peak: float
-    loop: float
-    floor: float
-    audit_floor: float
+    clock: float
+    shared: float = math.nan
+    read: float = math.nan
+    gather: float = math.nan
+    first: float = math.nan
+    convert: float = math.nan
+    audit: float = math.nan
+    loop: float = math.nan
+    floor: float = math.nan
+    audit_floor: float = math.nan
 
 
 def seconds(work: Callable[[], Made]) -> tuple[float, Made]:
@@ -75,15 +80,24 @@ def seconds(work: Callable[[], Made]) -> tuple[float, Made]:
     return time.process_time() - started, made
 
 
-def command(arguments: list[str]) -> tuple[float, float]:
-    """Processor seconds and peak memory in MiB of a command, its children included."""
+class Used(NamedTuple):
+    """What a command used, its children included: seconds of the processors, MiB at the peak, seconds by the clock."""
+
+    processor: float
+    peak: float
+    clock: float
+
+
+def command(arguments: list[str]) -> Used:
+    """Run a command and look at what it used."""
+    started = time.perf_counter()
     process = subprocess.Popen(
         [sys.executable, *arguments], stdout=subprocess.DEVNULL, stderr=subprocess.DEVNULL
     )
     _, status, used = os.wait4(process.pid, 0)
     if status:
         raise RuntimeError(f"{arguments} ended with {status}")
-    return used.ru_utime + used.ru_stime, used.ru_maxrss / 1024
+    return Used(used.ru_utime + used.ru_stime, used.ru_maxrss / 1024, time.perf_counter() - started)
 
 
 # ---- what it is measured against ----------------------------------------------------------------------
@@ -182,7 +196,6 @@ def measure(rows: int, folder: Path, workers: int, sample: int) -> Timed:
     """Everything about a sheet of so many rows; beyond 1e5 only the whole command, which works in blocks there."""
     path = folder / f"mixed-{rows}.csv"
     mixed.write(path, rows)
-    more = ["--workers", str(workers)] if workers > 1 else []
     called = [
         "-m",
         "extractor",
@@ -190,24 +203,25 @@ def measure(rows: int, folder: Path, workers: int, sample: int) -> Timed:
         str(path),
         "--to",
         METRIC,
+        "--force",
         "--out",
-        str(folder / f"out-{rows}"),
-        *more,
+        str(folder / "out"),
     ]
-    whole, peak = command(called)
+    more = ["--workers", str(workers)] if workers > 1 else []
+    whole, peak, clock = command([*called, *more])
     if rows > 100_000:
-        path.unlink()
-        return Timed(rows, *[math.nan] * 5, whole, peak, *[math.nan] * 3)
+        return Timed(rows, whole, peak, clock)
+    shared = command([*called, "--workers", str(os.cpu_count() or 1)]).clock
     read, table = seconds(lambda: read_table(path, default_codebook()))
     gathering, evidence = seconds(lambda: gather(table))
     first, _ = seconds(lambda: convert_evidence(evidence, METRIC))
     again, conversion = seconds(lambda: convert_evidence(evidence, METRIC))
     audit, _ = seconds(lambda: audit_evidence(evidence, conversion))
     tests = tests_of(conversion)
-    loop, floor = loop_seconds(*tests, sample), floor_seconds(*tests)
-    return Timed(
-        rows, read, gathering, first, again, audit, whole, peak, loop, floor, audit_floor_seconds(evidence)
-    )
+    loop = loop_seconds(*tests, sample)
+    floors = floor_seconds(*tests), audit_floor_seconds(evidence)
+    stages = (read, gathering, first, again, audit)
+    return Timed(rows, whole, peak, clock, shared, *stages, loop, *floors)
 
 
 def starts() -> list[tuple[str, float, float]]:
@@ -223,7 +237,7 @@ def starts() -> list[tuple[str, float, float]]:
     ]
     found = []
     for name, ours, theirs, most in cases:
-        both = [(command(ours)[0], command(["-c", theirs])[0]) for _ in range(_STARTS)]
+        both = [(command(ours).processor, command(["-c", theirs]).processor) for _ in range(_STARTS)]
         found.append((name, min(a for a, _ in both) / min(b for _, b in both), most))
     return found
 
@@ -248,6 +262,8 @@ def report(timed: list[Timed]) -> None:
     print(f"row-by-row loop (sample, scaled)       {last.loop:>8.1f} s")
     print(f"loop / engine                          {last.loop / last.convert:>8.1f}   at least 50 wanted")
     print(f"loop / whole command                   {last.loop / last.command:>8.1f}   at least 20 wanted")
+    print(f"the same by the clock                  {last.loop / last.clock:>8.1f}")
+    print(f"by the clock, {os.cpu_count()} processes              {last.loop / last.shared:>8.1f}")
     print(f"engine / floor                         {last.convert / last.floor:>8.2f}   at most 3 wanted")
     print(f"audit / floor                          {last.audit / last.audit_floor:>8.2f}   at most 5 wanted")
     print(f"planning, once for each way of reporting {last.first - last.convert:>6.1f} s")
