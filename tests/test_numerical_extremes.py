@@ -272,14 +272,19 @@ def test_f_of_a_p(p: str) -> None:
                 near(effect["estimate"], indices(f, df1, df2)[metric], CLOSE, 1e-13)
 
 
-def test_p_below_the_smallest_normal_double_is_refused_in_words() -> None:
+def test_a_p_too_small_to_be_computed_with_is_a_bound() -> None:
     cells = [
         {"design": "one-way", "p_value": p, "df_effect": "2", "df_error": "57"}
-        for p in ("1e-310", "< 1e-310")
+        for p in ("1e-310", "< 3e-305", "1 x 10^-400", "< 1e-300")
     ]
     found = extractor.convert(pd.DataFrame(cells, dtype=object), to="omega_squared")
-    assert found.effects["status"].tolist() == ["blocked", "blocked"]
-    assert ["1e-310" in message for message in found.findings["message"]] == [True, True]
+    assert found.effects["status"].tolist() == ["bounded"] * 4
+    lows = found.effects["estimate_low"]
+    assert len(set(lows)) == 1
+    with mp.workdps(DIGITS):
+        f = f_of_tail(mp.mpf("1e-300"), 2, 57)
+        least = 2 * (f - 1) / (2 * f + 58)
+        assert least * (1 - mp.mpf(CLOSE)) <= lows[0] <= least
 
 
 # ---- d and g

@@ -34,12 +34,14 @@ class Digits:
     decimals : printed decimals less the exponent: the last printed place is 10**-decimals.
     notes : how the marks were understood, where that was not plain.
     problem : why the text was refused; "" where it was read or where it is no number at all.
+    tiny : it is positive and too close to zero to be computed with.
     """
 
     value: Decimal | None
     decimals: int = 0
     notes: tuple[str, ...] = ()
     problem: str = ""
+    tiny: bool = False
 
 
 NOT_DIGITS = Digits(None)
@@ -137,7 +139,8 @@ def read_digits(text: str, mark: str, *, whole: bool = False) -> Digits:
     exponent = int(found["exponent"] or 0)
     value = Decimal(f"{found['sign']}{digits}e{exponent}")
     if abs(exponent) > 300 or (value and abs(value.adjusted()) > 300):
-        return Digits(None, problem="beyond the range of floating point numbers; write a bound instead")
+        problem = "beyond the range of floating point numbers; write a bound instead"
+        return Digits(None, notes=notes + marks, problem=problem, tiny=value > 0 and value.adjusted() < 0)
     return Digits(value, decimals - exponent, notes + marks)
 
 

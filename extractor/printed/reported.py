@@ -151,6 +151,14 @@ def _bound(value: Decimal, decimals: int, relation: str, notes: tuple[str, ...],
     return Reading(math.nan, low, high, float(unit), max(decimals, 0), comparator, "; ".join(notes))
 
 
+def _tiny(number: str, notes: tuple[str, ...], to: Setting) -> Reading:
+    """A p too close to zero to be computed with: all that is kept of it is that it is closer than some."""
+    return _bound(
+        _LEAST, 300, "<", (*notes, f"{number} read as p < {_LEAST:e}, the least that is computed with"), to
+    )
+
+
+_LEAST = Decimal("1E-300")
 _RELATION = re.compile(r"<=|>=|=<|=>|[<>=≤≥≦≧⩽⩾]")
 _NOT_SIGNIFICANT = re.compile(r"n\. ?s\.?|ns|not significant|non-? ?significant|insignificant", re.IGNORECASE)
 _MARKS = re.compile(
@@ -214,6 +222,8 @@ def _read_printed(text: str, number: str, relation: str, notes: tuple[str, ...],
         percent = bare.endswith("%")
         digits = read_digits(bare.removesuffix("%").strip(), to.mark, whole=to.whole)
         notes = (*notes, *marks)
+    if digits.tiny and to.name in PROBABILITIES and not any(sign in relation for sign in ">≥≧⩾"):
+        return _tiny(number, (*notes, *digits.notes), to)
     if digits.value is None:
         return refuse(f"{quoted(text)}: {digits.problem or why_no_number(number)}")
     value, decimals = digits.value, digits.decimals
@@ -258,6 +268,8 @@ def _read_stored(raw: int | float, number_format: str | None, to: Setting) -> Re
     text = shortest(raw)
     if text in to.missing:
         return BLANK
+    if to.name in PROBABILITIES and 0 < raw < _LEAST:
+        return _tiny(repr(raw), (), to)
     shown = shown_by(number_format, float(raw))
     if shown.display is Display.DATE:
         return refuse(f"{text} is shown as a date: {DATE_ADVICE}")
