@@ -23,7 +23,7 @@ from extractor.output.chart import write_chart
 from extractor.output.marks import COMPANION, FILLS, SIGNS, address_of, marks_of, show, unmark
 from extractor.output.record import settings_frame
 from extractor.output.request import Request, effects_as_written
-from extractor.output.results import AnyCell, cached_results, with_results
+from extractor.output.results import AnyCell, cached_results, cells_there, with_results
 from extractor.output.sheets import (
     AUTHOR,
     PLAIN,
@@ -110,9 +110,8 @@ def _copy(
             book.remove(book[title])
     for sheet in book.worksheets:
         _keep_digits(sheet)
-    for row in book[table.sheet].iter_rows():
-        for cell in row:
-            unmark(cell)
+    for cell in cells_there(book[table.sheet]):
+        unmark(cell)
     notes = []
     if source.suffix.lower() == ".xlsm":
         notes.append("annotated.xlsx: the macros of the source are not in the copy")
@@ -138,11 +137,10 @@ def _from_text(source: Path, table: ReportedTable) -> tuple[Workbook, Worksheet]
 
 def _keep_digits(sheet: Worksheet) -> None:
     """Write numbers back with all their digits; the workbook writer itself keeps 16."""
-    for row in sheet.iter_rows():
-        for cell in row:
-            if cell.data_type == "n" and isinstance(cell.value, float):
-                cell.value = repr(cell.value)
-                cell.data_type = "n"
+    for cell in cells_there(sheet):
+        if cell.data_type == "n" and isinstance(cell.value, float):
+            cell.value = repr(cell.value)
+            cell.data_type = "n"
 
 
 def _is_ours(sheet: Worksheet) -> bool:

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import io
 import re
+import warnings
 import zipfile
 from collections.abc import Mapping, Sequence
 from functools import partial
@@ -12,6 +13,7 @@ from xml.sax.saxutils import escape
 
 from openpyxl import Workbook, load_workbook
 from openpyxl.cell import Cell, MergedCell
+from openpyxl.worksheet.worksheet import Worksheet
 
 AnyCell = Cell | MergedCell
 Results = Mapping[str, Mapping[str, AnyCell]]
@@ -26,13 +28,25 @@ _FORMULA = re.compile(
 def cached_results(source: Path, book: Workbook) -> dict[str, dict[str, AnyCell]]:
     """The stored results of the formulas of ``book``, which was loaded from ``source``."""
     wanted = {
-        sheet.title: [cell.coordinate for row in sheet.iter_rows() for cell in row if cell.data_type == "f"]
+        sheet.title: {cell.coordinate for cell in cells_there(sheet) if cell.data_type == "f"}
         for sheet in book.worksheets
     }
     if not any(wanted.values()):
         return {}
-    values = load_workbook(source, data_only=True, keep_links=False)
-    return {title: {at: values[title][at] for at in found} for title, found in wanted.items() if found}
+    with warnings.catch_warnings():
+        # what a workbook cannot keep was said when it was read
+        warnings.simplefilter("ignore")
+        values = load_workbook(source, data_only=True, keep_links=False)
+    return {
+        title: {cell.coordinate: cell for cell in cells_there(values[title]) if cell.coordinate in found}
+        for title, found in wanted.items()
+        if found
+    }
+
+
+def cells_there(sheet: Worksheet) -> list[AnyCell]:
+    """The cells that a sheet has; going through its rows would make all those between them and the first."""
+    return list(sheet._cells.values())
 
 
 def with_results(content: bytes, titles: Sequence[str], results: Results) -> bytes:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import datetime
+import warnings
 from pathlib import Path
 
 import numpy as np
@@ -140,3 +141,23 @@ def test_subgroups_of_which_one_has_no_size_are_not_merged(size: str) -> None:
 def test_distances_in_standard_errors_of_effects_without_variance() -> None:
     found = in_standard_errors(np.array([0.0, 1.0, 1.0]), np.array([0.0, np.nan, 4.0]))
     np.testing.assert_array_equal(found, [np.nan, np.nan, 0.5])
+
+
+@pytest.mark.parametrize(
+    ("at", "value", "shown"), [("XFD1048576", "far", "General"), ("B2", 1e299, "yyyy-mm-dd")]
+)
+def test_odd_cells_on_a_sheet_beside_the_coded_one(
+    tmp_path: Path, at: str, value: object, shown: str
+) -> None:
+    book = openpyxl.Workbook()
+    for row in PLAIN:
+        book.worksheets[0].append(row)
+    beside = book.create_sheet("beside")
+    beside[at].value, beside[at].number_format = value, shown
+    beside["A1"] = "=1+1"
+    book.save(tmp_path / "sheet.xlsx")
+    words = ("--to", "omega_squared", "--out", tmp_path / "out", "--format", "xlsx")
+    with time_limit(10), warnings.catch_warnings():
+        warnings.simplefilter("error")
+        assert run("convert", tmp_path / "sheet.xlsx", *words)[0] == 0
+    assert openpyxl.load_workbook(tmp_path / "out" / "annotated.xlsx")["beside"][at].value is not None
