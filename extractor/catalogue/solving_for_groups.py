@@ -20,6 +20,14 @@ def _others(values: FloatArray, group: int) -> FloatArray:
     return np.delete(values, group, axis=-1)
 
 
+def _sums_of_others(values: FloatArray) -> FloatArray:
+    """For each group the sum over all others, shape (rows, groups); added up from both sides, nothing subtracted."""
+    before, after = np.zeros_like(values), np.zeros_like(values)
+    before[:, 1:] = values.cumsum(axis=1)[:, :-1]
+    after[:, :-1] = values[:, ::-1].cumsum(axis=1)[:, -2::-1]
+    return before + after
+
+
 def _mean_image(mean: Interval, n: Interval, ss_effect: Interval) -> Interval:
     low, high = np.array(mean[0]), np.array(mean[1])
     if low.shape[1] > MOST_GROUPS:
@@ -66,15 +74,12 @@ def mean_from_effect_sum(mean: FloatArray, n: FloatArray, ss_effect: FloatArray)
 
 def _sd_image(sd: Interval, n: Interval, ss_error: Interval) -> Interval:
     least, most = (n[0] - 1) * sd[0] ** 2, (n[1] - 1) * sd[1] ** 2
-    low, high = np.empty_like(sd[0]), np.empty_like(sd[1])
-    for j in range(low.shape[1]):
-        upper = (ss_error[1] - _others(least, j).sum(axis=-1)) / (n[0][:, j] - 1)
-        lower = (ss_error[0] - _others(most, j).sum(axis=-1)) / (n[1][:, j] - 1)
-        scale = _WIDEN * ss_error[1] / (n[0][:, j] - 1)
-        # a negative upper end leaves no standard deviation at all
-        high[:, j] = np.where(upper + scale < 0, -1.0, np.sqrt(np.maximum(upper + scale, 0)))
-        low[:, j] = np.sqrt(np.maximum(np.where(np.isfinite(scale), lower - scale, 0), 0))
-    return low, high
+    upper = (ss_error[1][:, None] - _sums_of_others(least)) / (n[0] - 1)
+    lower = (ss_error[0][:, None] - _sums_of_others(most)) / (n[1] - 1)
+    scale = _WIDEN * ss_error[1][:, None] / (n[0] - 1)
+    # a negative upper end leaves no standard deviation at all
+    high = np.where(upper + scale < 0, -1.0, np.sqrt(np.maximum(upper + scale, 0)))
+    return np.sqrt(np.maximum(np.where(np.isfinite(scale), lower - scale, 0), 0)), high
 
 
 @relation(gives="sd", image=_sd_image, designs=BETWEEN, source=_POOLED)
@@ -84,11 +89,7 @@ def sd_from_error_sum(sd: FloatArray, n: FloatArray, ss_error: FloatArray) -> Fl
 
 
 def _size_image(n: Interval, n_total: Interval) -> Interval:
-    low, high = np.empty_like(n[0]), np.empty_like(n[1])
-    for j in range(low.shape[1]):
-        low[:, j] = n_total[0] - _others(n[1], j).sum(axis=-1)
-        high[:, j] = n_total[1] - _others(n[0], j).sum(axis=-1)
-    return low, high
+    return n_total[0][:, None] - _sums_of_others(n[1]), n_total[1][:, None] - _sums_of_others(n[0])
 
 
 @relation(gives="n", image=_size_image, designs=BETWEEN, source=_TOTAL)
@@ -101,16 +102,11 @@ def _contrasted_image(mean: Interval, contrast_weight: Interval, mean_difference
     weight = contrast_weight[0]
     ends = np.where(weight == 0, 0.0, weight * mean[0]), np.where(weight == 0, 0.0, weight * mean[1])
     least, most = np.minimum(*ends), np.maximum(*ends)
-    low, high = np.full_like(weight, -np.inf), np.full_like(weight, np.inf)
-    for j in range(weight.shape[1]):
-        below = mean_difference[0] - _others(most, j).sum(axis=-1)
-        above = mean_difference[1] - _others(least, j).sum(axis=-1)
-        w = weight[:, j]
-        scale = _WIDEN * (np.abs(_others(most, j)).sum(axis=-1) + np.abs(_others(least, j)).sum(axis=-1))
-        below, above = below - scale, above + scale
-        low[:, j] = np.where(w == 0, -np.inf, np.where(w > 0, below, above) / w)
-        high[:, j] = np.where(w == 0, np.inf, np.where(w > 0, above, below) / w)
-    return low, high
+    scale = _WIDEN * (_sums_of_others(np.abs(most)) + _sums_of_others(np.abs(least)))
+    below = mean_difference[0][:, None] - _sums_of_others(most) - scale
+    above = mean_difference[1][:, None] - _sums_of_others(least) + scale
+    low = np.where(weight == 0, -np.inf, np.where(weight > 0, below, above) / weight)
+    return low, np.where(weight == 0, np.inf, np.where(weight > 0, above, below) / weight)
 
 
 @relation(gives="mean", image=_contrasted_image, designs=ONE_FACTOR | PAIRED | WITHIN, source=_CONTRAST)
