@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import codecs
 from collections.abc import Callable, Iterator, Sequence
+from contextlib import contextmanager
 from dataclasses import dataclass
 from functools import lru_cache
 from pathlib import Path
@@ -156,19 +157,22 @@ class _Text:
             return False
         return True
 
-    def _open(self) -> TextIO:
-        return self.path.open(encoding=self.encoding, newline="")
-
-    def grids(self, only: KeyColumns | None = None) -> Iterator[Grid]:
-        """The rows as grids one below the other; of the columns those that are asked for, from the headings."""
+    @contextmanager
+    def _open(self) -> Iterator[TextIO]:
+        """The text; damage met anywhere in it is said."""
         try:
-            with self._open() as stream:
-                if self.declared:
-                    stream.readline()
-                yield from grids_of(stream, self.delimiter, self.name, _PIECE, only)
+            with self.path.open(encoding=self.encoding, newline="") as stream:
+                yield stream
         except UnicodeDecodeError as fault:
             coding = self.encoding.upper()
             raise UnreadableInput(f"{self.name} is damaged {coding} text; save it as UTF-8") from fault
+
+    def grids(self, only: KeyColumns | None = None) -> Iterator[Grid]:
+        """The rows as grids one below the other; of the columns those that are asked for, from the headings."""
+        with self._open() as stream:
+            if self.declared:
+                stream.readline()
+            yield from grids_of(stream, self.delimiter, self.name, _PIECE, only)
 
     def look(self, key_columns: KeyColumns) -> list[NDArray[np.int64]]:
         """The keys of all rows."""

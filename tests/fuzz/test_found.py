@@ -161,3 +161,10 @@ def test_odd_cells_on_a_sheet_beside_the_coded_one(
         warnings.simplefilter("error")
         assert run("convert", tmp_path / "sheet.xlsx", *words)[0] == 0
     assert openpyxl.load_workbook(tmp_path / "out" / "annotated.xlsx")["beside"][at].value is not None
+
+
+def test_damaged_text_in_two_bytes_a_letter_worked_through_in_blocks(tmp_path: Path) -> None:
+    (tmp_path / "sheet.csv").write_bytes(b"\xff\xfe" + "study,f_value\nA,4.31\n".encode("utf-16-le")[:-1])
+    words = ("--to", "omega_squared", "--out", tmp_path / "out", "--workers", "1")
+    status, said = run("convert", tmp_path / "sheet.csv", *words)
+    assert (status, "damaged UTF-16 text" in said) == (4, True)
