@@ -5,11 +5,10 @@ The source file is read, never written.
 
 from __future__ import annotations
 
-import warnings
 from pathlib import Path
 
 import pandas as pd
-from openpyxl import Workbook, load_workbook
+from openpyxl import Workbook
 from openpyxl.comments import Comment
 from openpyxl.styles import Font, PatternFill
 from openpyxl.worksheet.hyperlink import Hyperlink
@@ -23,7 +22,7 @@ from extractor.output.chart import write_chart
 from extractor.output.marks import COMPANION, FILLS, SIGNS, address_of, marks_of, show, unmark
 from extractor.output.record import settings_frame
 from extractor.output.request import Request, effects_as_written
-from extractor.output.results import AnyCell, cached_results, cells_there, with_results
+from extractor.output.results import AnyCell, cached_results, cells_there, loaded, with_results
 from extractor.output.sheets import (
     AUTHOR,
     PLAIN,
@@ -101,10 +100,7 @@ def _copy(
         return book, None, {}, [note]
     if not table.sheet:
         return (*_from_text(source, table), {}, [])
-    with warnings.catch_warnings():
-        # what a workbook cannot keep was said when it was read
-        warnings.simplefilter("ignore")
-        book = load_workbook(source, rich_text=True, keep_links=False)
+    book = loaded(source, rich_text=True)
     for title in _OURS:
         if title in book.sheetnames and title != table.sheet and _is_ours(book[title]):
             book.remove(book[title])

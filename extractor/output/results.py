@@ -25,6 +25,14 @@ _FORMULA = re.compile(
 )
 
 
+def loaded(source: Path, *, rich_text: bool = False, data_only: bool = False) -> Workbook:
+    """A workbook to be copied, whatever its name ends in."""
+    with warnings.catch_warnings(), source.open("rb") as stream:
+        # what a workbook cannot keep was said when it was read
+        warnings.simplefilter("ignore")
+        return load_workbook(stream, rich_text=rich_text, data_only=data_only, keep_links=False)
+
+
 def cached_results(source: Path, book: Workbook) -> dict[str, dict[str, AnyCell]]:
     """The stored results of the formulas of ``book``, which was loaded from ``source``."""
     wanted = {
@@ -33,10 +41,7 @@ def cached_results(source: Path, book: Workbook) -> dict[str, dict[str, AnyCell]
     }
     if not any(wanted.values()):
         return {}
-    with warnings.catch_warnings():
-        # what a workbook cannot keep was said when it was read
-        warnings.simplefilter("ignore")
-        values = load_workbook(source, data_only=True, keep_links=False)
+    values = loaded(source, data_only=True)
     return {
         title: {cell.coordinate: cell for cell in cells_there(values[title]) if cell.coordinate in found}
         for title, found in wanted.items()

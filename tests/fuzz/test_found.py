@@ -168,3 +168,14 @@ def test_damaged_text_in_two_bytes_a_letter_worked_through_in_blocks(tmp_path: P
     words = ("--to", "omega_squared", "--out", tmp_path / "out", "--workers", "1")
     status, said = run("convert", tmp_path / "sheet.csv", *words)
     assert (status, "damaged UTF-16 text" in said) == (4, True)
+
+
+def test_a_workbook_without_an_ending(tmp_path: Path) -> None:
+    book = openpyxl.Workbook()
+    for row in PLAIN:
+        book.worksheets[0].append(row)
+    book.worksheets[0]["H1"] = "=1+1"
+    book.save(tmp_path / "sheet.xlsx")
+    (tmp_path / "sheet.xlsx").rename(tmp_path / "sheet")
+    words = ("--to", "omega_squared", "--out", tmp_path / "out", "--format", "xlsx")
+    assert run("convert", tmp_path / "sheet", *words)[0] == 0
