@@ -81,6 +81,11 @@ class Commands(click.Group):
             code = _refuse(error.format_message(), error.exit_code)
         except (click.Abort, KeyboardInterrupt):
             code = _refuse("interrupted", 1)
+        except RuntimeError as error:
+            # before Python 3.12 an interrupt comes out wrapped where it meets the making of a class
+            if not isinstance(error.__cause__, KeyboardInterrupt):
+                raise
+            code = _refuse("interrupted", 1)
         except BrokenPipeError:
             # whoever read the output has gone; nothing more can be said to them
             os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())

@@ -179,3 +179,11 @@ def test_a_workbook_without_an_ending(tmp_path: Path) -> None:
     (tmp_path / "sheet.xlsx").rename(tmp_path / "sheet")
     words = ("--to", "omega_squared", "--out", tmp_path / "out", "--format", "xlsx")
     assert run("convert", tmp_path / "sheet", *words)[0] == 0
+
+
+def test_an_interrupt_while_a_class_is_made(monkeypatch: pytest.MonkeyPatch) -> None:
+    def interrupted(name: str) -> None:
+        raise RuntimeError("Error calling __set_name__") from KeyboardInterrupt()
+
+    monkeypatch.setattr("extractor.commands.main.import_module", interrupted)
+    assert run("convert", "sheet.csv") == (1, "extractor: interrupted\n")
