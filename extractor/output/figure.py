@@ -10,6 +10,7 @@ from __future__ import annotations
 import io
 import math
 import os
+import warnings
 from collections.abc import Iterator
 from contextlib import contextmanager
 from dataclasses import dataclass
@@ -100,7 +101,9 @@ def write_figure(effects: pd.DataFrame, path: Path, *, level: float = 0.95, by: 
         raise UsageError("no row has an effect to draw")
     if len(drawn) > MOST:
         raise UsageError(f"a figure shows at most {MOST} rows, these are {len(drawn)}: the report shows all")
-    with matplotlib.rc_context(_SETTINGS), _fixed_date():
+    with matplotlib.rc_context(_SETTINGS), _fixed_date(), warnings.catch_warnings():
+        # a letter that the font lacks shows as a box
+        warnings.filterwarnings("ignore", "Glyph")
         figure = _figure(_rows(drawn, by), scale_of(drawn), effects, level)
         stream = io.BytesIO()
         figure.savefig(stream, format=kind[1:], dpi=200, metadata=_metadata(kind))
