@@ -72,4 +72,5 @@ def _settled(quantity: str, value: FloatArray, low: FloatArray, high: FloatArray
         value = np.where(low == high, low, np.nan)
     slack = _NEAR * (1 + np.abs(value))
     value = np.where((value < support.low - slack) | (value > support.high + slack), np.nan, value)
-    return Estimate(value, low, high)
+    # beyond it by no more than an error of floating point is at its end
+    return Estimate(np.clip(value, support.low, support.high), low, high)
