@@ -125,10 +125,14 @@ def test_an_unwritable_folder(
 ) -> None:
     """A superuser may write anywhere, so the refusal is the operating system's in name only."""
 
-    def refuse(*_: object, **__: object) -> None:
-        raise OSError(code, os.strerror(code))
+    make = Path.mkdir
 
-    monkeypatch.setattr("tempfile.mkdtemp", refuse)
+    def refuse(folder: Path, *how: object, **more: object) -> None:
+        if folder.name.startswith(".out-"):
+            raise OSError(code, os.strerror(code))
+        make(folder, *how, **more)  # type: ignore[arg-type]
+
+    monkeypatch.setattr(Path, "mkdir", refuse)
     found = convert()
     assert found.exit_code == 2
     assert os.strerror(code) in found.stderr

@@ -190,6 +190,6 @@ def test_an_interrupt_while_a_class_is_made(monkeypatch: pytest.MonkeyPatch) -> 
 
 
 def test_an_estimate_beyond_its_support_by_an_error_of_floating_point() -> None:
-    row = {"design": "one-way", "ss_effect": "308.2", "ss_error": "3527.1", "df_error": "63"}
-    effects = convert(pd.DataFrame([row | {"df_effect": "1000000000000000"}]), to="omega_squared").effects
+    row = {"design": "one-way", "ss_effect": 308.2, "ss_error": 3527.1, "df_error": 63, "n_total": 65}
+    effects = convert(pd.DataFrame([row | {"df_effect": 10**15}]), to="omega_squared").effects
     assert effects["estimate"][0] <= 1
