@@ -34,6 +34,7 @@ from extractor.output.sheets import (
 )
 from extractor.output.workbook import saved, without_clock
 from extractor.source.reader import read_grid
+from extractor.source.workbook import DAMAGE
 from extractor.table import ReportedTable
 
 MOST = 20_000
@@ -100,7 +101,15 @@ def _copy(
         return book, None, {}, [note]
     if not table.sheet:
         return (*_from_text(source, table), {}, [])
-    book = loaded(source, rich_text=True)
+    try:
+        book = loaded(source, rich_text=True)
+    except DAMAGE as fault:
+        # its numbers could be read, but not how it looks
+        advice = "open it in a spreadsheet program and save it again"
+        said = f"the workbook cannot be copied ({type(fault).__name__}), so its cells stand as text"
+        book, coded = _from_text(source, table)
+        coded.title = table.sheet
+        return book, coded, {}, [f"annotated.xlsx: {said}; {advice}"]
     for title in _OURS:
         if title in book.sheetnames and title != table.sheet and _is_ours(book[title]):
             book.remove(book[title])

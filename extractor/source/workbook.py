@@ -38,7 +38,7 @@ Cell = Any
 """A read-only cell; the stubs know only the cells of workbooks opened for writing."""
 
 # openpyxl lets nearly any error through on a damaged workbook: of the zip, the XML, of its own look-ups
-_DAMAGE = (
+DAMAGE: tuple[type[Exception], ...] = (
     ArithmeticError,
     AssertionError,
     AttributeError,
@@ -81,7 +81,7 @@ def from_workbook(path: Path, name: str, sheets: tuple[str, ...]) -> Grid:
             grid = _sheet(stream, name, sheets)
     except UnreadableInput:
         raise
-    except _DAMAGE as fault:
+    except DAMAGE as fault:
         raise _damaged(name, fault) from fault
     return grid
 
@@ -108,7 +108,7 @@ def sheet_names(path: Path) -> list[str]:
         with path.open("rb") as stream:
             _refuse_bombs(stream, name)
             return _visible(stream)
-    except _DAMAGE as fault:
+    except DAMAGE as fault:
         raise _damaged(name, fault) from fault
 
 

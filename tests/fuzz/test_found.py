@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import datetime
 import warnings
+import zipfile
 from pathlib import Path
 
 import numpy as np
@@ -193,3 +194,22 @@ def test_an_estimate_beyond_its_support_by_an_error_of_floating_point() -> None:
     row = {"design": "one-way", "ss_effect": 308.2, "ss_error": 3527.1, "df_error": 63, "n_total": 65}
     effects = convert(pd.DataFrame([row | {"df_effect": 10**15}]), to="omega_squared").effects
     assert effects["estimate"][0] <= 1
+
+
+def test_a_workbook_whose_looks_are_damaged_is_copied_as_text(tmp_path: Path) -> None:
+    book = openpyxl.Workbook()
+    for row in PLAIN:
+        book.worksheets[0].append(row)
+    book.save(tmp_path / "whole.xlsx")
+    with (
+        zipfile.ZipFile(tmp_path / "whole.xlsx") as whole,
+        zipfile.ZipFile(tmp_path / "sheet.xlsx", "w") as damaged,
+    ):
+        for name in whole.namelist():
+            body = whole.read(name)
+            damaged.writestr(name, body.replace(b'<c r="C2"', b'<c r="C2" s="99"'))
+    words = ("--to", "omega_squared", "--out", tmp_path / "out", "--format", "xlsx")
+    status, said = run("convert", tmp_path / "sheet.xlsx", *words)
+    assert (status, "cannot be copied (IndexError)" in said) == (0, True)
+    copy = openpyxl.load_workbook(tmp_path / "out" / "annotated.xlsx")
+    assert copy["Sheet"]["C2"].value == "4.31"
