@@ -163,9 +163,9 @@ def _finding(
 
 def _displacement(constraints: Constraints, suspect: Suspect, row: int) -> float:
     """How far the printed value lies from what the others imply, relative to its size."""
-    low, high = (end[row] for end in constraints.interval(suspect.cell))
-    gap = max(suspect.low[row] - high, low - suspect.high[row], 0.0)
-    return float(gap / max(abs(low), abs(high), 1e-300))
+    low, high = (float(end[row]) for end in constraints.interval(suspect.cell))
+    gap = max(float(suspect.low[row]) - high, low - float(suspect.high[row]), 0.0)
+    return gap / max(abs(low), abs(high), 1e-300)
 
 
 def _together(cells: tuple[Cell, ...], alone: bool) -> str:
