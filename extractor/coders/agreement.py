@@ -139,7 +139,12 @@ def icc_agreement(values: FloatArray, level: float = 0.95) -> Coefficient:
     n, k = complete.shape
     if n < 2 or k < 2:
         return UNDEFINED
-    # about the grand mean, so that large values lose no digits
+    largest = float(np.abs(complete).max())
+    if largest == 0:
+        return UNDEFINED
+    # in units of the largest value, so that no square of a tiny one is lost, and about the grand mean, so that large
+    # ones lose no digits
+    complete = complete / largest
     centred = complete - complete.mean()
     by_subject, by_coder = centred.mean(axis=1, keepdims=True), centred.mean(axis=0, keepdims=True)
     rest = centred - by_subject - by_coder
@@ -147,17 +152,18 @@ def icc_agreement(values: FloatArray, level: float = 0.95) -> Coefficient:
     coders = float(n * (by_coder**2).sum() / (k - 1))
     error = float((rest**2).sum() / ((n - 1) * (k - 1)))
     total = subjects + (k - 1) * error + k * (coders - error) / n
-    scale = float(np.abs(complete).max()) ** 2
-    if total <= _NOISE * scale:
+    if total <= _NOISE:
         return UNDEFINED
     icc = (subjects - error) / total
-    if coders + error <= _NOISE * scale:
+    if coders + error <= _NOISE:
         return Coefficient(icc)
     ratio = k * icc / (n * (1 - icc))
     a, b = ratio, 1 + ratio * (n - 1)
-    df = (a * coders + b * error) ** 2 / (
-        (a * coders) ** 2 / (k - 1) + (b * error) ** 2 / ((n - 1) * (k - 1))
-    )
+    divisor = (a * coders) ** 2 / (k - 1) + (b * error) ** 2 / ((n - 1) * (k - 1))
+    if divisor == 0:
+        # subjects that do not differ, coded by coders who differ by the same everywhere
+        return Coefficient(icc)
+    df = (a * coders + b * error) ** 2 / divisor
     upper = float(stats.f.ppf((1 + level) / 2, n - 1, df))
     lower = float(stats.f.ppf((1 + level) / 2, df, n - 1))
     spread = k * coders + (k * n - k - n) * error

@@ -316,3 +316,16 @@ def test_what_the_data_leave_undefined_is_nan() -> None:
     perfect = icc_agreement(np.column_stack([np.arange(4.0)] * 2))
     assert perfect.value == pytest.approx(1.0, abs=1e-12)
     assert math.isnan(perfect.low)
+
+
+@pytest.mark.parametrize("unit", [1.0, 1e-200, 1e200])
+def test_icc_does_not_depend_on_the_unit(unit: float) -> None:
+    assert icc_agreement(SHROUT_FLEISS * unit).value == pytest.approx(
+        icc_agreement(SHROUT_FLEISS).value, abs=1e-12
+    )
+
+
+def test_icc_of_subjects_that_do_not_differ() -> None:
+    found = icc_agreement(np.array([[1.0, 2.0], [1.0, 2.0], [1.0, 2.0]]))
+    assert found.value == 0
+    assert np.isnan(found.low) and np.isnan(found.high)
