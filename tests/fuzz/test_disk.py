@@ -127,10 +127,10 @@ def test_an_unwritable_folder(
 
     make = Path.mkdir
 
-    def refuse(folder: Path, *how: object, **more: object) -> None:
+    def refuse(folder: Path, mode: int = 0o777, parents: bool = False, exist_ok: bool = False) -> None:
         if folder.name.startswith(".out-"):
             raise OSError(code, os.strerror(code))
-        make(folder, *how, **more)  # type: ignore[arg-type]
+        make(folder, mode, parents, exist_ok)
 
     monkeypatch.setattr(Path, "mkdir", refuse)
     found = convert()
