@@ -30,18 +30,6 @@ class Recorded:
     texts: ObjectArray
 
 
-def recorded_cells(table: ReportedTable) -> list[dict[str, str]]:
-    """For every row its cells that were understood, heading with address -> text; blanks are left out.
-
-    Corrected cells hold their corrected number; the note of the decision says what was printed.
-    """
-    found: list[dict[str, str]] = [{} for _ in range(table.rows)]
-    for column in recorded_columns(table, slice(0, table.rows)):
-        for at in np.flatnonzero(column.given).tolist():
-            found[at][f"{column.before}{table.row_numbers[at]}]"] = json.loads(column.texts[at])
-    return found
-
-
 def recorded_columns(table: ReportedTable, rows: slice) -> list[Recorded]:
     """The columns of some rows in the order of their headings, without those that are blank in all of them."""
     columns = [

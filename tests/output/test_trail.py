@@ -11,7 +11,7 @@ import pytest
 
 from extractor.api import Result, convert
 from extractor.output import trail
-from extractor.runs.recorded import recorded_cells
+from tests.recorded import recorded_cells
 
 ROWS = [
     # n of a group or a direction is there in some rows of one way of reporting only

@@ -23,8 +23,8 @@ from extractor.output.teamwork import change_in_words
 from extractor.routes.conversion import convert_evidence
 from extractor.runs.changes import Comparison, compare
 from extractor.runs.folder import Run, read_run
-from extractor.runs.recorded import recorded_cells
 from extractor.table import Assumption
+from tests.recorded import recorded_cells
 from tests.simulated_review import ASSUMING, review
 
 Frame = pd.DataFrame
